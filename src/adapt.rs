@@ -1,0 +1,1 @@
+//! Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.

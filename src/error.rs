@@ -1,0 +1,56 @@
+//! Errors of the numerical engine. Faults of a sheet have a type of their own, with a place in the file
+//! (`sheet::Fault`).
+
+use thiserror::Error;
+
+/// Why a problem could not be solved.
+#[derive(Debug, Clone, PartialEq, Error)]
+#[non_exhaustive]
+pub enum Error {
+    /// An argument of a public function is outside its range.
+    #[error("{what}: {value} is outside {range}")]
+    Argument {
+        /// Name of the argument.
+        what: &'static str,
+        /// The value given, as text.
+        value: String,
+        /// The range allowed.
+        range: &'static str,
+    },
+    /// The number of conditions does not fit the order of the problem.
+    #[error("{found} conditions given, {needed} needed")]
+    ConditionCount {
+        /// Conditions given.
+        found: usize,
+        /// Conditions needed: order + constants + releases.
+        needed: usize,
+    },
+    /// Equation or condition gave a value that is not finite.
+    #[error("{what} is not finite at x = {x}")]
+    NotFinite {
+        /// Which equation, condition or quantity.
+        what: String,
+        /// Where along the span.
+        x: f64,
+    },
+    /// The problem has no unique solution; the text explains which motion is free and what contradicts.
+    #[error("{0}")]
+    Singular(String),
+    /// The problem is outside what the solver covers.
+    #[error("{0}")]
+    Unsupported(String),
+    /// The mesh would need more elements than allowed.
+    #[error("{elements} elements do not resolve the solution near x = {x}")]
+    Unresolved {
+        /// Elements reached.
+        elements: usize,
+        /// Where the worst element lies.
+        x: f64,
+    },
+    /// Interrupted from outside or out of time.
+    #[error("interrupted")]
+    Interrupted,
+}
+
+/// Result of the engine.
+pub type Result<T> = std::result::Result<T, Error>;

@@ -1,0 +1,1 @@
+//! What the answer rests on: error bars, residual, decay, balance, the second route.

@@ -1,0 +1,12 @@
+//! Formulas: text, tree, derivative, fast evaluation.
+//!
+//! A formula passes three forms: text, a syntax tree whose every part knows its place in the text
+//! ([`syntax`]), and nodes of a [`graph`] in SI units, from which derivatives are taken and a
+//! [`tape`] is compiled.
+
+/// The checked formula as a shared graph: simplification, total and partial derivatives.
+pub mod graph;
+/// Text to syntax tree, with places.
+pub mod syntax;
+/// Instruction lists: evaluation over many nodes at once.
+pub mod tape;

@@ -1,0 +1,1 @@
+//! Instruction lists: evaluation over many nodes at once.

@@ -1,0 +1,1 @@
+//! Legendre polynomials: values, Gauss, Lobatto and Radau rules, nodal and modal coefficients.

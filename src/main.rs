@@ -1,0 +1,5 @@
+//! The `spanwise` command.
+
+fn main() -> std::process::ExitCode {
+    spanwise::cli::main()
+}

@@ -1,0 +1,1 @@
+//! Problems from Rust closures.

@@ -1,0 +1,170 @@
+//! Everything a record shows, ready for print: plain data in the user's units.
+
+/// How the solve ended.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Status {
+    /// Every asked number met its accuracy.
+    Solved,
+    /// Solved, but some number did not meet the accuracy asked.
+    Inaccurate,
+    /// No solution; the reason is in [`Outcome::reason`].
+    Failed,
+}
+
+/// One asked number.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Quantity {
+    /// Its label in the sheet.
+    pub name: String,
+    /// Its formula as written.
+    pub formula: String,
+    /// Value in `unit`, or `None` with a reason.
+    pub value: Option<f64>,
+    /// Bar in `unit`.
+    pub error: f64,
+    /// Unit as printed; `1` for pure numbers.
+    pub unit: String,
+    /// Why there is no value, or why the accuracy was missed.
+    pub reason: Option<String>,
+    /// Remarks: side of a break, ties.
+    pub remarks: Vec<String>,
+    /// Whether the accuracy asked was met.
+    pub met: bool,
+}
+
+/// One piece of evidence.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Check {
+    /// What was checked, in plain words.
+    pub name: String,
+    /// What came out.
+    pub result: String,
+    /// What that means.
+    pub meaning: String,
+    /// Passed, failed, or for information only.
+    pub passed: Option<bool>,
+}
+
+/// A named line of text: an equation, a condition, a datum.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Entry {
+    /// Its name in the sheet.
+    pub name: String,
+    /// What it says.
+    pub text: String,
+    /// Remark: SI value, order, how it is carried.
+    pub remark: String,
+}
+
+/// A quantity along the span, piece by piece (no line is drawn across a break at which it jumps).
+#[derive(Debug, Clone, PartialEq)]
+pub struct Curve {
+    /// Name.
+    pub name: String,
+    /// Unit.
+    pub unit: String,
+    /// Polylines of (x, value) in the units printed.
+    pub pieces: Vec<Vec<(f64, f64)>>,
+    /// Marked points: largest, smallest, asked places.
+    pub marks: Vec<Mark>,
+}
+
+/// A marked point of a curve.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Mark {
+    /// Coordinate.
+    pub x: f64,
+    /// Value.
+    pub value: f64,
+    /// Label.
+    pub label: String,
+}
+
+/// Something that stands at a point of the span: a support, an end condition, a jump, a break in the data.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Feature {
+    /// Coordinate.
+    pub x: f64,
+    /// Label (name of the condition, or "break").
+    pub label: String,
+    /// What kind.
+    pub kind: FeatureKind,
+}
+
+/// Kinds of features.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum FeatureKind {
+    /// A condition on values at this point.
+    Condition,
+    /// A prescribed jump: point load, point source.
+    Jump,
+    /// A continuity given up: hinge, support, contact.
+    Release,
+    /// A break of the data only.
+    Break,
+}
+
+/// One element of the mesh with the decay of its coefficients.
+#[derive(Debug, Clone, PartialEq)]
+pub struct MeshRow {
+    /// Left end.
+    pub from: f64,
+    /// Right end.
+    pub to: f64,
+    /// Nodes.
+    pub nodes: usize,
+    /// For each unknown: sizes of the Legendre coefficients of its highest derivative, relative to the
+    /// largest on the span.
+    pub decay: Vec<Vec<f64>>,
+}
+
+/// Everything a record shows.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Outcome {
+    /// Title of the sheet.
+    pub title: String,
+    /// Note of the sheet.
+    pub note: Option<String>,
+    /// Name of the sheet's file as given on the command line (`-` for standard input).
+    pub source: String,
+    /// The sheet's text.
+    pub sheet: String,
+    /// How it ended.
+    pub status: Status,
+    /// Why it failed.
+    pub reason: Option<String>,
+    /// Name of the coordinate.
+    pub coordinate: String,
+    /// Its unit in tables and plots.
+    pub coordinate_unit: String,
+    /// Ends of the span, in that unit.
+    pub span: (f64, f64),
+    /// Unknowns, each with unit and order.
+    pub unknowns: Vec<Entry>,
+    /// Equations as written, the remark says what is carried.
+    pub equations: Vec<Entry>,
+    /// Conditions as written.
+    pub conditions: Vec<Entry>,
+    /// Data and named expressions as written, the remark shows the value found.
+    pub data: Vec<Entry>,
+    /// Asked numbers.
+    pub quantities: Vec<Quantity>,
+    /// Evidence.
+    pub checks: Vec<Check>,
+    /// Curves: unknowns and asked expressions.
+    pub curves: Vec<Curve>,
+    /// Residual along the span, relative.
+    pub residual: Vec<Curve>,
+    /// Supports, jumps, breaks.
+    pub features: Vec<Feature>,
+    /// Names of the unknowns of the decay columns (carried fluxes included).
+    pub decay_names: Vec<String>,
+    /// The mesh.
+    pub mesh: Vec<MeshRow>,
+    /// Passes of the mesh adaptation.
+    pub passes: usize,
+    /// Warnings.
+    pub warnings: Vec<String>,
+    /// Relative accuracy asked.
+    pub relative: f64,
+}

@@ -1,0 +1,1 @@
+//! Every numerical tolerance of the crate, named once, with the reason for its size.
