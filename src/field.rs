@@ -1,12 +1,131 @@
 //! Piecewise polynomial functions on a mesh: value, derivative, integral.
 
-use crate::mesh::Mesh;
+use crate::legendre;
+use crate::mesh::{Element, Mesh};
+use crate::model::{Layout, Side};
 
 /// The unknown functions as piecewise polynomials, with the unknown constants.
+///
+/// On each element u_i has degree n - 1 + m_i; the Legendre coefficients of u_i and of each of its
+/// derivatives up to the m_i-th are kept, so that no derivative is taken numerically.
 #[derive(Debug, Clone)]
 pub struct Field {
     /// The mesh it lives on.
     pub mesh: Mesh,
+    /// Unknowns and their orders.
+    pub layout: Layout,
     /// Unknown constants.
     pub constants: Vec<f64>,
+    /// For each element the series of all jets, in the order of the layout.
+    series: Vec<Vec<Vec<f64>>>,
+}
+
+/// Legendre series of u, u', ..., u^(m) on an element from the series of v = u^(m) and the state at the
+/// left end: u^(k)(s) = z_k + (h/2) * int_{-1}^s u^(k+1).
+fn integrate_up(highest: Vec<f64>, state: &[f64], half: f64) -> Vec<Vec<f64>> {
+    let mut levels = vec![highest];
+    for z in state.iter().rev() {
+        let mut up = legendre::integrate_series(&levels[levels.len() - 1]);
+        up.iter_mut().for_each(|c| *c *= half);
+        up[0] += z;
+        levels.push(up);
+    }
+    levels.reverse();
+    levels
+}
+
+impl Field {
+    /// Builds a field from the Legendre coefficients of each v_i = u_i^(m_i) and the state at the left end of
+    /// each element.
+    pub(crate) fn new(
+        mesh: Mesh,
+        layout: &Layout,
+        constants: Vec<f64>,
+        elements: impl Iterator<Item = (Vec<Vec<f64>>, Vec<f64>)>,
+    ) -> Self {
+        let series = elements
+            .zip(&mesh.elements)
+            .map(|((highest, state), element)| {
+                let half = 0.5 * element.length();
+                let mut jets = Vec::with_capacity(layout.jets());
+                let mut first = 0;
+                for (v, &m) in highest.into_iter().zip(layout.orders()) {
+                    jets.extend(integrate_up(v, &state[first..first + m], half));
+                    first += m;
+                }
+                jets
+            })
+            .collect();
+        Self { mesh, layout: layout.clone(), constants, series }
+    }
+
+    /// Index of the element that holds x; at a shared end `side` decides.
+    pub fn locate(&self, x: f64, side: Side) -> usize {
+        let elements = &self.mesh.elements;
+        let index = match side {
+            Side::Left => elements.partition_point(|e| e.right < x),
+            Side::Right => elements.partition_point(|e| e.right <= x),
+        };
+        index.min(elements.len() - 1)
+    }
+
+    /// Legendre coefficients of u_i^(k), k <= m_i, on an element.
+    pub fn series(&self, element: usize, unknown: usize, order: usize) -> &[f64] {
+        &self.series[element][self.layout.jet(unknown, order)]
+    }
+
+    /// u_i^(k), k = 0..=tops\[i\], at the reference coordinate s of an element, unknown after unknown.
+    /// Derivatives above the order m_i are those of the polynomial.
+    pub fn jets(&self, element: usize, s: f64, tops: &[usize]) -> Vec<f64> {
+        let mut jets = Vec::with_capacity(tops.iter().map(|t| t + 1).sum());
+        self.for_jets(element, tops, |series| jets.push(legendre::series(series, s)));
+        jets
+    }
+
+    /// Size of the rounding error to be expected in each of the jets of [`Field::jets`]: a small multiple of
+    /// the unit roundoff times the sum of the sizes of the coefficients.
+    pub fn noise(&self, element: usize, tops: &[usize]) -> Vec<f64> {
+        let mut noise = Vec::with_capacity(tops.iter().map(|t| t + 1).sum());
+        self.for_jets(element, tops, |series| {
+            noise.push(crate::tolerance::EVALUATION * series.iter().map(|c| c.abs()).sum::<f64>());
+        });
+        noise
+    }
+
+    /// Calls `visit` with the series of each wanted jet in turn.
+    fn for_jets(&self, element: usize, tops: &[usize], mut visit: impl FnMut(&[f64])) {
+        let scale = 2.0 / self.mesh.elements[element].length();
+        for (i, (&top, &m)) in tops.iter().zip(self.layout.orders()).enumerate() {
+            for k in 0..=top.min(m) {
+                visit(self.series(element, i, k));
+            }
+            let mut beyond: Option<Vec<f64>> = None;
+            for _ in m..top {
+                let mut next = legendre::differentiate_series(beyond.as_deref().unwrap_or(self.series(element, i, m)));
+                next.iter_mut().for_each(|c| *c *= scale);
+                visit(&next);
+                beyond = Some(next);
+            }
+        }
+    }
+
+    /// u_i^(k) at x; at a shared end from the side given.
+    pub fn value(&self, unknown: usize, order: usize, x: f64, side: Side) -> f64 {
+        let element = self.locate(x, side);
+        let mut tops = vec![0; self.layout.unknowns()];
+        tops[unknown] = order;
+        let s = self.mesh.elements[element].reference(x);
+        self.jets(element, s, &tops)[unknown + order]
+    }
+
+    /// Bound of |u_i^(k)| on the span, k <= m_i: largest sum of coefficient sizes on any element.
+    pub fn size(&self, unknown: usize, order: usize) -> f64 {
+        let sizes = (0..self.series.len()).map(|e| self.series(e, unknown, order).iter().map(|c| c.abs()).sum::<f64>());
+        sizes.fold(0.0, f64::max)
+    }
+
+    /// The element behind an index.
+    pub fn element(&self, index: usize) -> &Element {
+        &self.mesh.elements[index]
+    }
 }
