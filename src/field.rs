@@ -20,9 +20,9 @@ pub struct Field {
     series: Vec<Vec<Vec<f64>>>,
 }
 
-/// Legendre series of u, u', ..., u^(m) on an element from the series of v = u^(m) and the state at the
+/// Legendre series of u, u', ..., u^(m), in this order, on an element from the series of v = u^(m) and the state at the
 /// left end: u^(k)(s) = z_k + (h/2) * int_{-1}^s u^(k+1).
-fn integrate_up(highest: Vec<f64>, state: &[f64], half: f64) -> Vec<Vec<f64>> {
+pub(crate) fn integrate_up(highest: Vec<f64>, state: &[f64], half: f64) -> Vec<Vec<f64>> {
     let mut levels = vec![highest];
     for z in state.iter().rev() {
         let mut up = legendre::integrate_series(&levels[levels.len() - 1]);
@@ -35,27 +35,8 @@ fn integrate_up(highest: Vec<f64>, state: &[f64], half: f64) -> Vec<Vec<f64>> {
 }
 
 impl Field {
-    /// Builds a field from the Legendre coefficients of each v_i = u_i^(m_i) and the state at the left end of
-    /// each element.
-    pub(crate) fn new(
-        mesh: Mesh,
-        layout: &Layout,
-        constants: Vec<f64>,
-        elements: impl Iterator<Item = (Vec<Vec<f64>>, Vec<f64>)>,
-    ) -> Self {
-        let series = elements
-            .zip(&mesh.elements)
-            .map(|((highest, state), element)| {
-                let half = 0.5 * element.length();
-                let mut jets = Vec::with_capacity(layout.jets());
-                let mut first = 0;
-                for (v, &m) in highest.into_iter().zip(layout.orders()) {
-                    jets.extend(integrate_up(v, &state[first..first + m], half));
-                    first += m;
-                }
-                jets
-            })
-            .collect();
+    /// Builds a field from the series of all jets on each element.
+    pub(crate) fn from_series(mesh: Mesh, layout: &Layout, constants: Vec<f64>, series: Vec<Vec<Vec<f64>>>) -> Self {
         Self { mesh, layout: layout.clone(), constants, series }
     }
 
@@ -116,6 +97,26 @@ impl Field {
         tops[unknown] = order;
         let s = self.mesh.elements[element].reference(x);
         self.jets(element, s, &tops)[unknown + order]
+    }
+
+    /// Sizes of the unknowns on an interval inside the span: for each u_i the largest |u_i^(k)| (h/2)^k, k below its
+    /// order (u_i itself for order 0), seen at three points.
+    pub(crate) fn local_sizes(&self, left: f64, right: f64) -> Vec<f64> {
+        let half = 0.5 * (right - left);
+        let mut sizes = vec![0.0f64; self.layout.unknowns()];
+        let tops: Vec<usize> = self.layout.orders().iter().map(|m| m.max(&1) - 1).collect();
+        for (x, side) in [(left, Side::Right), (0.5 * (left + right), Side::Right), (right, Side::Left)] {
+            let element = self.locate(x, side);
+            let jets = self.jets(element, self.element(element).reference(x), &tops);
+            let mut at = 0;
+            for (size, top) in sizes.iter_mut().zip(&tops) {
+                for k in 0..=*top {
+                    *size = size.max(jets[at].abs() * half.powi(k as i32));
+                    at += 1;
+                }
+            }
+        }
+        sizes
     }
 
     /// Bound of |u_i^(k)| on the span, k <= m_i: largest sum of coefficient sizes on any element.

@@ -15,38 +15,38 @@ pub mod legendre;
 /// Matrices on the reference interval [-1, 1]: differentiation, integration, interpolation, mass.
 pub mod operator;
 
-/// Piecewise polynomial functions on a mesh: value, derivative, integral.
-pub mod field;
 /// Elements along the span and the breaks between them.
 pub mod mesh;
-
-/// Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.
-pub mod adapt;
-/// What the answer rests on: error bars, residual, decay, balance, the second route.
-pub mod evidence;
-/// Linear algebra of one pass: condense an element, chain the elements, close with the conditions.
-pub mod linear;
 /// The problem as the solver sees it: unknowns, orders, equations, conditions, and their derivatives.
 pub mod model;
-/// Problems from Rust closures.
-pub mod problem;
-/// Asked numbers: values, extremes, places, integrals, each with its bar.
+/// Piecewise polynomial functions on a mesh: value, derivative, size, noise.
+pub mod field;
+/// Asked numbers on a field: values, extremes, places, integrals, each with the rounding of its evaluation.
 pub mod quantity;
+
+/// Linear algebra of one pass: condense an element, chain the elements, close with the conditions.
+pub mod linear;
+/// Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.
+pub mod adapt;
+/// What the answer rests on: error bars, residual, second route, explanations of singular problems.
+pub mod evidence;
 /// Drivers: from a model to a solution.
 pub mod solve;
+/// Problems from Rust closures.
+pub mod problem;
 
-/// The command line: arguments, streams, colours, progress, exit codes.
-#[cfg(feature = "cli")]
-pub mod cli;
-/// Formulas: text, tree, derivative, fast evaluation.
-#[cfg(feature = "sheet")]
-pub mod formula;
-/// Results as text, JSON, page, tables and plots. Pure functions; display units are applied here only.
-#[cfg(feature = "record")]
-pub mod record;
-/// The calculation sheet: from a file to a located, checked model in SI units.
-#[cfg(feature = "sheet")]
-pub mod sheet;
 /// Physical dimensions and units of measurement.
 #[cfg(feature = "sheet")]
 pub mod unit;
+/// Formulas: text, tree, derivative, fast evaluation.
+#[cfg(feature = "sheet")]
+pub mod formula;
+/// The calculation sheet: from a file to a located, checked model in SI units.
+#[cfg(feature = "sheet")]
+pub mod sheet;
+/// Results as text, JSON, page, tables and plots. Pure functions; display units are applied here only.
+#[cfg(feature = "record")]
+pub mod record;
+/// The command line: arguments, streams, colours, progress, exit codes.
+#[cfg(feature = "cli")]
+pub mod cli;

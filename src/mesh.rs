@@ -21,7 +21,11 @@ impl Element {
 
     /// Coordinate x of the reference coordinate s in [-1, 1]; exact at both ends.
     pub fn coordinate(&self, s: f64) -> f64 {
-        if s <= 0.0 { self.left + 0.5 * self.length() * (1.0 + s) } else { self.right - 0.5 * self.length() * (1.0 - s) }
+        if s <= 0.0 {
+            self.left + 0.5 * self.length() * (1.0 + s)
+        } else {
+            self.right - 0.5 * self.length() * (1.0 - s)
+        }
     }
 
     /// Reference coordinate s in [-1, 1] of the coordinate x; x outside the element is moved to its end.

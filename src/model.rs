@@ -26,12 +26,7 @@ impl Layout {
             jets.push(jets[i] + m + 1);
             states.push(states[i] + m);
         }
-        Self {
-            orders: orders.to_vec(),
-            jets,
-            states,
-            constants,
-        }
+        Self { orders: orders.to_vec(), jets, states, constants }
     }
 
     /// Orders m_i.
@@ -186,13 +181,7 @@ pub trait Model: Sync {
     /// All conditions.
     fn conditions(&self) -> &[Condition];
     /// One condition; `jets` holds the jets of its places, \[places\]\[J\]; `out` has been reset.
-    fn condition(
-        &self,
-        index: usize,
-        jets: &[f64],
-        constants: &[f64],
-        out: &mut ConditionValue,
-    ) -> Result<()>;
+    fn condition(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> Result<()>;
     /// Continuities given up (one entry also for each that a jump condition replaces).
     fn releases(&self) -> &[Release];
     /// Name of an unknown function, for messages.

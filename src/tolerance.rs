@@ -5,3 +5,51 @@ pub const ROUNDOFF: f64 = f64::EPSILON / 2.0;
 
 /// Rounding error of a Clenshaw sum relative to the sum of the sizes of its terms.
 pub const EVALUATION: f64 = 2.0 * ROUNDOFF;
+
+/// A pivot below this share of the largest one counts as zero.
+pub const PIVOT: f64 = 4.0 * ROUNDOFF;
+
+/// Below this ratio of the pivots of the closing system its singular values are looked at.
+pub const SUSPICIOUS: f64 = 1e-8;
+
+/// Closing systems up to this size always have their singular values computed: the condition number
+/// costs nothing there.
+pub const SMALL_CLOSURE: usize = 40;
+
+/// A singular value of the scaled closing system below this share of the largest one counts as zero: well
+/// above the rounding of the condensation (some 1e-15), well below the most ill-conditioned system whose
+/// answer would still carry two digits.
+pub const SINGULAR: f64 = 2e-14;
+
+/// Coefficients below this many times the rounding error expected in them count as noise.
+pub const NOISE: f64 = 40.0;
+
+/// Relative change of the coefficients by which the sensitivity to the data is felt: large against
+/// rounding, small enough for the answer to respond linearly.
+pub const NUDGE: f64 = 1e-9;
+
+/// Safety factor on the largest difference between the answer and its companions on other meshes: each is one sample
+/// of truncation and rounding, of the same size as the error of the answer or larger.
+pub const TRUNCATION: f64 = 3.0;
+
+/// How many roundings enter a coefficient: data are products of a few rounded numbers, and each solve adds
+/// some.
+pub const DATA: f64 = 2.0;
+
+/// Rounding of the number itself and of its conversion to a unit, relative.
+pub const LAST_PLACE: f64 = 4.0 * ROUNDOFF;
+
+/// Share of the accuracy asked that the last coefficients may have: error bars compare two meshes, so both
+/// must be well below it.
+pub const TAIL_SHARE: f64 = 1e-4;
+
+/// Finest tail that is asked for, whatever the accuracy.
+pub const FINEST_TAIL: f64 = 2e-15;
+
+/// A last coefficient that adds less than a certain share of the possible size of the terms to an equation is dropped
+/// as rounding if it stands out: the share is this times the ratio of the element to the shortest one ...
+pub const INVISIBLE_GROWTH: f64 = 100.0 * ROUNDOFF;
+/// ... but at least this ...
+pub const INVISIBLE_LEAST: f64 = 1e-11;
+/// ... and at most this.
+pub const INVISIBLE_MOST: f64 = 1e-7;

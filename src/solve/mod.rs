@@ -1,15 +1,21 @@
 //! Drivers: from a model to a solution.
 
-use crate::error::Result;
-use crate::field::Field;
-use crate::model::Model;
-use crate::quantity::Estimate;
+mod boundary;
 
-/// Called between passes and now and then within; returning false stops the solve with `Error::Interrupted`.
+pub use boundary::boundary;
+
+use crate::error::Result;
+use crate::evidence::bars::{self, Companions};
+use crate::field::Field;
+use crate::model::{Profile, Side};
+use crate::quantity::{self, Estimate, Extreme};
+use std::cell::Cell;
+
+/// Called now and then during a solve; returning false stops it with `Error::Interrupted`.
 pub type Watch<'a> = &'a (dyn Fn(Progress) -> bool + Sync);
 
 /// How far a solve has come.
-#[derive(Debug, Clone, Copy, PartialEq)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Progress {
     /// Pass, from 1.
     pub pass: usize,
@@ -22,7 +28,7 @@ pub struct Progress {
 /// What is asked of a solve.
 #[derive(Clone, Copy)]
 pub struct Settings<'a> {
-    /// Error allowed, relative.
+    /// Error allowed, relative: 1e-14 to 1e-2.
     pub relative: f64,
     /// Largest number of elements.
     pub most_elements: usize,
@@ -30,24 +36,155 @@ pub struct Settings<'a> {
     pub watch: Option<Watch<'a>>,
 }
 
-/// A solution with everything that its error bars rest on.
-pub struct Solution {
-    /// The answer: the enriched solution (n + 4 nodes an element).
-    pub field: Field,
-}
-
-impl Solution {
-    /// A number made from the solution, with its bar: `number` is evaluated on the answer and on the
-    /// companion solutions (fewer nodes, perturbed data), and returns the value with the rounding error that
-    /// its own arithmetic may have added.
-    pub fn estimate(&self, number: impl Fn(&Field) -> Result<Estimate>) -> Result<Estimate> {
-        let _ = number;
-        todo!()
+impl Default for Settings<'_> {
+    /// Ten digits, at most 200,000 elements, no watch.
+    fn default() -> Self {
+        Self { relative: 1e-10, most_elements: 200_000, watch: None }
     }
 }
 
-/// Solves a boundary-value problem.
-pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> {
-    let _ = (model, settings);
-    todo!()
+/// A solution with everything that its error bars rest on.
+#[derive(Debug, Clone)]
+pub struct Solution {
+    /// The answer: n + 4 nodes an element.
+    pub field: Field,
+    /// Condition number of the scaled closing system: by how much relative changes of the data can be
+    /// amplified beyond what the elements themselves do.
+    pub condition: f64,
+    /// Passes of the mesh adaptation.
+    pub passes: usize,
+    /// Whether the last mesh resolved the solution.
+    pub resolved: bool,
+    companions: Companions,
+}
+
+impl Solution {
+    /// A number made from the solution, with its bar.
+    ///
+    /// `number` is evaluated on the answer and on companion solutions (fewer nodes, changed data); it returns
+    /// the value with the rounding error that its own arithmetic may have added. What comes out is a bound
+    /// meant to hold: |true - value| <= error.
+    ///
+    /// # Errors
+    /// Those of `number`, and `NotFinite` when value or bar is not finite.
+    pub fn estimate(&self, number: impl Fn(&Field) -> Result<Estimate>) -> Result<Estimate> {
+        bars::estimate(&self.field, &self.companions, &number)
+    }
+
+    /// The solution with fewer nodes an element that the answer is compared with.
+    pub fn base(&self) -> &Field {
+        &self.companions.coarser[0]
+    }
+
+    /// u_i^(k) at x with its bar; at a break from the side given. k up to the order of the unknown.
+    ///
+    /// # Errors
+    /// `NotFinite`.
+    pub fn value(&self, unknown: usize, order: usize, x: f64, side: Side) -> Result<Estimate> {
+        self.estimate(|field| {
+            let element = field.locate(x, side);
+            let mut tops = vec![0; field.layout.unknowns()];
+            tops[unknown] = order;
+            let error = field.noise(element, &tops)[unknown + order];
+            Ok(Estimate { value: field.value(unknown, order, x, side), error })
+        })
+    }
+
+    /// Value of a profile at x with its bar; at a break from the side given.
+    ///
+    /// # Errors
+    /// `NotFinite`.
+    pub fn value_of(&self, profile: &dyn Profile, x: f64, side: Side) -> Result<Estimate> {
+        self.estimate(|field| quantity::value_at(field, profile, x, side))
+    }
+
+    /// Integral of a profile over [from, to] with its bar.
+    ///
+    /// # Errors
+    /// Those of [`quantity::integral`].
+    pub fn integral(&self, profile: &dyn Profile, from: f64, to: f64) -> Result<Estimate> {
+        self.estimate(|field| quantity::integral(field, profile, from, to))
+    }
+
+    /// Largest value of a profile over [from, to] and its place, both with their bars.
+    ///
+    /// # Errors
+    /// Those of [`quantity::maximum`].
+    pub fn maximum(&self, profile: &dyn Profile, from: f64, to: f64) -> Result<Extreme> {
+        self.extreme(&|field, near| quantity::maximum(field, profile, from, to, near))
+    }
+
+    /// Smallest value, otherwise as [`Solution::maximum`].
+    ///
+    /// # Errors
+    /// Those of [`quantity::minimum`].
+    pub fn minimum(&self, profile: &dyn Profile, from: f64, to: f64) -> Result<Extreme> {
+        self.extreme(&|field, near| quantity::minimum(field, profile, from, to, near))
+    }
+
+    fn extreme(&self, find: &dyn Fn(&Field, Option<f64>) -> Result<Extreme>) -> Result<Extreme> {
+        // The answer is asked first; its companions must answer for the same peak.
+        let near = Cell::new(None);
+        let place = self.estimate(|field| {
+            let found = find(field, near.get())?.place;
+            near.set(near.get().or(Some(found.value)));
+            Ok(found)
+        })?;
+        let first = Cell::new(None);
+        let value = self.estimate(|field| {
+            let found = find(field, first.get())?;
+            first.set(first.get().or(Some(found.place.value)));
+            Ok(found.value)
+        })?;
+        Ok(Extreme { place, value, ..find(&self.field, None)? })
+    }
+
+    /// The n-th place (from 1) in [from, to] where a profile changes sign, with its bar; `None` if there are fewer.
+    ///
+    /// # Errors
+    /// Those of [`quantity::roots`].
+    pub fn root(&self, profile: &dyn Profile, n: usize, from: f64, to: f64) -> Result<Option<Estimate>> {
+        if quantity::roots(&self.field, profile, from, to)?.len() < n || n == 0 {
+            return Ok(None);
+        }
+        let missing = || crate::error::Error::NotFinite { what: "a place of change of sign".into(), x: from };
+        self.estimate(|field| quantity::roots(field, profile, from, to)?.get(n - 1).copied().ok_or_else(missing))
+            .map(Some)
+    }
+
+    /// Square root of the integral of the square of a profile over [from, to], with its bar.
+    ///
+    /// # Errors
+    /// Those of [`quantity::integral`].
+    pub fn norm(&self, profile: &dyn Profile, from: f64, to: f64) -> Result<Estimate> {
+        let square = Square(profile);
+        self.estimate(|field| {
+            let sum = quantity::integral(field, &square, from, to)?;
+            let value = sum.value.max(0.0).sqrt();
+            let error = if value > 0.0 { 0.5 * sum.error / value } else { sum.error.sqrt() };
+            Ok(Estimate { value, error })
+        })
+    }
+}
+
+/// The square of a profile.
+struct Square<'a>(&'a dyn Profile);
+
+impl Profile for Square<'_> {
+    fn tops(&self) -> &[usize] {
+        self.0.tops()
+    }
+
+    fn value(&self, x: f64, piece: usize, jets: &[f64], constants: &[f64]) -> f64 {
+        self.0.value(x, piece, jets, constants).powi(2)
+    }
+
+    fn slope(&self, x: f64, piece: usize, jets: &[f64], constants: &[f64]) -> f64 {
+        let (mut inner, mut at) = (Vec::with_capacity(jets.len()), 0);
+        for top in self.tops() {
+            inner.extend_from_slice(&jets[at..=at + top]);
+            at += top + 2;
+        }
+        2.0 * self.0.value(x, piece, &inner, constants) * self.0.slope(x, piece, jets, constants)
+    }
 }

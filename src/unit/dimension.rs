@@ -25,10 +25,7 @@ impl Exponent {
     const ZERO: Self = Self::whole(0);
 
     const fn whole(n: i8) -> Self {
-        Self {
-            numerator: n as i16,
-            denominator: 1,
-        }
+        Self { numerator: n as i16, denominator: 1 }
     }
 
     /// The fraction numerator / denominator in lowest terms.
@@ -42,10 +39,7 @@ impl Exponent {
         let shared = gcd(numerator.unsigned_abs(), denominator.unsigned_abs()) as i64;
         let sign = denominator.signum();
         let part = |n: i64| i16::try_from(sign * n / shared).map_err(|_| ExponentRange);
-        Ok(Self {
-            numerator: part(numerator)?,
-            denominator: part(denominator)?,
-        })
+        Ok(Self { numerator: part(numerator)?, denominator: part(denominator)? })
     }
 
     /// The fraction with the smallest denominator (at most 1000) that equals a number within its rounding:
@@ -96,24 +90,12 @@ impl Exponent {
     }
 
     fn plus(self, other: Self) -> Result<Self, ExponentRange> {
-        let [a, b, c, d] = [
-            self.numerator,
-            self.denominator,
-            other.numerator,
-            other.denominator,
-        ]
-        .map(i64::from);
+        let [a, b, c, d] = [self.numerator, self.denominator, other.numerator, other.denominator].map(i64::from);
         Self::new(a * d + c * b, b * d)
     }
 
     pub(crate) fn times(self, other: Self) -> Result<Self, ExponentRange> {
-        let [a, b, c, d] = [
-            self.numerator,
-            self.denominator,
-            other.numerator,
-            other.denominator,
-        ]
-        .map(i64::from);
+        let [a, b, c, d] = [self.numerator, self.denominator, other.numerator, other.denominator].map(i64::from);
         Self::new(a * c, b * d)
     }
 
@@ -264,15 +246,11 @@ impl Dimension {
 
     /// The usual coherent SI unit: `N/m`, else base units.
     pub fn usual_unit(self) -> String {
-        self.usual()
-            .map_or_else(|| self.to_string(), |(unit, _)| unit.into())
+        self.usual().map_or_else(|| self.to_string(), |(unit, _)| unit.into())
     }
 
     fn usual(self) -> Option<(&'static str, &'static str)> {
-        USUAL
-            .iter()
-            .find(|(n, _, _)| Self::whole(*n) == self)
-            .map(|(_, unit, name)| (*unit, *name))
+        USUAL.iter().find(|(n, _, _)| Self::whole(*n) == self).map(|(_, unit, name)| (*unit, *name))
     }
 }
 
@@ -354,11 +332,7 @@ impl fmt::Display for Dimension {
                 .collect()
         };
         let (over, under) = (list(true), list(false));
-        let over = if over.is_empty() {
-            "1".into()
-        } else {
-            over.join(" ")
-        };
+        let over = if over.is_empty() { "1".into() } else { over.join(" ") };
         match under.len() {
             0 => write!(f, "{over}"),
             1 => write!(f, "{over}/{}", under[0]),
@@ -401,18 +375,9 @@ mod tests {
         let d = Dimension::TIME.power(e).expect("in range");
         assert_eq!(d.to_string(), "s^0.42");
         assert_eq!(d.powr(50, 21), Ok(Dimension::TIME));
-        assert_eq!(
-            Dimension::MASS.powi(30_000).and_then(|d| d.powi(2)),
-            Err(ExponentRange)
-        );
-        assert_eq!(
-            Dimension::MASS.powf(std::f64::consts::E),
-            Err(ExponentRange)
-        );
-        assert_eq!(
-            Dimension::NONE.powf(std::f64::consts::E),
-            Ok(Dimension::NONE)
-        );
+        assert_eq!(Dimension::MASS.powi(30_000).and_then(|d| d.powi(2)), Err(ExponentRange));
+        assert_eq!(Dimension::MASS.powf(std::f64::consts::E), Err(ExponentRange));
+        assert_eq!(Dimension::NONE.powf(std::f64::consts::E), Ok(Dimension::NONE));
     }
 
     #[test]
@@ -420,11 +385,7 @@ mod tests {
         let cases = [
             ([0; 7], "1", "1 (pure number)"),
             ([1, 0, -2, 0, 0, 0, 0], "kg/s^2", "N/m (force per length)"),
-            (
-                [1, 1, -3, 0, -1, 0, 0],
-                "kg m/(s^3 K)",
-                "W/(m K) (thermal conductivity)",
-            ),
+            ([1, 1, -3, 0, -1, 0, 0], "kg m/(s^3 K)", "W/(m K) (thermal conductivity)"),
             ([0, 0, 0, 0, -1, 0, 0], "1/K", "1/K (per temperature)"),
             ([2, 0, 0, 0, 0, 0, -1], "kg^2/cd", "kg^2/cd"),
         ];

@@ -43,24 +43,12 @@ pub struct Unit {
 
 impl Unit {
     fn new(text: String, scale: Scale, shift: Scale, dimension: Dimension) -> Self {
-        Self {
-            text,
-            factor: scale.factor(),
-            offset: Scale::ONE.apply(0.0, shift),
-            dimension,
-            scale,
-            shift,
-        }
+        Self { text, factor: scale.factor(), offset: Scale::ONE.apply(0.0, shift), dimension, scale, shift }
     }
 
     /// The coherent SI unit of a dimension under its usual name: `N/m` for kg/s^2, `1` for a pure number.
     pub fn si(dimension: Dimension) -> Self {
-        Self::new(
-            dimension.usual_unit(),
-            Scale::ONE,
-            table::NO_OFFSET,
-            dimension,
-        )
+        Self::new(dimension.usual_unit(), Scale::ONE, table::NO_OFFSET, dimension)
     }
 
     /// Reads a whole text as a unit; `explicit_star` allows `*` between symbols and blanks around signs, as in

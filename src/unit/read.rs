@@ -39,12 +39,7 @@ const DEEPEST: usize = 20;
 /// # Ok::<(), spanwise::unit::UnitError>(())
 /// ```
 pub fn scan(text: &str) -> Result<Option<(Unit, usize)>, UnitError> {
-    let mut reader = Reader {
-        text,
-        at: 0,
-        whole: false,
-        star: false,
-    };
+    let mut reader = Reader { text, at: 0, whole: false, star: false };
     if text.starts_with('1') && !text[1..].starts_with('/') {
         return Ok(None);
     }
@@ -56,12 +51,7 @@ pub fn scan(text: &str) -> Result<Option<(Unit, usize)>, UnitError> {
 }
 
 pub(super) fn whole(text: &str, star: bool) -> Result<Unit, UnitError> {
-    let mut reader = Reader {
-        text,
-        at: 0,
-        whole: true,
-        star,
-    };
+    let mut reader = Reader { text, at: 0, whole: true, star };
     reader.blanks();
     if reader.rest().is_empty() {
         return Err(UnitError {
@@ -85,19 +75,11 @@ enum Stop {
 }
 
 fn no_unit(span: Range<usize>, message: impl Into<String>, hint: Option<String>) -> Stop {
-    Stop::NoUnit(Box::new(UnitError {
-        span,
-        message: message.into(),
-        hint,
-    }))
+    Stop::NoUnit(Box::new(UnitError { span, message: message.into(), hint }))
 }
 
 fn fault(span: Range<usize>, message: impl Into<String>, hint: Option<String>) -> Stop {
-    Stop::Fault(Box::new(UnitError {
-        span,
-        message: message.into(),
-        hint,
-    }))
+    Stop::Fault(Box::new(UnitError { span, message: message.into(), hint }))
 }
 
 /// A unit being put together.
@@ -196,18 +178,9 @@ impl<'a> Reader<'a> {
     fn joined(a: Parts, join: Join, b: Parts) -> Result<Parts, ExponentRange> {
         let (sign, scale, dimension) = match join {
             Join::Times => (' ', a.scale.times(b.scale), a.dimension.mul(b.dimension)?),
-            Join::Over => (
-                '/',
-                a.scale.times(b.scale.inverse()),
-                a.dimension.div(b.dimension)?,
-            ),
+            Join::Over => ('/', a.scale.times(b.scale.inverse()), a.dimension.div(b.dimension)?),
         };
-        Ok(Parts {
-            text: format!("{}{sign}{}", a.text, b.text),
-            scale,
-            shift: NO_OFFSET,
-            dimension,
-        })
+        Ok(Parts { text: format!("{}{sign}{}", a.text, b.text), scale, shift: NO_OFFSET, dimension })
     }
 
     /// The sign between two factors.
@@ -271,11 +244,7 @@ impl<'a> Reader<'a> {
         let mut parts = self.product(depth + 1)?;
         self.blanks();
         if self.peek() != Some(')') {
-            return Err(no_unit(
-                open..open + 1,
-                "this parenthesis is not closed",
-                None,
-            ));
+            return Err(no_unit(open..open + 1, "this parenthesis is not closed", None));
         }
         self.at += 1;
         if parts.absolute() {
@@ -292,12 +261,7 @@ impl<'a> Reader<'a> {
         let span = self.at..self.at + symbol.len();
         if symbol == "1" && first {
             self.at = span.end;
-            return Ok(Parts {
-                text: symbol.into(),
-                scale: Scale::ONE,
-                shift: NO_OFFSET,
-                dimension: Dimension::NONE,
-            });
+            return Ok(Parts { text: symbol.into(), scale: Scale::ONE, shift: NO_OFFSET, dimension: Dimension::NONE });
         }
         let Some((unit, power)) = lookup(symbol) else {
             let hint = suggest(symbol);

@@ -24,93 +24,51 @@ impl Scale {
     pub(super) const ONE: Self = Self::ratio(1, 1);
 
     pub(super) const fn ratio(num: u128, den: u128) -> Self {
-        Self {
-            num,
-            den,
-            pi: 0,
-            loose: 1.0,
-        }
+        Self { num, den, pi: 0, loose: 1.0 }
     }
 
     pub(super) const fn with_pi(num: u128, den: u128) -> Self {
-        Self {
-            num,
-            den,
-            pi: 1,
-            loose: 1.0,
-        }
+        Self { num, den, pi: 1, loose: 1.0 }
     }
 
     pub(super) fn ten_to(power: i32) -> Self {
         let size = 10u128.pow(power.unsigned_abs());
-        if power >= 0 {
-            Self::ratio(size, 1)
-        } else {
-            Self::ratio(1, size)
-        }
+        if power >= 0 { Self::ratio(size, 1) } else { Self::ratio(1, size) }
     }
 
     pub(super) fn times(self, other: Self) -> Self {
         let (g, h) = (gcd(self.num, other.den), gcd(other.num, self.den));
-        let exact = (self.num / g)
-            .checked_mul(other.num / h)
-            .zip((self.den / h).checked_mul(other.den / g));
+        let exact = (self.num / g).checked_mul(other.num / h).zip((self.den / h).checked_mul(other.den / g));
         let (num, den, spill) = match exact {
             Some((num, den)) => (num, den, 1.0),
             None => (1, 1, self.fraction() * other.fraction()),
         };
-        Self {
-            num,
-            den,
-            pi: self.pi.saturating_add(other.pi),
-            loose: self.loose * other.loose * spill,
-        }
+        Self { num, den, pi: self.pi.saturating_add(other.pi), loose: self.loose * other.loose * spill }
     }
 
     pub(super) fn inverse(self) -> Self {
-        Self {
-            num: self.den,
-            den: self.num,
-            pi: -self.pi,
-            loose: 1.0 / self.loose,
-        }
+        Self { num: self.den, den: self.num, pi: -self.pi, loose: 1.0 / self.loose }
     }
 
     pub(super) fn power(self, exponent: Exponent) -> Self {
         if exponent.denominator() != 1 || exponent.numerator().unsigned_abs() > 200 {
-            return Self {
-                loose: self.factor().powf(exponent.value()),
-                ..Self::ONE
-            };
+            return Self { loose: self.factor().powf(exponent.value()), ..Self::ONE };
         }
-        let base = if exponent.numerator() < 0 {
-            self.inverse()
-        } else {
-            self
-        };
+        let base = if exponent.numerator() < 0 { self.inverse() } else { self };
         (0..exponent.numerator().unsigned_abs()).fold(Self::ONE, |product, _| product.times(base))
     }
 
     /// num/den, rounded.
     fn fraction(self) -> f64 {
-        Double::from_integer(self.num)
-            .over(Double::from_integer(self.den))
-            .hi
+        Double::from_integer(self.num).over(Double::from_integer(self.den)).hi
     }
 
     fn double(self) -> Double {
         // pi to 32 digits: the double nearest to it and the double nearest to the rest (Abramowitz & Stegun, table 1.1).
-        const PI: Double = Double {
-            hi: std::f64::consts::PI,
-            lo: 1.224_646_799_147_353_2e-16,
-        };
+        const PI: Double = Double { hi: std::f64::consts::PI, lo: 1.224_646_799_147_353_2e-16 };
         let mut product = Double::from_integer(self.num).over(Double::from_integer(self.den));
         for _ in 0..self.pi.unsigned_abs().min(1000) {
-            product = if self.pi > 0 {
-                product.times(PI)
-            } else {
-                product.over(PI)
-            };
+            product = if self.pi > 0 { product.times(PI) } else { product.over(PI) };
         }
         product.times(Double::from(self.loose))
     }
@@ -122,30 +80,21 @@ impl Scale {
 
     /// value * factor + offset, rounded once.
     pub(super) fn apply(self, value: f64, offset: Self) -> f64 {
-        let exact = Double::from(value)
-            .times(self.double())
-            .plus(offset.shift());
+        let exact = Double::from(value).times(self.double()).plus(offset.shift());
         exact.or(value * self.factor() + offset.shift().hi)
     }
 
     /// (value - offset) / factor, rounded once.
     pub(super) fn undo(self, value: f64, offset: Self) -> f64 {
         let shift = offset.shift();
-        let minus = Double {
-            hi: -shift.hi,
-            lo: -shift.lo,
-        };
+        let minus = Double { hi: -shift.hi, lo: -shift.lo };
         let exact = Double::from(value).plus(minus).over(self.double());
         exact.or((value - shift.hi) / self.factor())
     }
 
     /// As an offset: a numerator of zero stands for none.
     fn shift(self) -> Double {
-        if self.num == 0 {
-            Double::from(0.0)
-        } else {
-            self.double()
-        }
+        if self.num == 0 { Double::from(0.0) } else { self.double() }
     }
 }
 
@@ -167,20 +116,13 @@ impl Double {
         let hi = n as f64;
         // hi may lie above n by rounding.
         let back = hi as u128;
-        let lo = if back > n {
-            -((back - n) as f64)
-        } else {
-            (n - back) as f64
-        };
+        let lo = if back > n { -((back - n) as f64) } else { (n - back) as f64 };
         Self { hi, lo }
     }
 
     fn renormal(hi: f64, lo: f64) -> Self {
         let sum = hi + lo;
-        Self {
-            hi: sum,
-            lo: lo - (sum - hi),
-        }
+        Self { hi: sum, lo: lo - (sum - hi) }
     }
 
     fn plus(self, other: Self) -> Self {

@@ -71,18 +71,13 @@ pub fn suggest(symbol: &str) -> Option<String> {
     if let Some((_, text)) = CONVERSIONS.iter().find(|(word, _)| *word == symbol) {
         return Some((*text).into());
     }
-    let meant = word(symbol)
-        .or_else(|| with_exponent(symbol))
-        .or_else(|| other_case(symbol))
-        .or_else(|| joined(symbol, 3))?;
+    let meant =
+        word(symbol).or_else(|| with_exponent(symbol)).or_else(|| other_case(symbol)).or_else(|| joined(symbol, 3))?;
     Some(format!("did you mean {meant}?"))
 }
 
 fn word(symbol: &str) -> Option<String> {
-    WORDS
-        .iter()
-        .find(|(word, _)| *word == symbol)
-        .map(|(_, unit)| (*unit).into())
+    WORDS.iter().find(|(word, _)| *word == symbol).map(|(_, unit)| (*unit).into())
 }
 
 /// `mm2`, `m²`
@@ -116,11 +111,7 @@ fn other_case(symbol: &str) -> Option<String> {
             if candidate.to_lowercase() != lower {
                 continue;
             }
-            let kept = candidate
-                .chars()
-                .zip(symbol.chars())
-                .filter(|(a, b)| a == b)
-                .count();
+            let kept = candidate.chars().zip(symbol.chars()).filter(|(a, b)| a == b).count();
             if best.as_ref().is_none_or(|(most, _)| kept > *most) {
                 best = Some((kept, candidate));
             }

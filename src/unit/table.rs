@@ -22,13 +22,7 @@ impl Entry {
 pub(super) const NO_OFFSET: Scale = Scale::ratio(0, 1);
 
 const fn entry(symbol: &'static str, scale: Scale, exponents: [i8; 7], prefixes: bool) -> Entry {
-    Entry {
-        symbol,
-        scale,
-        offset: NO_OFFSET,
-        dimension: Dimension::whole(exponents),
-        prefixes,
-    }
+    Entry { symbol, scale, offset: NO_OFFSET, dimension: Dimension::whole(exponents), prefixes }
 }
 
 const fn si(symbol: &'static str, exponents: [i8; 7]) -> Entry {
@@ -45,13 +39,7 @@ const fn prefixed(symbol: &'static str, num: u128, den: u128, exponents: [i8; 7]
 
 /// A unit of temperature with a zero of its own.
 const fn absolute(symbol: &'static str, scale: Scale, offset: Scale) -> Entry {
-    Entry {
-        symbol,
-        scale,
-        offset,
-        dimension: Dimension::whole(KELVIN),
-        prefixes: false,
-    }
+    Entry { symbol, scale, offset, dimension: Dimension::whole(KELVIN), prefixes: false }
 }
 
 // Exponents of kg, m, s, A, K, mol, cd.

@@ -7,10 +7,7 @@ use crate::unit::{self, Unit};
 
 #[derive(Debug, Clone, PartialEq)]
 pub(super) enum Token {
-    Number {
-        value: f64,
-        unit: Option<(Box<Unit>, Span)>,
-    },
+    Number { value: f64, unit: Option<(Box<Unit>, Span)> },
     Name(String),
     Prime,
     Plus,
@@ -140,12 +137,8 @@ impl<'a> Lexer<'a> {
             '³' => "write ^3",
             '⁻' => "write ^-1",
             '√' => "write sqrt(...)",
-            '‘' | '’' | '′' | '`' | '´' | 'ʹ' | 'ʼ' => {
-                "a derivative is written with the plain mark '"
-            }
-            '"' | '“' | '”' | '″' | 'ʺ' => {
-                "a second derivative is written with two plain marks ''"
-            }
+            '‘' | '’' | '′' | '`' | '´' | 'ʹ' | 'ʼ' => "a derivative is written with the plain mark '",
+            '"' | '“' | '”' | '″' | 'ʺ' => "a second derivative is written with two plain marks ''",
             '[' | ']' => "square brackets hold a unit behind a number: 12 [kN*m]",
             '{' | '}' => "use round parentheses",
             '&' => "write `and`",
@@ -181,12 +174,9 @@ impl<'a> Lexer<'a> {
         }
         let span = start..self.at;
         let digits = &self.text[span.clone()];
-        let value: f64 = digits.parse().map_err(|_| {
-            SyntaxError::new(span.clone(), format!("`{digits}` is not a number"), None)
-        })?;
-        let zero = self.text[start..mantissa]
-            .bytes()
-            .all(|b| b == b'0' || b == b'.');
+        let value: f64 =
+            digits.parse().map_err(|_| SyntaxError::new(span.clone(), format!("`{digits}` is not a number"), None))?;
+        let zero = self.text[start..mantissa].bytes().all(|b| b == b'0' || b == b'.');
         if !value.is_finite() || (value == 0.0 && !zero) {
             let message = "this number is outside the range of about 1e-308 to 1e308";
             return Err(SyntaxError::new(span, message, None));
@@ -200,20 +190,14 @@ impl<'a> Lexer<'a> {
                 return Err(self.glued(start));
             }
         }
-        Ok(Token::Number {
-            value,
-            unit: self.unit()?,
-        })
+        Ok(Token::Number { value, unit: self.unit()? })
     }
 
     /// A number with a word glued to it: `2x`, `40mm`, `50%`.
     fn glued(&mut self, start: usize) -> SyntaxError {
         let number = &self.text[start..self.at];
         let word = self.skip(|c| continues_name(c) || matches!(c, '%' | '°'));
-        let known = unit::scan(word)
-            .ok()
-            .flatten()
-            .is_some_and(|(_, n)| n == word.len());
+        let known = unit::scan(word).ok().flatten().is_some_and(|(_, n)| n == word.len());
         let named = word.chars().all(continues_name);
         let hint = if let Some(digits) = word.strip_prefix('_') {
             format!("digits are not grouped: write {number}{digits}")
@@ -240,8 +224,8 @@ impl<'a> Lexer<'a> {
                 return Err(SyntaxError::new(start..start + 1, message, None));
             };
             let inner = start + 1..start + length;
-            let unit = Unit::parse(&self.text[inner.clone()], true)
-                .map_err(|e| SyntaxError::in_unit(inner.start, e))?;
+            let unit =
+                Unit::parse(&self.text[inner.clone()], true).map_err(|e| SyntaxError::in_unit(inner.start, e))?;
             self.at = start + length + 1;
             return Ok(Some((Box::new(unit), inner)));
         }

@@ -134,20 +134,12 @@ pub struct SyntaxError {
 
 impl SyntaxError {
     fn new(span: Span, message: impl Into<String>, hint: Option<&str>) -> Self {
-        Self {
-            span,
-            message: message.into(),
-            hint: hint.map(Into::into),
-        }
+        Self { span, message: message.into(), hint: hint.map(Into::into) }
     }
 
     /// An error of a unit that begins at byte `start` of the formula.
     fn in_unit(start: usize, error: UnitError) -> Self {
-        Self {
-            span: start + error.span.start..start + error.span.end,
-            message: error.message,
-            hint: error.hint,
-        }
+        Self { span: start + error.span.start..start + error.span.end, message: error.message, hint: error.hint }
     }
 }
 

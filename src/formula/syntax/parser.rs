@@ -1,9 +1,7 @@
 //! Tokens to trees: operator precedence by binding powers (Pratt, POPL 1973, 41-51).
 
 use super::lexer::{Token, tokens};
-use super::{
-    Argument, DEEPEST, DEEPEST_TREE, Expression, Kind, Operator, Sign, Span, SyntaxError, Test,
-};
+use super::{Argument, DEEPEST, DEEPEST_TREE, Expression, Kind, Operator, Sign, Span, SyntaxError, Test};
 use crate::unit;
 
 type Parsed<T> = Result<T, Box<SyntaxError>>;
@@ -30,23 +28,16 @@ struct Tree {
 
 impl<'a> Parser<'a> {
     pub(super) fn new(text: &'a str) -> Result<Self, SyntaxError> {
-        Ok(Self {
-            text,
-            tokens: tokens(text)?,
-            at: 0,
-            nesting: 0,
-        })
+        Ok(Self { text, tokens: tokens(text)?, at: 0, nesting: 0 })
     }
 
     pub(super) fn formula(mut self) -> Result<Expression, SyntaxError> {
         let tree = self.expression(0).map_err(|e| *e)?;
         match self.peek() {
             Token::End => Ok(tree.expression),
-            Token::Equals => Err(SyntaxError::new(
-                self.span(),
-                "an equation cannot stand here, only an expression",
-                None,
-            )),
+            Token::Equals => {
+                Err(SyntaxError::new(self.span(), "an equation cannot stand here, only an expression", None))
+            }
             _ => Err(*self.unexpected()),
         }
     }
@@ -65,11 +56,9 @@ impl<'a> Parser<'a> {
         let right = self.expression(0).map_err(|e| *e)?;
         match self.peek() {
             Token::End => Ok((left.expression, right.expression)),
-            Token::Equals => Err(SyntaxError::new(
-                self.span(),
-                "a second = in one equation",
-                Some("write two equations"),
-            )),
+            Token::Equals => {
+                Err(SyntaxError::new(self.span(), "a second = in one equation", Some("write two equations")))
+            }
             _ => Err(*self.unexpected()),
         }
     }
@@ -182,11 +171,7 @@ impl<'a> Parser<'a> {
             }
             let span = sign.start..inner.expression.span.end;
             // -5 degC is a temperature five degrees below zero, not the negative of 278.15 K.
-            if let Kind::Number {
-                value,
-                unit: Some(unit),
-                ..
-            } = &mut inner.expression.kind
+            if let Kind::Number { value, unit: Some(unit), .. } = &mut inner.expression.kind
                 && literal
                 && unit.is_absolute()
             {
@@ -238,11 +223,7 @@ impl<'a> Parser<'a> {
             Token::Number { value, unit } => {
                 self.at += 1;
                 let (unit, unit_span) = unit.map_or((None, None), |(u, s)| (Some(*u), Some(s)));
-                let kind = Kind::Number {
-                    value,
-                    unit,
-                    unit_span,
-                };
+                let kind = Kind::Number { value, unit, unit_span };
                 self.tree(kind, span, 0)
             }
             Token::Name(name) => self.named(name, span),
@@ -288,10 +269,7 @@ impl<'a> Parser<'a> {
                     _ => None,
                 };
                 self.at += usize::from(side.is_some());
-                arguments.push(Argument {
-                    value: tree.expression,
-                    side,
-                });
+                arguments.push(Argument { value: tree.expression, side });
                 if *self.peek() != Token::Comma {
                     break;
                 }
@@ -300,12 +278,7 @@ impl<'a> Parser<'a> {
         }
         let close = self.close(&open)?;
         let span = name_span.start..close.end;
-        let kind = Kind::Call {
-            name,
-            name_span,
-            primes,
-            arguments,
-        };
+        let kind = Kind::Call { name, name_span, primes, arguments };
         self.tree(kind, span, depth)
     }
 
@@ -367,11 +340,7 @@ impl<'a> Parser<'a> {
             let (next, next_depth) = part(self)?;
             depth = depth.max(next_depth) + 1;
             if depth > DEEPEST_TREE {
-                return Err(error(
-                    place,
-                    format!("more than {DEEPEST_TREE} tests in a row"),
-                    None,
-                ));
+                return Err(error(place, format!("more than {DEEPEST_TREE} tests in a row"), None));
             }
             test = join(Box::new(test), Box::new(next));
         }
@@ -392,17 +361,10 @@ impl<'a> Parser<'a> {
             self.at += 1;
             let right = self.expression(0)?;
             let depth = left.depth.max(right.depth) + 1;
-            let link = Test::Compare(
-                Box::new(left.expression),
-                sign,
-                Box::new(right.expression.clone()),
-            );
+            let link = Test::Compare(Box::new(left.expression), sign, Box::new(right.expression.clone()));
             test = Some(match test {
                 None => (link, depth),
-                Some((before, d)) => (
-                    Test::And(Box::new(before), Box::new(link)),
-                    d.max(depth) + 1,
-                ),
+                Some((before, d)) => (Test::And(Box::new(before), Box::new(link)), d.max(depth) + 1),
             });
             if depth > DEEPEST_TREE || test.as_ref().is_some_and(|(_, d)| *d > DEEPEST_TREE) {
                 let span = start..right.expression.span.end;
@@ -412,16 +374,10 @@ impl<'a> Parser<'a> {
         }
         let end = left.expression.span.end;
         test.ok_or_else(|| match self.peek() {
-            Token::Comma | Token::Close => error(
-                start..end,
-                "a comparison is missing in `if`",
-                Some("write if(x < a, ..., ...)"),
-            ),
-            Token::Equals => error(
-                self.span(),
-                "a test cannot be an equality",
-                Some("use <, <=, > or >="),
-            ),
+            Token::Comma | Token::Close => {
+                error(start..end, "a comparison is missing in `if`", Some("write if(x < a, ..., ...)"))
+            }
+            Token::Equals => error(self.span(), "a test cannot be an equality", Some("use <, <=, > or >=")),
             _ => self.unexpected(),
         })
     }
@@ -447,21 +403,13 @@ impl<'a> Parser<'a> {
     }
 
     fn close(&mut self, open: &Span) -> Parsed<Span> {
-        if *self.peek() == Token::Close {
-            Ok(self.advance())
-        } else {
-            Err(self.unclosed(open))
-        }
+        if *self.peek() == Token::Close { Ok(self.advance()) } else { Err(self.unclosed(open)) }
     }
 
     /// What is wrong where a `)` was expected.
     fn unclosed(&self, open: &Span) -> Box<SyntaxError> {
         match self.peek() {
-            Token::End | Token::Equals => error(
-                open.clone(),
-                "this parenthesis is not closed",
-                Some("a ) is missing"),
-            ),
+            Token::End | Token::Equals => error(open.clone(), "this parenthesis is not closed", Some("a ) is missing")),
             _ => self.unexpected(),
         }
     }
@@ -473,11 +421,7 @@ impl<'a> Parser<'a> {
         let Some((_, place)) = before else {
             return match self.peek() {
                 Token::End => error(0..0, "the formula is empty", None),
-                _ => error(
-                    span.clone(),
-                    format!("a formula cannot begin with `{}`", &self.text[span]),
-                    None,
-                ),
+                _ => error(span.clone(), format!("a formula cannot begin with `{}`", &self.text[span]), None),
             };
         };
         let sign = &self.text[place.clone()];
@@ -486,11 +430,7 @@ impl<'a> Parser<'a> {
             (_, Token::Prime) => Some("' stands behind a name or a parenthesis"),
             _ => None,
         };
-        error(
-            place.clone(),
-            format!("something is missing behind `{sign}`"),
-            hint,
-        )
+        error(place.clone(), format!("something is missing behind `{sign}`"), hint)
     }
 
     /// A token that cannot follow a finished expression.
@@ -505,11 +445,9 @@ impl<'a> Parser<'a> {
                 "`in` cannot stand here",
                 Some("a unit is asked for at the end of a report: \"y(L) in mm\""),
             ),
-            Token::Name(word) if word == "and" || word == "or" => error(
-                span,
-                format!("`{word}` stands only between comparisons in if(...)"),
-                None,
-            ),
+            Token::Name(word) if word == "and" || word == "or" => {
+                error(span, format!("`{word}` stands only between comparisons in if(...)"), None)
+            }
             Token::Name(word) => {
                 let hint = match (before, unit::suggest(word)) {
                     (Some((Token::Number { unit: None, .. }, _)), Some(meant)) => {
@@ -517,38 +455,24 @@ impl<'a> Parser<'a> {
                     }
                     _ => "a product is written with *".into(),
                 };
-                error(
-                    span.clone(),
-                    format!("an operator is missing before `{found}`"),
-                    Some(&hint),
-                )
+                error(span.clone(), format!("an operator is missing before `{found}`"), Some(&hint))
             }
-            Token::Number { .. } if number_before => error(
-                span,
-                "two numbers in a row",
-                Some("an operator is missing; digits are not grouped"),
-            ),
+            Token::Number { .. } if number_before => {
+                error(span, "two numbers in a row", Some("an operator is missing; digits are not grouped"))
+            }
             Token::Number { .. } | Token::Open => error(
                 span.clone(),
                 format!("an operator is missing before `{found}`"),
                 Some("a product is written with *"),
             ),
             Token::Comma if number_before && matches!(self.ahead(1), Token::Number { .. }) => {
-                error(
-                    span,
-                    "a comma cannot stand here",
-                    Some("decimals are written with a point: 3.5"),
-                )
+                error(span, "a comma cannot stand here", Some("decimals are written with a point: 3.5"))
             }
             Token::Comma => error(span, "a comma cannot stand here", None),
             Token::Close => error(span, "this parenthesis was never opened", None),
             Token::Compare(_) => error(span, "a comparison stands only in if(test, a, b)", None),
             Token::Equals => error(span, "an equation cannot stand within an expression", None),
-            Token::Plus | Token::Minus => error(
-                span.clone(),
-                format!("something is missing behind `{found}`"),
-                None,
-            ),
+            Token::Plus | Token::Minus => error(span.clone(), format!("something is missing behind `{found}`"), None),
             _ => error(span.clone(), format!("`{found}` cannot stand here"), None),
         }
     }

@@ -52,11 +52,7 @@ fn binding(kind: &Kind) -> u8 {
 
 /// Writes a part, in parentheses unless it binds at least as strongly as `floor`.
 fn part(f: &mut Formatter<'_>, e: &Expression, floor: u8) -> Result {
-    if binding(&e.kind) < floor {
-        write!(f, "({e})")
-    } else {
-        write!(f, "{e}")
-    }
+    if binding(&e.kind) < floor { write!(f, "({e})") } else { write!(f, "{e}") }
 }
 
 impl Display for Expression {
@@ -71,8 +67,7 @@ impl Display for Expression {
             Kind::Negate(a) => {
                 f.write_str("-")?;
                 // -(5 degC) is not -5 degC.
-                let absolute =
-                    matches!(&a.kind, Kind::Number { unit: Some(u), .. } if u.is_absolute());
+                let absolute = matches!(&a.kind, Kind::Number { unit: Some(u), .. } if u.is_absolute());
                 part(f, a, if absolute { PRIMARY } else { SIGN })
             }
             Kind::Binary(Operator::Power, a, b) => {
@@ -95,12 +90,7 @@ impl Display for Expression {
                 part(f, a, if bare { 0 } else { u8::MAX })?;
                 f.write_str(&"'".repeat(*order))
             }
-            Kind::Call {
-                name,
-                primes,
-                arguments,
-                ..
-            } => {
+            Kind::Call { name, primes, arguments, .. } => {
                 write!(f, "{name}{}(", "'".repeat(*primes))?;
                 for (i, argument) in arguments.iter().enumerate() {
                     let comma = if i == 0 { "" } else { ", " };

@@ -11,12 +11,7 @@ fn shape(e: &Expression) -> String {
         Kind::Negate(a) => format!("(-{})", shape(a)),
         Kind::Binary(o, a, b) => format!("({}{}{})", shape(a), o.sign(), shape(b)),
         Kind::Prime(a, n) => format!("{}{}", shape(a), "'".repeat(*n)),
-        Kind::Call {
-            name,
-            primes,
-            arguments,
-            ..
-        } => {
+        Kind::Call { name, primes, arguments, .. } => {
             let list: Vec<_> = arguments
                 .iter()
                 .map(|a| {

@@ -1,1 +1,0 @@
-//! Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.

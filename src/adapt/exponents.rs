@@ -1,0 +1,123 @@
+//! Size of the unknowns and local characteristic exponents, from samples of the equations.
+
+use crate::error::{Error, Result};
+use crate::model::{Batch, Layout, Linearised, Model};
+use nalgebra::DMatrix;
+use nalgebra::linalg::{Schur, balancing};
+use num_complex::Complex64;
+
+/// The equations linearised about zero at one point.
+pub(crate) fn sample(model: &dyn Model, piece: usize, x: f64) -> Result<Linearised> {
+    let layout = model.layout();
+    let mut equations = Linearised::default();
+    equations.reset(layout, 1);
+    let (jets, constants) = (vec![0.0; layout.jets()], vec![0.0; layout.constants()]);
+    model.equations(&Batch { piece, x: &[x], jets: &jets, constants: &constants }, &mut equations)?;
+    let values = equations.residual.iter().chain(&equations.jets).chain(&equations.constants);
+    if values.into_iter().all(|v| v.is_finite()) {
+        return Ok(equations);
+    }
+    let per = |array: &[f64], width: usize| array.iter().position(|v| !v.is_finite()).map(|i| i / width.max(1));
+    let equation = per(&equations.residual, 1)
+        .or_else(|| per(&equations.jets, layout.jets()))
+        .or_else(|| per(&equations.constants, layout.constants()));
+    Err(Error::NotFinite { what: model.equation_name(equation.unwrap_or(0)), x })
+}
+
+/// One size per unknown function that balances the coefficients of the equations: in sum over the span the
+/// matrix max_k |A_ik| L^-k, scaled by rows and by these sizes, has entries of size 1 (equilibration by
+/// square roots: Ruiz 2001). A pure matter of units: the answer does not depend on it, pivots do.
+pub(crate) fn scales(model: &dyn Model) -> Result<Vec<f64>> {
+    let layout = model.layout();
+    let d = layout.unknowns();
+    let points = model.points();
+    let length = points[points.len() - 1] - points[0];
+    let mut size = DMatrix::<f64>::zeros(d, d);
+    for piece in pieces_to_sample(points.len() - 1) {
+        for t in [0.137, 0.5, 0.831] {
+            let x = points[piece] + t * (points[piece + 1] - points[piece]);
+            let equations = sample(model, piece, x)?;
+            for e in 0..d {
+                for (i, &m) in layout.orders().iter().enumerate() {
+                    for k in 0..=m {
+                        let a = equations.jets[e * layout.jets() + layout.jet(i, k)].abs() / length.powi(k as i32);
+                        size[(e, i)] = size[(e, i)].max(a);
+                    }
+                }
+            }
+        }
+    }
+    let mut scale = vec![1.0; d];
+    for (i, column) in size.column_iter().enumerate() {
+        if column.amax() == 0.0 {
+            return Err(Error::Singular(format!("{} does not appear in the equations", model.unknown_name(i))));
+        }
+    }
+    for _ in 0..20 {
+        let rows: Vec<f64> = size.row_iter().map(|r| r.amax()).collect();
+        let columns: Vec<f64> = size.column_iter().map(|c| c.amax()).collect();
+        for (e, r) in rows.iter().enumerate().filter(|(_, r)| **r > 0.0) {
+            size.row_mut(e).unscale_mut(r.sqrt());
+        }
+        for (i, c) in columns.iter().enumerate() {
+            scale[i] /= c.sqrt();
+            size.column_mut(i).unscale_mut(c.sqrt());
+        }
+    }
+    // A common factor is free: the first unknown keeps its own unit.
+    let first = scale[0];
+    Ok(scale.into_iter().map(|s| s / first).collect())
+}
+
+/// All pieces, or an even choice of them when there are many.
+fn pieces_to_sample(pieces: usize) -> impl Iterator<Item = usize> {
+    (0..pieces).step_by(pieces.div_ceil(200).max(1))
+}
+
+/// Local characteristic exponents at a point: eigenvalues (1/length) of the linearised first-order
+/// system of the states. `None` where the highest derivatives are not determined.
+pub(crate) fn exponents(
+    model: &dyn Model,
+    scale: &[f64],
+    piece: usize,
+    x: f64,
+    length: f64,
+) -> Result<Option<Vec<Complex64>>> {
+    let layout = model.layout();
+    let equations = sample(model, piece, x)?;
+    Ok(companion(layout, &equations, scale, length).and_then(|mut matrix| {
+        balancing::balance_parlett_reinsch(&mut matrix);
+        let schur = Schur::try_new(matrix, f64::EPSILON, 1000)?;
+        Some(schur.complex_eigenvalues().iter().map(|e| e / length).collect())
+    }))
+}
+
+/// Matrix of length * dz/dx for the states z_(i,k) = u_i^(k) length^k / scale_i.
+fn companion(layout: &Layout, equations: &Linearised, scale: &[f64], length: f64) -> Option<DMatrix<f64>> {
+    let (d, states, jets) = (layout.unknowns(), layout.states(), layout.jets());
+    if states == 0 {
+        return None;
+    }
+    let entry =
+        |e: usize, i: usize, k: usize| equations.jets[e * jets + layout.jet(i, k)] * scale[i] / length.powi(k as i32);
+    let leading = DMatrix::from_fn(d, d, |e, i| entry(e, i, layout.orders()[i]));
+    let mut lower = DMatrix::zeros(d, states);
+    for (i, &m) in layout.orders().iter().enumerate() {
+        for k in 0..m {
+            (0..d).for_each(|e| lower[(e, layout.state(i, k))] = -entry(e, i, k));
+        }
+    }
+    let highest = leading.full_piv_lu().solve(&lower)?;
+    let mut matrix = DMatrix::zeros(states, states);
+    for (i, &m) in layout.orders().iter().enumerate() {
+        for k in 0..m {
+            let row = layout.state(i, k);
+            if k + 1 < m {
+                matrix[(row, layout.state(i, k + 1))] = 1.0;
+            } else {
+                matrix.row_mut(row).copy_from(&highest.row(i));
+            }
+        }
+    }
+    matrix.iter().all(|v| v.is_finite()).then_some(matrix)
+}

@@ -1,1 +1,0 @@
-//! Problems from Rust closures.

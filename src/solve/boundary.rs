@@ -1,0 +1,117 @@
+//! Two-point and multi-point boundary-value problems.
+
+use super::{Progress, Settings, Solution};
+use crate::adapt::{exponents, refine, seed};
+use crate::error::{Error, Result};
+use crate::evidence::bars::Companions;
+use crate::evidence::singular;
+use crate::field::Field;
+use crate::linear::pass::Perturbation;
+use crate::linear::{self, Library, Pass};
+use crate::mesh::Mesh;
+use crate::model::Model;
+use crate::tolerance;
+
+/// Most passes of the mesh adaptation.
+const PASSES: usize = 40;
+/// Solves with changed coefficients.
+const NUDGES: u64 = 4;
+/// How many nodes the answer has more than the mesh it was adapted on.
+const ENRICH: usize = 4;
+
+/// Solves a linear boundary-value problem: seeds a mesh, adapts it, and solves once more with more nodes
+/// and twice with changed coefficients for the error bars.
+///
+/// # Errors
+/// [`Error::Singular`] with an explanation when the problem has no unique solution; [`Error::NotFinite`] when
+/// data are not finite somewhere; [`Error::ConditionCount`]; [`Error::Unsupported`] for nonlinear problems;
+/// [`Error::Interrupted`] when the watch says so.
+pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> {
+    check(model, settings)?;
+    let scale = exponents::scales(model)?;
+    let mut mesh = seed::seed(model, &scale, settings.most_elements)?;
+    let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
+    let mut solver = Solver { model, settings, scale, library: Library::new(depth), pass: 0 };
+    let wanted = (tolerance::TAIL_SHARE * settings.relative).max(tolerance::FINEST_TAIL);
+    let (mut base, mut resolved) = (solver.solve(&mesh, None, &Perturbation::NONE)?, false);
+    while solver.pass < PASSES {
+        let indicators = refine::indicators(model, &base.field, wanted)?;
+        let Some(next) = refine::next(&mesh, &indicators) else {
+            resolved = true;
+            break;
+        };
+        if next.elements.len() > settings.most_elements {
+            break;
+        }
+        mesh = next;
+        base = solver.solve(&mesh, Some(&base.field), &Perturbation::NONE)?;
+    }
+    let passes = solver.pass;
+    let other_rows = base.field;
+    let base = solver.solve(&mesh, Some(&other_rows), &Perturbation::NONE)?.field;
+    let between = solver.solve(&mesh.enriched(ENRICH / 2), Some(&base), &Perturbation::NONE)?.field;
+    let answer = solver.solve(&mesh.enriched(ENRICH), Some(&base), &Perturbation::NONE)?;
+    let mut nudged = Vec::new();
+    for seed in 0..NUDGES {
+        let nudge = Perturbation { size: tolerance::NUDGE, seed: 2385 + seed, by_piece: seed % 2 == 1 };
+        nudged.push(solver.solve(&mesh, Some(&base), &nudge)?.field);
+    }
+    let companions = Companions { coarser: vec![base, between, other_rows], nudged };
+    Ok(Solution { field: answer.field, condition: answer.condition, passes, resolved, companions })
+}
+
+fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
+    if !model.linear() {
+        return Err(Error::Unsupported("nonlinear problems are not solved by this version".into()));
+    }
+    let points = model.points();
+    let ascending = points.len() >= 2 && points.windows(2).all(|p| p[0] < p[1]);
+    if !ascending || points.iter().any(|p| !p.is_finite()) {
+        let value = format!("{points:?}");
+        return Err(Error::Argument { what: "points", value, range: "finite and ascending, two or more" });
+    }
+    if !(1e-14..=1e-2).contains(&settings.relative) {
+        let value = settings.relative.to_string();
+        return Err(Error::Argument { what: "relative accuracy", value, range: "1e-14 to 1e-2" });
+    }
+    if points.len() > settings.most_elements {
+        return Err(Error::Unresolved { elements: settings.most_elements, x: points[settings.most_elements] });
+    }
+    if model.layout().unknowns() == 0 {
+        return Err(Error::Argument { what: "unknowns", value: "none".into(), range: "one or more" });
+    }
+    Ok(())
+}
+
+/// One problem being solved, pass after pass.
+struct Solver<'a> {
+    model: &'a dyn Model,
+    settings: &'a Settings<'a>,
+    scale: Vec<f64>,
+    library: Library,
+    pass: usize,
+}
+
+impl Solver<'_> {
+    /// One linear solve. A system that looks singular is solved once more with more nodes before it is called so:
+    /// on a coarse mesh a regular problem may look singular.
+    fn solve(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
+        let first = self.solve_once(mesh, before, nudge)?;
+        if first.free.is_empty() {
+            return Ok(first);
+        }
+        let second = self.solve_once(&mesh.enriched(2 * ENRICH), before, nudge)?;
+        if second.free.is_empty() {
+            return Ok(second);
+        }
+        Err(Error::Singular(singular::explain(self.model, &second.free, &second.contradictions)))
+    }
+
+    fn solve_once(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
+        self.pass += 1;
+        let (pass, elements) = (self.pass, mesh.elements.len());
+        let watch = self.settings.watch;
+        let mut tick = |done: usize| watch.is_none_or(|w| w(Progress { pass, elements, done }));
+        linear::solve(self.model, mesh, &mut self.library, &self.scale, before, nudge, &mut tick)
+    }
+}
