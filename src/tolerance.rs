@@ -17,9 +17,9 @@ pub const SUSPICIOUS: f64 = 1e-8;
 pub const SMALL_CLOSURE: usize = 40;
 
 /// A singular value of the scaled closing system below this share of the largest one counts as zero: well
-/// above the rounding of the condensation (some 1e-15), well below the most ill-conditioned system whose
-/// answer would still carry two digits.
-pub const SINGULAR: f64 = 2e-14;
+/// above the rounding of condensation and chain (1e-14 to 1e-13 was seen on exactly singular problems), well below the
+/// most ill-conditioned system whose answer would still carry a few digits.
+pub const SINGULAR: f64 = 5e-13;
 
 /// Coefficients below this many times the rounding error expected in them count as noise.
 pub const NOISE: f64 = 40.0;

@@ -95,15 +95,16 @@ type Analysis = (f64, Vec<DVector<f64>>, Vec<(DVector<f64>, f64)>);
 /// Condition number, null vectors from both sides, and the right-hand side against the left ones.
 fn analyse(a: &DMatrix<f64>, b: &DVector<f64>) -> Result<Analysis> {
     let size = a.nrows();
-    let svd = nalgebra::SVD::try_new(a.clone(), true, true, f64::EPSILON, 200 * size.max(10)).ok_or_else(no_factor)?;
-    let (Some(u), Some(v_t)) = (&svd.u, &svd.v_t) else { return Err(no_factor()) };
-    let values = &svd.singular_values;
-    let (largest, smallest) = (values.max(), values.min());
+    // faer's decomposition, since nalgebra's gives up on some exactly singular matrices.
+    let svd = faer::MatRef::from_column_major_slice(a.as_slice(), size, size).svd().map_err(|_| no_factor())?;
+    let column = |matrix: faer::MatRef<'_, f64>, k: usize| DVector::from_fn(size, |r, _| matrix[(r, k)]);
+    let values: Vec<f64> = svd.S().column_vector().iter().copied().collect();
+    let (largest, smallest) = (values[0], values[size - 1]);
     let (mut free, mut combinations) = (Vec::new(), Vec::new());
     for (k, value) in values.iter().enumerate() {
         if *value <= tolerance::SINGULAR * largest {
-            free.push(v_t.row(k).transpose());
-            let left = u.column(k).into_owned();
+            free.push(column(svd.V(), k));
+            let left = column(svd.U(), k);
             let against = left.dot(b).abs() / b.amax().max(f64::MIN_POSITIVE);
             combinations.push((left, against));
         }

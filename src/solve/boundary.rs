@@ -60,6 +60,19 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
     Ok(Solution { field: answer.field, condition: answer.condition, passes, resolved, companions })
 }
 
+/// Solves a linear boundary-value problem on a given mesh, without adaptation and without bars.
+///
+/// # Errors
+/// As [`boundary`].
+pub fn on_mesh(model: &dyn Model, mesh: &Mesh) -> Result<Field> {
+    let settings = Settings::default();
+    check(model, &settings)?;
+    let scale = exponents::scales(model)?;
+    let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
+    let mut solver = Solver { model, settings: &settings, scale, library: Library::new(depth), pass: 0 };
+    Ok(solver.solve(mesh, None, &Perturbation::NONE)?.field)
+}
+
 fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
     if !model.linear() {
         return Err(Error::Unsupported("nonlinear problems are not solved by this version".into()));

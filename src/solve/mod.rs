@@ -2,7 +2,7 @@
 
 mod boundary;
 
-pub use boundary::boundary;
+pub use boundary::{boundary, on_mesh};
 
 use crate::error::Result;
 use crate::evidence::bars::{self, Companions};
