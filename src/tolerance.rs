@@ -24,9 +24,9 @@ pub const SINGULAR: f64 = 5e-13;
 /// Coefficients below this many times the rounding error expected in them count as noise.
 pub const NOISE: f64 = 40.0;
 
-/// Relative change of the coefficients by which the sensitivity to the data is felt: large against
-/// rounding, small enough for the answer to respond linearly.
-pub const NUDGE: f64 = 1e-9;
+/// Relative change of the coefficients by which the sensitivity to the data is felt: ten thousand roundings, so that the
+/// response stands out of the noise, and small enough for it to be linear up to condition numbers of some 1e11.
+pub const NUDGE: f64 = 1e-12;
 
 /// Safety factor on the largest difference between the answer and its companions on other meshes: each is one sample
 /// of truncation and rounding, of the same size as the error of the answer or larger.

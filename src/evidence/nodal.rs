@@ -94,18 +94,12 @@ impl Grid {
         for &m in layout.orders() {
             let rule = legendre::lobatto((element.nodes + m).max(2))?;
             let scale = 2.0 / element.length();
-            derivatives.push(
-                (0..=m)
-                    .map(|k| {
-                        if k == 0 {
-                            DMatrix::identity(rule.len(), rule.len())
-                        } else {
-                            operator::differentiation(rule.nodes(), k) * scale.powi(k as i32)
-                        }
-                    })
-                    .collect(),
-            );
-            resample.push(operator::interpolation(rule.nodes(), gauss.nodes()));
+            let mut powers = vec![DMatrix::identity(rule.len(), rule.len())];
+            for k in 1..=m {
+                powers.push(operator::differentiation(rule.nodes(), k)? * scale.powi(k as i32));
+            }
+            derivatives.push(powers);
+            resample.push(operator::interpolation(rule.nodes(), gauss.nodes())?);
             modal.push(legendre::to_modal(&rule));
         }
         let x = gauss.nodes().iter().map(|s| element.coordinate(*s)).collect();

@@ -14,10 +14,7 @@ pub(crate) struct Double {
 }
 
 /// Pi to 32 digits.
-pub(crate) const PI: Double = Double {
-    hi: std::f64::consts::PI,
-    lo: 1.224_646_799_147_353_2e-16,
-};
+pub(crate) const PI: Double = Double { hi: std::f64::consts::PI, lo: 1.224_646_799_147_353_2e-16 };
 
 /// a + b without error.
 fn two_sum(a: f64, b: f64) -> (f64, f64) {
@@ -29,10 +26,7 @@ fn two_sum(a: f64, b: f64) -> (f64, f64) {
 /// a + b without error where |a| >= |b|.
 fn quick_two_sum(a: f64, b: f64) -> Double {
     let hi = a + b;
-    Double {
-        hi,
-        lo: b - (hi - a),
-    }
+    Double { hi, lo: b - (hi - a) }
 }
 
 /// a in two halves of 26 bits, whose products are exact. Fails near overflow only, which angles and
@@ -58,12 +52,7 @@ impl Double {
         }
         let root = self.hi.sqrt();
         let (square, error) = two_product(root, root);
-        let rest = (self
-            - Self {
-                hi: square,
-                lo: error,
-            })
-        .hi;
+        let rest = (self - Self { hi: square, lo: error }).hi;
         quick_two_sum(root, rest / (2.0 * root))
     }
 
@@ -97,10 +86,7 @@ impl From<f64> for Double {
 impl Neg for Double {
     type Output = Self;
     fn neg(self) -> Self {
-        Self {
-            hi: -self.hi,
-            lo: -self.lo,
-        }
+        Self { hi: -self.hi, lo: -self.lo }
     }
 }
 

@@ -81,14 +81,7 @@ impl Rule {
 
     fn with_capacity(kind: Kind, n: usize) -> Self {
         let room = || Vec::with_capacity(n);
-        Self {
-            kind,
-            nodes: room(),
-            weights: room(),
-            angles: room(),
-            from_left: room(),
-            from_right: room(),
-        }
+        Self { kind, nodes: room(), weights: room(), angles: room(), from_left: room(), from_right: room() }
     }
 
     /// Adds a node given as seen from the left end.
@@ -183,11 +176,7 @@ pub fn radau(n: usize, end: End) -> Result<Rule> {
 
 fn require(n: usize, least: usize, range: &'static str) -> Result<()> {
     if n < least {
-        return Err(Error::Argument {
-            what: "number of nodes",
-            value: n.to_string(),
-            range,
-        });
+        return Err(Error::Argument { what: "number of nodes", value: n.to_string(), range });
     }
     Ok(())
 }
@@ -207,10 +196,7 @@ fn build(n: usize, kind: Kind) -> Rule {
     let zero_angle = Double::from(0.0);
     let inner = n - usize::from(left) - usize::from(right);
     let half = inner / 2;
-    let from_left = Ends {
-        near: left,
-        far: right,
-    };
+    let from_left = Ends { near: left, far: right };
     let left_half: Vec<Zero> = (1..=half).map(|k| zero(n, from_left, k)).collect();
 
     let mut rule = Rule::with_capacity(kind, n);
@@ -230,10 +216,7 @@ fn build(n: usize, kind: Kind) -> Rule {
             rule.push_from_right(node.angle, node.distance, node.weight.hi);
         }
     } else {
-        let from_right = Ends {
-            near: right,
-            far: left,
-        };
+        let from_right = Ends { near: right, far: left };
         for k in (1..=inner - half).rev() {
             let node = zero(n, from_right, k);
             rule.push_from_right(node.angle, node.distance, node.weight.hi);
@@ -264,11 +247,7 @@ mod tests {
         for n in (1..=70).chain([255, 256]) {
             for rule in all(n) {
                 assert_eq!(rule.len(), n);
-                assert!(
-                    rule.nodes().is_sorted_by(|a, b| a < b),
-                    "{:?} {n}",
-                    rule.kind()
-                );
+                assert!(rule.nodes().is_sorted_by(|a, b| a < b), "{:?} {n}", rule.kind());
                 assert!(rule.weights().iter().all(|w| *w > 0.0));
                 let sum: f64 = rule.weights().iter().sum();
                 assert!((sum - 2.0).abs() < 1e-14, "{:?} {n}: {sum}", rule.kind());

@@ -167,13 +167,8 @@ mod tests {
     fn values_match_closed_forms() {
         for s in [-1.0, -0.93, -0.2385, 0.0, 0.4711, 0.999, 1.0f64] {
             let p = values(4, s);
-            let exact = [
-                1.0,
-                s,
-                1.5 * s * s - 0.5,
-                2.5 * s.powi(3) - 1.5 * s,
-                (35.0 * s.powi(4) - 30.0 * s * s + 3.0) / 8.0,
-            ];
+            let exact =
+                [1.0, s, 1.5 * s * s - 0.5, 2.5 * s.powi(3) - 1.5 * s, (35.0 * s.powi(4) - 30.0 * s * s + 3.0) / 8.0];
             for k in 0..=4 {
                 assert!((p[k] - exact[k]).abs() < 5e-16, "P_{k}({s})");
             }

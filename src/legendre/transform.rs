@@ -53,11 +53,8 @@ pub fn to_modal(rule: &Rule) -> DMatrix<f64> {
     let n = rule.len();
     let mut matrix = to_nodal(rule).transpose();
     for k in 0..n {
-        let inverse_norm = if k + 1 == n && rule.kind() == Kind::Lobatto {
-            (n - 1) as f64 / 2.0
-        } else {
-            (2 * k + 1) as f64 / 2.0
-        };
+        let inverse_norm =
+            if k + 1 == n && rule.kind() == Kind::Lobatto { (n - 1) as f64 / 2.0 } else { (2 * k + 1) as f64 / 2.0 };
         for (entry, w) in matrix.row_mut(k).iter_mut().zip(rule.weights()) {
             *entry *= w * inverse_norm;
         }
@@ -73,12 +70,7 @@ mod tests {
     #[test]
     fn round_trip() {
         for n in [2, 3, 5, 16, 33, 64, 200] {
-            let rules = [
-                gauss(n),
-                lobatto(n),
-                radau(n, End::Left),
-                radau(n, End::Right),
-            ];
+            let rules = [gauss(n), lobatto(n), radau(n, End::Left), radau(n, End::Right)];
             for rule in rules.map(|rule| rule.expect("n >= 2")) {
                 let product = to_nodal(&rule) * to_modal(&rule);
                 let error = (product - DMatrix::identity(n, n)).amax();

@@ -140,9 +140,7 @@ pub(crate) fn zero(n: usize, ends: Ends, k: usize) -> Zero {
     let weight = match (ends.near, ends.far) {
         (false, false) => {
             let cosine = Double::from(1.0) - at.distance;
-            let curvature = Double::from(0.0)
-                - cosine * at.last_slope / at.sine
-                - at.last * (points * (points + 1.0));
+            let curvature = Double::from(0.0) - cosine * at.last_slope / at.sine - at.last * (points * (points + 1.0));
             let slope = at.last_slope + step * curvature;
             Double::from(2.0) / (slope * slope)
         }
@@ -152,19 +150,11 @@ pub(crate) fn zero(n: usize, ends: Ends, k: usize) -> Zero {
         }
         (near_fixed, _) => {
             let value = at.previous + step * at.previous_slope;
-            let from_free_end = if near_fixed {
-                Double::from(2.0) - distance
-            } else {
-                distance
-            };
+            let from_free_end = if near_fixed { Double::from(2.0) - distance } else { distance };
             from_free_end / (value * value * (points * points))
         }
     };
-    Zero {
-        angle,
-        distance,
-        weight,
-    }
+    Zero { angle, distance, weight }
 }
 
 /// First guess of the k-th zero's angle.
@@ -182,8 +172,7 @@ fn start(n: usize, ends: Ends, k: usize) -> f64 {
     let mu = 4.0 * near * near;
     let b = (k as f64 + 0.5 * near - 0.25) * PI_F64;
     let eight = 8.0 * b;
-    let bessel =
-        b - (mu - 1.0) / eight - 4.0 * (mu - 1.0) * (7.0 * mu - 31.0) / (3.0 * eight.powi(3));
+    let bessel = b - (mu - 1.0) / eight - 4.0 * (mu - 1.0) * (7.0 * mu - 31.0) / (3.0 * eight.powi(3));
     let t = bessel / big;
     let tangent = (0.5 * t).tan();
     let c = |order: f64| 0.25 - order * order;

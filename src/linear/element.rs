@@ -143,20 +143,24 @@ fn fill_collocation(
         let column = &mut right[(width - 1) * rows + first..][..n];
         column.iter_mut().zip(residual).for_each(|(c, f)| *c = -f);
     }
-    for row in 0..inner {
-        let largest =
-            |matrix: &[f64], columns: usize| (0..columns).map(|c| matrix[c * rows + row].abs()).fold(0.0, f64::max);
-        let mut size = largest(tall, inner).max(largest(right, states));
-        if size == 0.0 {
-            size = largest(&right[2 * states * rows..], layout.constants());
+    balance_rows(tall, right, rows, inner, states, layout.constants());
+}
+
+/// Divides each collocation row by its largest entry. Column by column, as the matrices lie in memory.
+fn balance_rows(tall: &mut [f64], right: &mut [f64], rows: usize, inner: usize, states: usize, constants: usize) {
+    let mut sizes = vec![0.0f64; inner];
+    for column in tall.chunks_exact(rows).chain(right[..states * rows].chunks_exact(rows)) {
+        sizes.iter_mut().zip(column).for_each(|(s, a)| *s = s.max(a.abs()));
+    }
+    for (row, size) in sizes.iter_mut().enumerate() {
+        if *size == 0.0 {
+            let constant = |c: usize| right[(2 * states + c) * rows + row].abs();
+            *size = (0..constants).map(constant).fold(0.0, f64::max);
         }
-        if size > 0.0 {
-            let divide = |matrix: &mut [f64], columns: usize| {
-                (0..columns).for_each(|c| matrix[c * rows + row] /= size);
-            };
-            divide(tall, inner);
-            divide(right, width);
-        }
+        *size = if *size > 0.0 { 1.0 / *size } else { 1.0 };
+    }
+    for column in tall.chunks_exact_mut(rows).chain(right.chunks_exact_mut(rows)) {
+        column.iter_mut().zip(&sizes).for_each(|(a, s)| *a *= s);
     }
 }
 

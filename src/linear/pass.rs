@@ -29,12 +29,15 @@ impl Perturbation {
 
     fn factor(&self, piece: usize, row: usize, column: usize) -> f64 {
         let piece = if self.by_piece { piece as u64 + 1 } else { 0 };
-        let mut h = self.seed.wrapping_add(0x9E37_79B9_7F4A_7C15);
+        // splitmix64, one step per part
+        let mut h = self.seed;
         for part in [piece, row as u64, column as u64] {
-            h = (h ^ part).wrapping_mul(0xBF58_476D_1CE4_E5B9);
-            h ^= h >> 29;
+            h = (h ^ part).wrapping_add(0x9E37_79B9_7F4A_7C15);
+            h = (h ^ (h >> 30)).wrapping_mul(0xBF58_476D_1CE4_E5B9);
+            h = (h ^ (h >> 27)).wrapping_mul(0x94D0_49BB_1331_11EB);
+            h ^= h >> 31;
         }
-        if h & 1 == 0 { 1.0 + self.size } else { 1.0 - self.size }
+        if h >> 63 == 0 { 1.0 + self.size } else { 1.0 - self.size }
     }
 
     fn apply(&self, piece: usize, layout: &Layout, n: usize, equations: &mut Linearised) {
@@ -43,7 +46,7 @@ impl Perturbation {
         }
         let (jets, constants) = (layout.jets(), layout.constants());
         for row in 0..layout.unknowns() {
-            let mut multiply = |values: &mut [f64], column: usize| {
+            let multiply = |values: &mut [f64], column: usize| {
                 let factor = self.factor(piece, row, column);
                 values.iter_mut().for_each(|v| *v *= factor);
             };

@@ -30,12 +30,8 @@ pub fn integration(rule: &Rule, r: usize) -> DMatrix<f64> {
     if r == 0 {
         return DMatrix::identity(n, n);
     }
-    let ends: Vec<(f64, f64)> = rule
-        .from_left()
-        .iter()
-        .zip(rule.from_right())
-        .map(|(left, right)| (*left, *right))
-        .collect();
+    let ends: Vec<(f64, f64)> =
+        rule.from_left().iter().zip(rule.from_right()).map(|(left, right)| (*left, *right)).collect();
     modes(&ends, n, r) * to_modal(rule)
 }
 

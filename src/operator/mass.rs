@@ -25,10 +25,7 @@ pub fn mass(rule: &Rule) -> DMatrix<f64> {
         let n = rule.len();
         let z = DVector::from_iterator(
             n,
-            rule.weights()
-                .iter()
-                .enumerate()
-                .map(|(j, w)| if j % 2 == 0 { w.sqrt() } else { -w.sqrt() }),
+            rule.weights().iter().enumerate().map(|(j, w)| if j % 2 == 0 { w.sqrt() } else { -w.sqrt() }),
         );
         matrix.ger(-1.0 / (2 * n - 1) as f64, &z, &z, 1.0);
     }

@@ -37,9 +37,7 @@ pub fn barycentric_weights(nodes: &[f64]) -> Result<DVector<f64>> {
         exponents[j] += i64::from(exponent);
     }
     let top = exponents.iter().copied().max().unwrap_or(0);
-    let scaled = DVector::from_fn(n, |j, _| {
-        libm::scalbn(mantissas[j], (exponents[j] - top).max(-2000) as i32)
-    });
+    let scaled = DVector::from_fn(n, |j, _| libm::scalbn(mantissas[j], (exponents[j] - top).max(-2000) as i32));
     let size = scaled.amax();
     Ok(scaled / size)
 }
@@ -140,11 +138,7 @@ pub fn differentiation_between(from: &[f64], to: &[f64], order: usize) -> Result
 
 fn check(nodes: &[f64]) -> Result<()> {
     if nodes.is_empty() {
-        return Err(Error::Argument {
-            what: "number of nodes",
-            value: "0".into(),
-            range: "at least 1",
-        });
+        return Err(Error::Argument { what: "number of nodes", value: "0".into(), range: "at least 1" });
     }
     if let Some(node) = nodes.iter().find(|node| !node.is_finite()) {
         return Err(out_of_range("node", *node, "the finite numbers"));
@@ -158,9 +152,5 @@ fn check(nodes: &[f64]) -> Result<()> {
 }
 
 fn out_of_range(what: &'static str, value: f64, range: &'static str) -> Error {
-    Error::Argument {
-        what,
-        value: value.to_string(),
-        range,
-    }
+    Error::Argument { what, value: value.to_string(), range }
 }

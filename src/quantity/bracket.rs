@@ -3,7 +3,6 @@
 /// Chandrupatla's method (Adv. Eng. Softw. 28, 1997): inverse quadratic steps where they are safe, bisection
 /// elsewhere; ends when the bracket is as short as the coordinate resolves. At most 200 evaluations.
 pub(super) fn bracketed_root(f: impl Fn(f64) -> f64, mut a: f64, mut b: f64, mut fa: f64, mut fb: f64) -> f64 {
-    let (mut c, mut fc) = (a, fa);
     let mut t = 0.5;
     for _ in 0..200 {
         let x = a + t * (b - a);
@@ -11,11 +10,14 @@ pub(super) fn bracketed_root(f: impl Fn(f64) -> f64, mut a: f64, mut b: f64, mut
         if !fx.is_finite() {
             return x;
         }
-        if (fx > 0.0) == (fa > 0.0) {
-            (c, fc) = (a, fa);
+        // The third point: the end that leaves the bracket.
+        let (c, fc) = if (fx > 0.0) == (fa > 0.0) {
+            (a, fa)
         } else {
-            (c, fc, b, fb) = (b, fb, a, fa);
-        }
+            let before = (b, fb);
+            (b, fb) = (a, fa);
+            before
+        };
         (a, fa) = (x, fx);
         let (best, f_best) = if fa.abs() < fb.abs() { (a, fa) } else { (b, fb) };
         let resolution = 2.0 * f64::EPSILON * best.abs().max(f64::MIN_POSITIVE);
