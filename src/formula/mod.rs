@@ -6,6 +6,8 @@
 
 /// The checked formula as a shared graph: simplification, total and partial derivatives.
 pub mod graph;
+/// What formulas are evaluated with: plain numbers, and numbers with a running error bound.
+pub mod number;
 /// Text to syntax tree, with places.
 pub mod syntax;
 /// Instruction lists: evaluation over many nodes at once.
