@@ -433,7 +433,7 @@ impl Graph {
     fn intern(&mut self, node: Node, error: f64) -> NodeId {
         let node = match node {
             // One zero and one NaN.
-            Node::Number(v) if v == 0.0 => Node::Number(0.0),
+            Node::Number(0.0) => Node::Number(0.0),
             Node::Number(v) if v.is_nan() => Node::Number(f64::NAN),
             node => node,
         };

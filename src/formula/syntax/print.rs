@@ -82,11 +82,7 @@ impl Display for Expression {
                 part(f, b, operator.binding() + 1)
             }
             Kind::Prime(a, order) => {
-                let bare = match &a.kind {
-                    Kind::Name(_) | Kind::If(..) => true,
-                    Kind::Call { .. } => true,
-                    _ => false,
-                };
+                let bare = matches!(a.kind, Kind::Name(_) | Kind::If(..) | Kind::Call { .. });
                 part(f, a, if bare { 0 } else { u8::MAX })?;
                 f.write_str(&"'".repeat(*order))
             }
