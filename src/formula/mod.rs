@@ -8,6 +8,9 @@
 pub mod graph;
 /// What formulas are evaluated with: plain numbers, and numbers with a running error bound.
 pub mod number;
+/// Random formulas for tests.
+#[cfg(test)]
+mod random;
 /// Text to syntax tree, with places.
 pub mod syntax;
 /// Instruction lists: evaluation over many nodes at once.

@@ -79,7 +79,8 @@ pub(super) fn unary(f: Unary, a: f64) -> f64 {
 
 pub(super) fn binary(f: Binary, a: f64, b: f64) -> f64 {
     match f {
-        Binary::Atan2 => a.atan2(b),
+        // A zero has no sign here: atan2(0, -1) is pi, however the zero came about.
+        Binary::Atan2 => (a + 0.0).atan2(b + 0.0),
         // Not f64::min, which would hide a NaN.
         Binary::Min if a <= b => a,
         Binary::Max if a >= b => a,
@@ -293,7 +294,16 @@ impl Number for Rounded {
             Binary::Atan2 => {
                 let square = a.value * a.value + b.value * b.value;
                 let spread = scaled(a.value.abs(), b.error) + scaled(b.value.abs(), a.error);
-                let spread = if spread == 0.0 { 0.0 } else { spread / square };
+                let spread = if a.value.abs() <= a.error && b.value - b.error <= 0.0 {
+                    // On the negative axis the angle steps from -pi to pi.
+                    if spread == 0.0 {
+                        0.0
+                    } else {
+                        std::f64::consts::TAU
+                    }
+                } else {
+                    spread / square
+                };
                 Self::function(value, spread)
             }
             Binary::Min | Binary::Max => Self::new(value, a.error.max(b.error)),
@@ -318,6 +328,10 @@ impl Number for Rounded {
         };
         if self.value.abs() > self.error || self.error == 0.0 {
             return taken;
+        }
+        if self.value.is_nan() {
+            // What is not a number decides nothing.
+            return Self::new(taken.value, f64::INFINITY);
         }
         let apart = (taken.value - left.value).abs() + left.error;
         Self::new(taken.value, taken.error.max(apart))

@@ -255,8 +255,10 @@ impl Graph {
                     return self.choose(a, true, minus, a);
                 }
                 Unary::Sign => {
-                    let (minus, plus) = (self.exact(-1.0), self.exact(1.0));
-                    return self.choose(a, true, minus, plus);
+                    // Zero along a whole stretch counts, zero at a place does not.
+                    let (opposite, minus) = (self.negate(a), self.exact(-1.0));
+                    let above = self.choose(opposite, true, ONE, ZERO);
+                    return self.choose(a, true, minus, above);
                 }
                 _ => {}
             }
