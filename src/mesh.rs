@@ -36,16 +36,7 @@ impl Element {
     /// The two halves.
     pub fn halves(&self) -> [Element; 2] {
         let middle = 0.5 * (self.left + self.right);
-        [
-            Element {
-                right: middle,
-                ..*self
-            },
-            Element {
-                left: middle,
-                ..*self
-            },
-        ]
+        [Element { right: middle, ..*self }, Element { left: middle, ..*self }]
     }
 }
 
@@ -70,34 +61,16 @@ impl Mesh {
         let mut elements = Vec::new();
         for (piece, ends) in points.windows(2).enumerate() {
             let at = |k: usize| {
-                if k == per_piece {
-                    ends[1]
-                } else {
-                    ends[0] + (ends[1] - ends[0]) * k as f64 / per_piece as f64
-                }
+                if k == per_piece { ends[1] } else { ends[0] + (ends[1] - ends[0]) * k as f64 / per_piece as f64 }
             };
-            elements.extend((0..per_piece).map(|k| Element {
-                left: at(k),
-                right: at(k + 1),
-                nodes,
-                piece,
-            }));
+            elements.extend((0..per_piece).map(|k| Element { left: at(k), right: at(k + 1), nodes, piece }));
         }
         Self { elements }
     }
 
     /// The same elements with `more` nodes each.
     pub fn enriched(&self, more: usize) -> Self {
-        Self {
-            elements: self
-                .elements
-                .iter()
-                .map(|e| Element {
-                    nodes: e.nodes + more,
-                    ..*e
-                })
-                .collect(),
-        }
+        Self { elements: self.elements.iter().map(|e| Element { nodes: e.nodes + more, ..*e }).collect() }
     }
 
     /// Both ends of the span.
