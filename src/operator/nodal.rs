@@ -9,7 +9,7 @@ use crate::error::{Error, Result};
 /// Error: relative, about n ulp, with the nodes taken as exact.
 ///
 /// # Errors
-/// [`Error::Argument`] if there are no nodes, or two coincide, or one is not finite.
+/// [`Error::Argument`] if there are no nodes, or two coincide, or one is not finite, or the result overflows.
 ///
 /// # Example
 /// ```
@@ -20,26 +20,48 @@ use crate::error::{Error, Result};
 ///
 /// Source: Berrut & Trefethen, SIAM Review 46 (2004), eq. 3.2.
 pub fn barycentric_weights(nodes: &[f64]) -> Result<DVector<f64>> {
-    check(nodes)?;
-    let n = nodes.len();
-    // Products as mantissa and binary exponent: they leave the range of f64 from some hundred nodes on.
-    let mut mantissas = vec![1.0; n];
-    let mut exponents = vec![0i64; n];
-    for j in 0..n {
-        let mut product = 1.0;
-        for k in (0..n).filter(|k| *k != j) {
-            let (mantissa, exponent) = libm::frexp(product * (nodes[j] - nodes[k]));
-            product = mantissa;
-            exponents[j] -= i64::from(exponent);
-        }
-        let (mantissa, exponent) = libm::frexp(1.0 / product);
-        mantissas[j] = mantissa;
-        exponents[j] += i64::from(exponent);
-    }
-    let top = exponents.iter().copied().max().unwrap_or(0);
-    let scaled = DVector::from_fn(n, |j, _| libm::scalbn(mantissas[j], (exponents[j] - top).max(-2000) as i32));
+    let weights = Scaled::weights(nodes)?;
+    let top = weights.iter().map(|w| w.exponent).max().unwrap_or(0);
+    let scaled = DVector::from_iterator(nodes.len(), weights.iter().map(|w| w.over(top)));
     let size = scaled.amax();
     Ok(scaled / size)
+}
+
+/// A number as mantissa and binary exponent: barycentric weights leave the range of `f64` from some hundred nodes on.
+#[derive(Debug, Clone, Copy)]
+struct Scaled {
+    mantissa: f64,
+    exponent: i64,
+}
+
+impl Scaled {
+    fn new(value: f64, exponent: i64) -> Self {
+        let (mantissa, shift) = libm::frexp(value);
+        Self { mantissa, exponent: exponent + i64::from(shift) }
+    }
+
+    /// Barycentric weights, unscaled.
+    fn weights(nodes: &[f64]) -> Result<Vec<Self>> {
+        check(nodes)?;
+        let weight = |j: usize| {
+            let others = (0..nodes.len()).filter(|k| *k != j);
+            let product = others.fold(Self::new(1.0, 0), |product, k| {
+                Self::new(product.mantissa * (nodes[j] - nodes[k]), product.exponent)
+            });
+            Self::new(1.0 / product.mantissa, -product.exponent)
+        };
+        Ok((0..nodes.len()).map(weight).collect())
+    }
+
+    /// Value divided by 2^exponent.
+    fn over(self, exponent: i64) -> f64 {
+        let shift = (self.exponent - exponent).clamp(-5000, 5000);
+        libm::scalbn(self.mantissa, shift as i32)
+    }
+
+    fn divided_by(self, other: Self) -> f64 {
+        Self::new(self.mantissa / other.mantissa, self.exponent).over(other.exponent)
+    }
 }
 
 /// Values at the points `to` of the polynomial through values at the nodes `from`: a (to x from) matrix.
@@ -49,7 +71,8 @@ pub fn barycentric_weights(nodes: &[f64]) -> Result<DVector<f64>> {
 /// nodes beyond a few tens are ill-conditioned in themselves.
 ///
 /// # Errors
-/// [`Error::Argument`] if there are no nodes, or two coincide, or a node or point is not finite.
+/// [`Error::Argument`] if there are no nodes, or two coincide, or a node or point is not finite,
+/// or the result overflows.
 ///
 /// # Example
 /// ```
@@ -63,9 +86,7 @@ pub fn barycentric_weights(nodes: &[f64]) -> Result<DVector<f64>> {
 /// Source: Berrut & Trefethen, SIAM Review 46 (2004), eq. 4.2; Higham, IMA J. Numer. Anal. 24 (2004).
 pub fn interpolation(from: &[f64], to: &[f64]) -> Result<DMatrix<f64>> {
     let weights = barycentric_weights(from)?;
-    if let Some(point) = to.iter().find(|point| !point.is_finite()) {
-        return Err(out_of_range("point", *point, "the finite numbers"));
-    }
+    finite(to)?;
     let mut matrix = DMatrix::zeros(to.len(), from.len());
     for (i, point) in to.iter().enumerate() {
         let quotients = DVector::from_fn(from.len(), |j, _| weights[j] / (point - from[j]));
@@ -75,7 +96,7 @@ pub fn interpolation(from: &[f64], to: &[f64]) -> Result<DMatrix<f64>> {
             None => matrix.set_row(i, &(&quotients / quotients.sum()).transpose()),
         }
     }
-    Ok(matrix)
+    representable(matrix, from.len())
 }
 
 /// The derivative of the given order at the nodes themselves: an n x n matrix.
@@ -84,12 +105,12 @@ pub fn interpolation(from: &[f64], to: &[f64]) -> Result<DMatrix<f64>> {
 /// weights; on it the negative sum of the row, so that constants have derivative 0 to rounding. Order 0 is the
 /// identity.
 ///
-/// Error: each off-diagonal entry of order 1 is right to about 2n ulp. The derivative of values v
-/// carries the rounding of v times the norm of the matrix, which grows like n^(2m): that is the nature of
-/// differentiation, and why the solver integrates.
+/// Error: each off-diagonal entry of order 1 is right to about 2n ulp. The derivative of values of size 1 with
+/// rounding is wrong by up to eps n^(2m) on a rule's nodes (the matrix norm is near n^2 for order 1): that is the
+/// nature of differentiation, and why the solver integrates.
 ///
 /// # Errors
-/// [`Error::Argument`] if there are no nodes, or two coincide, or one is not finite.
+/// [`Error::Argument`] if there are no nodes, or two coincide, or one is not finite, or the result overflows.
 ///
 /// # Example
 /// ```
@@ -101,7 +122,7 @@ pub fn interpolation(from: &[f64], to: &[f64]) -> Result<DMatrix<f64>> {
 /// Source: Welfert, SIAM J. Numer. Anal. 34 (1997); Baltensperger & Trummer, SIAM J. Sci. Comput. 24 (2003)
 /// for the negative sum.
 pub fn differentiation(nodes: &[f64], order: usize) -> Result<DMatrix<f64>> {
-    let weights = barycentric_weights(nodes)?;
+    let weights = Scaled::weights(nodes)?;
     let n = nodes.len();
     let mut matrix = DMatrix::identity(n, n);
     for m in 1..=order {
@@ -109,7 +130,7 @@ pub fn differentiation(nodes: &[f64], order: usize) -> Result<DMatrix<f64>> {
             let diagonal = matrix[(i, i)];
             let mut sum = 0.0;
             for j in (0..n).filter(|j| *j != i) {
-                let ratio = weights[j] / weights[i];
+                let ratio = weights[j].divided_by(weights[i]);
                 let entry = m as f64 / (nodes[i] - nodes[j]) * (ratio * diagonal - matrix[(i, j)]);
                 matrix[(i, j)] = entry;
                 sum += entry;
@@ -117,7 +138,7 @@ pub fn differentiation(nodes: &[f64], order: usize) -> Result<DMatrix<f64>> {
             matrix[(i, i)] = -sum;
         }
     }
-    Ok(matrix)
+    representable(matrix, n)
 }
 
 /// The derivative of the given order at the points `to` of the polynomial through values at the nodes
@@ -136,6 +157,14 @@ pub fn differentiation_between(from: &[f64], to: &[f64], order: usize) -> Result
     Ok(interpolation(from, to)? * differentiation(from, order)?)
 }
 
+/// Refuses points that are not finite.
+pub(super) fn finite(points: &[f64]) -> Result<()> {
+    match points.iter().find(|point| !point.is_finite()) {
+        Some(point) => Err(out_of_range("point", *point, "the finite numbers")),
+        None => Ok(()),
+    }
+}
+
 fn check(nodes: &[f64]) -> Result<()> {
     if nodes.is_empty() {
         return Err(Error::Argument { what: "number of nodes", value: "0".into(), range: "at least 1" });
@@ -148,7 +177,20 @@ fn check(nodes: &[f64]) -> Result<()> {
     if let Some(pair) = sorted.windows(2).find(|pair| pair[0] == pair[1]) {
         return Err(out_of_range("node", pair[0], "the numbers given once"));
     }
+    let span = sorted[sorted.len() - 1] - sorted[0];
+    if !span.is_finite() {
+        return Err(out_of_range("span of the nodes", span, "the finite numbers"));
+    }
     Ok(())
+}
+
+/// Nodes may lie so badly (some thousand equidistant ones) that entries exceed the range of `f64`.
+fn representable(matrix: DMatrix<f64>, nodes: usize) -> Result<DMatrix<f64>> {
+    if matrix.iter().all(|entry| entry.is_finite()) {
+        return Ok(matrix);
+    }
+    let range = "those whose matrix double precision can hold";
+    Err(Error::Argument { what: "nodes", value: format!("{nodes} nodes"), range })
 }
 
 fn out_of_range(what: &'static str, value: f64, range: &'static str) -> Error {
