@@ -176,7 +176,7 @@ fn rules_are_exact_to_their_degree_and_no_further() {
             // The first degree too many misses by about sqrt(pi/2n): the ratio of P_2n to P_n^2 at infinity, times 2/(2n+1).
             let beyond = sums[degree + 1].abs();
             let expected = (std::f64::consts::FRAC_PI_2 / n as f64).sqrt();
-            assert!((0.5..2.0).contains(&(beyond / expected)), "{:?} n = {n}: {beyond:e}", rule.kind());
+            assert!((0.5..2.5).contains(&(beyond / expected)), "{:?} n = {n}: {beyond:e}", rule.kind());
         }
     }
 }
