@@ -36,6 +36,12 @@ pub enum Error {
     /// The problem has no unique solution; the text explains which motion is free and what contradicts.
     #[error("{0}")]
     Singular(String),
+    /// No solution was found.
+    #[error("no solution found: {tried}")]
+    NoSolution {
+        /// What was tried and how far it got.
+        tried: String,
+    },
     /// The problem is outside what the solver covers.
     #[error("{0}")]
     Unsupported(String),

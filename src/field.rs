@@ -50,6 +50,36 @@ impl Field {
         index.min(elements.len() - 1)
     }
 
+    /// Index of an element that holds x and lies in the piece, looked for from `hint` on.
+    pub(crate) fn locate_in(&self, x: f64, piece: usize, hint: usize) -> usize {
+        let elements = &self.mesh.elements;
+        let holds = |e: usize| elements.get(e).is_some_and(|e| e.piece == piece && e.left <= x && x <= e.right);
+        if let Some(found) = [hint, hint + 1].into_iter().find(|e| holds(*e)) {
+            return found;
+        }
+        let found = self.locate(x, Side::Left);
+        if holds(found) { found } else { self.locate(x, Side::Right) }
+    }
+
+    /// self + t * (other - self), for a field on the same mesh.
+    pub(crate) fn combined(&self, other: &Field, t: f64) -> Field {
+        self.zip(other, |a, b| a + t * (b - a))
+    }
+
+    /// self - other, for a field on the same mesh.
+    pub(crate) fn minus(&self, other: &Field) -> Field {
+        self.zip(other, |a, b| a - b)
+    }
+
+    fn zip(&self, other: &Field, f: impl Fn(f64, f64) -> f64) -> Field {
+        debug_assert_eq!(self.mesh, other.mesh);
+        let mut result = self.clone();
+        let ours = result.series.iter_mut().flatten().flatten().chain(&mut result.constants);
+        let theirs = other.series.iter().flatten().flatten().chain(&other.constants);
+        ours.zip(theirs).for_each(|(a, b)| *a = f(*a, *b));
+        result
+    }
+
     /// Legendre coefficients of u_i^(k), k <= m_i, on an element.
     pub fn series(&self, element: usize, unknown: usize, order: usize) -> &[f64] {
         &self.series[element][self.layout.jet(unknown, order)]

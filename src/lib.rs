@@ -26,6 +26,8 @@ pub mod quantity;
 
 /// Linear algebra of one pass: condense an element, chain the elements, close with the conditions.
 pub mod linear;
+/// Damped Newton iteration: a nonlinear model as a sequence of linear ones.
+pub(crate) mod newton;
 /// Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.
 pub mod adapt;
 /// What the answer rests on: error bars, residual, second route, explanations of singular problems.

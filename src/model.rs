@@ -184,6 +184,11 @@ pub trait Model: Sync {
     fn condition(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> Result<()>;
     /// Continuities given up (one entry also for each that a jump condition replaces).
     fn releases(&self) -> &[Release];
+    /// Whether jets at x lie where the equations are meant to hold (`above`, `below` of a sheet).
+    fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
+        let _ = (x, jets, constants);
+        true
+    }
     /// Name of an unknown function, for messages.
     fn unknown_name(&self, unknown: usize) -> String {
         format!("u{}", unknown + 1)

@@ -5,7 +5,9 @@ use std::path::{Path, PathBuf};
 
 fn rooms() -> Vec<String> {
     let lib = fs::read_to_string("src/lib.rs").expect("lib.rs is there");
-    let named = lib.lines().filter_map(|line| line.strip_prefix("pub mod ")?.strip_suffix(';'));
+    let named = lib.lines().filter_map(|line| {
+        line.trim_start_matches("pub(crate) ").trim_start_matches("pub ").strip_prefix("mod ")?.strip_suffix(';')
+    });
     named.map(str::to_owned).collect()
 }
 

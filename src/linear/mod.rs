@@ -15,5 +15,5 @@ pub(crate) mod householder;
 pub(crate) mod pass;
 pub(crate) mod tables;
 
-pub(crate) use pass::{Pass, solve};
+pub(crate) use pass::{Pass, solve, transfer};
 pub(crate) use tables::Library;

@@ -162,6 +162,40 @@ fn local_sizes(mesh: &Mesh, scale: &[f64], before: Option<&Field>) -> Vec<Vec<f6
         .collect()
 }
 
+/// A field on another mesh: its highest derivatives are met at the nodes, its states at the left ends.
+pub(crate) fn transfer(field: &Field, mesh: &Mesh, library: &mut Library) -> Result<Field> {
+    if field.mesh == *mesh {
+        return Ok(field.clone());
+    }
+    let layout = &field.layout;
+    let mut series = Vec::with_capacity(mesh.elements.len());
+    let mut hint = 0;
+    for element in &mesh.elements {
+        let tables = library.get(element.nodes)?;
+        let mut values = vec![Vec::with_capacity(tables.n); layout.unknowns()];
+        let mut state = Vec::with_capacity(layout.states());
+        for (node, s) in tables.nodes.iter().enumerate() {
+            let x = element.coordinate(*s);
+            hint = field.locate_in(x, element.piece, hint);
+            let jets = field.jets(hint, field.element(hint).reference(x), layout.orders());
+            for (i, &m) in layout.orders().iter().enumerate() {
+                values[i].push(jets[layout.jet(i, m)]);
+                if node == 0 {
+                    state.extend((0..m).map(|k| jets[layout.jet(i, k)]));
+                }
+            }
+        }
+        let mut jets = Vec::with_capacity(layout.jets());
+        let mut first = 0;
+        for (values, &m) in values.iter().zip(layout.orders()) {
+            jets.extend(integrate_up(tables.modal(values), &state[first..first + m], 0.5 * element.length()));
+            first += m;
+        }
+        series.push(jets);
+    }
+    Ok(Field::from_series(mesh.clone(), layout, field.constants.clone(), series))
+}
+
 /// What is kept of an element for the back-substitution.
 struct Response {
     /// See [`Condensed::response`].

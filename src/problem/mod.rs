@@ -42,7 +42,7 @@ pub type Number = DualSVec64<WIDTH>;
 type Equation = Box<dyn Fn(&Station<'_>) -> Number + Send + Sync>;
 type Tie = Box<dyn Fn(&[Station<'_>]) -> Number + Send + Sync>;
 
-/// A linear boundary-value problem under construction.
+/// A boundary-value problem under construction. Whether it is linear is found from its derivatives at several states.
 pub struct Problem {
     points: Vec<f64>,
     unknowns: Vec<(String, usize)>,
@@ -107,8 +107,7 @@ impl Problem {
     /// Checks the problem and makes it ready for the solver.
     ///
     /// # Errors
-    /// `Argument` for a span, place, unknown or order that does not exist; `Unsupported` when an equation or
-    /// condition is not linear (found from its derivatives at several states).
+    /// `Argument` for a span, place, unknown or order that does not exist.
     pub fn build(self) -> Result<impl Model> {
         Ready::new(self)
     }
@@ -131,6 +130,7 @@ struct Ready {
     conditions: Vec<Condition>,
     ties: Vec<Tie>,
     releases: Vec<Release>,
+    linear: bool,
 }
 
 impl Ready {
@@ -157,6 +157,7 @@ impl Ready {
             ties: Vec::new(),
             releases: Vec::new(),
             points: Vec::new(),
+            linear: false,
         };
         for (x, unknown, order) in releases {
             let exists = unknown < orders.len() && order < orders[unknown] && from < x && x < to;
@@ -172,17 +173,17 @@ impl Ready {
             ready.ties.push(tie);
         }
         ready.points = points;
-        ready.check_linear()?;
+        ready.linear = ready.found_linear()?;
         Ok(ready)
     }
 
-    /// Derivatives at two states must agree with those at zero.
-    fn check_linear(&self) -> Result<()> {
+    /// Linear if the derivatives at several states agree with each other to rounding.
+    fn found_linear(&self) -> Result<bool> {
         let (jets, constants) = (self.layout.jets(), self.layout.constants());
         let state = |k: usize, count: usize| -> Vec<f64> {
             (0..count).map(|j| if k == 0 { 0.0 } else { ((j * 7 + k * 13) as f64).sin() * 2.385 }).collect()
         };
-        let differ = |a: &[f64], b: &[f64]| a.iter().zip(b).any(|(a, b)| (a - b).abs() > 1e-9 * a.abs().max(b.abs()));
+        let same = |a: &[f64], b: &[f64]| a.iter().zip(b).all(|(a, b)| (a - b).abs() <= 1e-9 * a.abs().max(b.abs()));
         for piece in 0..self.points.len() - 1 {
             let x = [0.385f64, 0.77].map(|t| self.points[piece] + t * (self.points[piece + 1] - self.points[piece]));
             let at = |k: usize| -> Result<Linearised> {
@@ -193,8 +194,8 @@ impl Ready {
                 Ok(out)
             };
             let (zero, others) = (at(0)?, [at(1)?, at(2)?]);
-            if others.iter().any(|o| differ(&zero.jets, &o.jets) || differ(&zero.constants, &o.constants)) {
-                return Err(Error::Unsupported("an equation is not linear in the unknowns".into()));
+            if !others.iter().all(|o| same(&zero.jets, &o.jets) && same(&zero.constants, &o.constants)) {
+                return Ok(false);
             }
         }
         for (index, condition) in self.conditions.iter().enumerate() {
@@ -206,11 +207,11 @@ impl Ready {
                 Ok(out)
             };
             let (zero, others) = (at(0)?, [at(1)?, at(2)?]);
-            if others.iter().any(|o| differ(&zero.jets, &o.jets) || differ(&zero.constants, &o.constants)) {
-                return Err(Error::Unsupported(format!("condition {} is not linear in the unknowns", condition.name)));
+            if !others.iter().all(|o| same(&zero.jets, &o.jets) && same(&zero.constants, &o.constants)) {
+                return Ok(false);
             }
         }
-        Ok(())
+        Ok(true)
     }
 }
 
@@ -224,7 +225,7 @@ impl Model for Ready {
     }
 
     fn linear(&self) -> bool {
-        true
+        self.linear
     }
 
     fn equations(&self, batch: &Batch<'_>, out: &mut Linearised) -> Result<()> {

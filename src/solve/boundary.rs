@@ -1,5 +1,6 @@
 //! Two-point and multi-point boundary-value problems.
 
+use super::nonlinear::nonlinear;
 use super::{Progress, Settings, Solution};
 use crate::adapt::{exponents, refine, seed};
 use crate::error::{Error, Result};
@@ -13,26 +14,29 @@ use crate::model::Model;
 use crate::tolerance;
 
 /// Most passes of the mesh adaptation.
-const PASSES: usize = 40;
+pub(super) const PASSES: usize = 40;
 /// Solves with changed coefficients.
-const NUDGES: u64 = 4;
+pub(super) const NUDGES: u64 = 4;
 /// How many nodes the answer has more than the mesh it was adapted on.
-const ENRICH: usize = 4;
+pub(super) const ENRICH: usize = 4;
 
-/// Solves a linear boundary-value problem: seeds a mesh, adapts it, and solves once more with more nodes
+/// Solves a boundary-value problem: seeds a mesh, adapts it, and solves once more with more nodes
 /// and twice with changed coefficients for the error bars.
 ///
 /// # Errors
 /// [`Error::Singular`] with an explanation when the problem has no unique solution; [`Error::NotFinite`] when
-/// data are not finite somewhere; [`Error::ConditionCount`]; [`Error::Unsupported`] for nonlinear problems;
+/// data are not finite somewhere; [`Error::ConditionCount`]; [`Error::NoSolution`] when a nonlinear problem was not solved;
 /// [`Error::Interrupted`] when the watch says so.
 pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> {
     check(model, settings)?;
+    if !model.linear() {
+        return nonlinear(model, settings);
+    }
     let scale = exponents::scales(model)?;
     let mut mesh = seed::seed(model, &scale, settings.most_elements)?;
     let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
     let mut solver = Solver { model, settings, scale, library: Library::new(depth), pass: 0 };
-    let wanted = (tolerance::TAIL_SHARE * settings.relative).max(tolerance::FINEST_TAIL);
+    let wanted = wanted_tail(settings.relative);
     let (mut base, mut resolved) = (solver.solve(&mesh, None, &Perturbation::NONE)?, false);
     while solver.pass < PASSES {
         let indicators = refine::indicators(model, &base.field, wanted)?;
@@ -74,9 +78,6 @@ pub fn on_mesh(model: &dyn Model, mesh: &Mesh) -> Result<Field> {
 }
 
 fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
-    if !model.linear() {
-        return Err(Error::Unsupported("nonlinear problems are not solved by this version".into()));
-    }
     let points = model.points();
     let ascending = points.len() >= 2 && points.windows(2).all(|p| p[0] < p[1]);
     if !ascending || points.iter().any(|p| !p.is_finite()) {
@@ -96,19 +97,24 @@ fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
     Ok(())
 }
 
+/// How small the last coefficients must be for a given accuracy.
+pub(super) fn wanted_tail(relative: f64) -> f64 {
+    (tolerance::TAIL_SHARE * relative).max(tolerance::FINEST_TAIL)
+}
+
 /// One problem being solved, pass after pass.
-struct Solver<'a> {
-    model: &'a dyn Model,
-    settings: &'a Settings<'a>,
-    scale: Vec<f64>,
-    library: Library,
-    pass: usize,
+pub(super) struct Solver<'a> {
+    pub model: &'a dyn Model,
+    pub settings: &'a Settings<'a>,
+    pub scale: Vec<f64>,
+    pub library: Library,
+    pub pass: usize,
 }
 
 impl Solver<'_> {
     /// One linear solve. A system that looks singular is solved once more with more nodes before it is called so:
     /// on a coarse mesh a regular problem may look singular.
-    fn solve(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
+    pub fn solve(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
         let first = self.solve_once(mesh, before, nudge)?;
         if first.free.is_empty() {
             return Ok(first);
@@ -120,7 +126,7 @@ impl Solver<'_> {
         Err(Error::Singular(singular::explain(self.model, &second.free, &second.contradictions)))
     }
 
-    fn solve_once(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
+    pub fn solve_once(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
         self.pass += 1;
         let (pass, elements) = (self.pass, mesh.elements.len());
         let watch = self.settings.watch;

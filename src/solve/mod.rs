@@ -1,6 +1,7 @@
 //! Drivers: from a model to a solution.
 
 mod boundary;
+mod nonlinear;
 
 pub use boundary::{boundary, on_mesh};
 

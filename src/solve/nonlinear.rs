@@ -1,0 +1,321 @@
+//! Nonlinear boundary-value problems: start, mesh and iteration together, homotopy when they find no way.
+
+use super::boundary::{ENRICH, NUDGES, PASSES, Solver, wanted_tail};
+use super::{Settings, Solution};
+use crate::adapt::{exponents, refine, seed};
+use crate::error::{Error, Result};
+use crate::evidence::bars::Companions;
+use crate::field::Field;
+use crate::linear::pass::Perturbation;
+use crate::linear::{Library, transfer};
+use crate::mesh::Mesh;
+use crate::model::{Batch, Condition, ConditionValue, Layout, Linearised, Model, Release};
+use crate::newton::{Iteration, Linearisation, Stepper, newton};
+use crate::tolerance;
+
+/// Most steps of one iteration.
+const STEPS: usize = 40;
+/// Most points of the homotopy.
+const HOMOTOPY: usize = 300;
+
+/// Solves a nonlinear problem.
+pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> {
+    let starts = starts(model, settings)?;
+    let mut reasons = Vec::new();
+    for start in &starts {
+        match follow(model, settings, start) {
+            Ok(solution) => return Ok(solution),
+            Err(Error::Interrupted) => return Err(Error::Interrupted),
+            Err(error) => reasons.push(error.to_string()),
+        }
+    }
+    for start in &starts {
+        match homotopy(model, settings, start) {
+            Ok(near) => return follow(model, settings, &near),
+            Err(Error::Interrupted) => return Err(Error::Interrupted),
+            Err(error) => reasons.push(error.to_string()),
+        }
+    }
+    reasons.dedup();
+    Err(Error::NoSolution { tried: reasons.join("; ") })
+}
+
+/// Fields to start from: constant ones at which the equations make sense, and what one linear solve makes of
+/// each, which meets all linear conditions.
+fn starts(model: &dyn Model, settings: &Settings<'_>) -> Result<Vec<Field>> {
+    let layout = model.layout();
+    let mesh = Mesh::uniform(model.points(), 1, 16);
+    let mut library = depth(layout);
+    let mut starts = Vec::new();
+    for level in [0.0, 1.0] {
+        let flat = constant(model, &mesh, level, &mut library)?;
+        let linear = Linearisation::new(model, &flat, &flat);
+        let Ok(scale) = exponents::scales(&linear) else { continue };
+        let mut solver = Solver { model: &linear, settings, scale, library: depth(layout), pass: 0 };
+        match solver.solve(&mesh, None, &Perturbation::NONE) {
+            Ok(pass) => starts.push(pass.field),
+            Err(Error::Interrupted) => return Err(Error::Interrupted),
+            Err(_) => {}
+        }
+        starts.push(flat);
+    }
+    if starts.is_empty() {
+        return Err(Error::NoSolution {
+            tried: "the equations make no sense at constant values of the unknowns".into(),
+        });
+    }
+    Ok(starts)
+}
+
+fn depth(layout: &Layout) -> Library {
+    Library::new(layout.orders().iter().copied().max().unwrap_or(0))
+}
+
+/// All unknowns at the same value.
+fn constant(model: &dyn Model, mesh: &Mesh, level: f64, library: &mut Library) -> Result<Field> {
+    let layout = model.layout();
+    let series = mesh
+        .elements
+        .iter()
+        .map(|e| {
+            let jets = layout.orders().iter().flat_map(|&m| {
+                (0..=m).map(move |k| {
+                    let mut c = vec![0.0; e.nodes + m - k];
+                    c[0] = if k == 0 { level } else { 0.0 };
+                    c
+                })
+            });
+            jets.collect()
+        })
+        .collect();
+    let field = Field::from_series(mesh.clone(), layout, vec![level; layout.constants()], series);
+    transfer(&field, mesh, library)
+}
+
+/// Newton's iteration and mesh adaptation in turn, from a start to the answer with its companions.
+fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<Solution> {
+    let mut run = Run::new(model, settings, start)?;
+    let resolved = run.converge(start, wanted_tail(settings.relative), 1e-13)?;
+    let passes = run.passes;
+    let about = run.field.clone();
+    let linear = Linearisation::new(model, &about, &about);
+    let mut solver =
+        Solver { model: &linear, settings, scale: run.scale.clone(), library: depth(model.layout()), pass: passes };
+    let mesh = about.mesh.clone();
+    let base = solver.solve(&mesh, Some(&about), &Perturbation::NONE)?.field;
+    let between = run.polished(&mesh.enriched(ENRICH / 2), &base)?;
+    let answer = run.polished(&mesh.enriched(ENRICH), &base)?;
+    let condition = solver.solve(&mesh.enriched(ENRICH), Some(&base), &Perturbation::NONE)?.condition;
+    let mut nudged = Vec::new();
+    for seed in 0..NUDGES {
+        let nudge = Perturbation { size: tolerance::NUDGE, seed: 2385 + seed, by_piece: seed % 2 == 1 };
+        nudged.push(solver.solve(&mesh, Some(&base), &nudge)?.field);
+    }
+    let companions = Companions { coarser: vec![base, between, about], nudged };
+    Ok(Solution { field: answer, condition, passes, resolved, companions })
+}
+
+/// One iteration with its mesh.
+struct Run<'a> {
+    model: &'a dyn Model,
+    settings: &'a Settings<'a>,
+    scale: Vec<f64>,
+    field: Field,
+    library: Library,
+    passes: usize,
+}
+
+impl<'a> Run<'a> {
+    fn new(model: &'a dyn Model, settings: &'a Settings<'a>, start: &Field) -> Result<Self> {
+        let linear = Linearisation::new(model, start, start);
+        let scale = exponents::scales(&linear)?;
+        let mesh = seed::seed(&linear, &scale, settings.most_elements)?;
+        let mut library = depth(model.layout());
+        let field = transfer(start, &mesh, &mut library)?;
+        Ok(Self { model, settings, scale, field, library, passes: 0 })
+    }
+
+    /// Iterates and refines until the coefficients of the iterate have fallen to `tail` and the steps to `step`; whether
+    /// the mesh resolves the solution.
+    fn converge(&mut self, start: &Field, tail: f64, step: f64) -> Result<bool> {
+        self.field = transfer(start, &self.field.mesh, &mut self.library)?;
+        let mut worst = 1.0f64;
+        let mut failures = 0;
+        while self.passes < 2 * PASSES {
+            let wanted = (1e-3 * worst).clamp(step, 1e-2);
+            let mesh = self.field.mesh.clone();
+            let Iteration { field, failure, .. } = self.iterate(&mesh, wanted)?;
+            self.field = field;
+            let linear = Linearisation::new(self.model, &self.field, &self.field);
+            let indicators = refine::indicators(&linear, &self.field, tail)?;
+            worst = indicators.iter().map(|i| i.tail).fold(0.0, f64::max);
+            let next = refine::next(&mesh, &indicators);
+            match (failure, next) {
+                (None, None) if wanted <= step || worst == 0.0 => {
+                    let mesh = self.field.mesh.clone();
+                    let last = self.iterate(&mesh, step)?;
+                    self.field = last.field;
+                    return match last.failure {
+                        None => Ok(true),
+                        Some(reason) => Err(Error::NoSolution { tried: reason }),
+                    };
+                }
+                (None, None) => {}
+                (Some(reason), None) => return Err(Error::NoSolution { tried: reason }),
+                (failed, Some(next)) => {
+                    failures += usize::from(failed.is_some());
+                    if let Some(reason) = failed.filter(|_| failures > 6) {
+                        return Err(Error::NoSolution { tried: reason });
+                    }
+                    if next.elements.len() > self.settings.most_elements.min(3000) {
+                        return Err(Error::Unresolved { elements: next.elements.len(), x: next.elements[0].left });
+                    }
+                    self.field = transfer(&self.field, &next, &mut self.library)?;
+                }
+            }
+        }
+        Ok(false)
+    }
+
+    fn iterate(&mut self, mesh: &Mesh, wanted: f64) -> Result<Iteration> {
+        self.passes += 1;
+        let start = self.field.clone();
+        let mut steps = Steps { run: self, mesh };
+        newton(&mut steps, &start, wanted, STEPS)
+    }
+
+    /// The solution on another mesh: two more steps from a converged one.
+    fn polished(&mut self, mesh: &Mesh, near: &Field) -> Result<Field> {
+        let mut field = transfer(near, mesh, &mut self.library)?;
+        for _ in 0..2 {
+            let mut steps = Steps { run: self, mesh };
+            field = steps.solve(&field, &field)?;
+        }
+        Ok(field)
+    }
+}
+
+struct Steps<'r, 'a> {
+    run: &'r mut Run<'a>,
+    mesh: &'r Mesh,
+}
+
+impl Stepper for Steps<'_, '_> {
+    fn solve(&mut self, jacobian: &Field, residual: &Field) -> Result<Field> {
+        let linear = Linearisation::new(self.run.model, jacobian, residual);
+        let library = std::mem::replace(&mut self.run.library, Library::new(0));
+        let mut solver = Solver {
+            model: &linear,
+            settings: self.run.settings,
+            scale: self.run.scale.clone(),
+            library,
+            pass: self.run.passes,
+        };
+        let solved = solver.solve_once(self.mesh, Some(jacobian), &Perturbation::NONE);
+        self.run.library = solver.library;
+        let solved = solved?;
+        if solved.free.is_empty() {
+            Ok(solved.field)
+        } else {
+            Err(Error::Singular("the linearised problem has no unique solution".into()))
+        }
+    }
+
+    fn transfer(&mut self, field: &Field) -> Result<Field> {
+        transfer(field, self.mesh, &mut self.run.library)
+    }
+
+    fn admissible(&self, field: &Field) -> bool {
+        let orders = field.layout.orders();
+        let at = |e: usize, s: f64| {
+            let jets = field.jets(e, s, orders);
+            self.run.model.admissible(field.element(e).coordinate(s), &jets, &field.constants)
+        };
+        (0..field.mesh.elements.len()).all(|e| [-1.0, -0.7, -0.3, 0.0, 0.3, 0.7, 1.0].iter().all(|s| at(e, *s)))
+    }
+}
+
+/// Follows F(u) = (1 - t) F(u0) from t = 0, where u0 solves it, to t = 1. Coarse meshes will do on the way.
+fn homotopy(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<Field> {
+    let (mut t, mut step) = (0.0f64, 0.25f64);
+    let mut field = start.clone();
+    for _ in 0..HOMOTOPY {
+        let next = (t + step).min(1.0);
+        let between = Homotopy { model, start, share: 1.0 - next };
+        let found = Run::new(&between, settings, &field).and_then(|mut run| {
+            run.converge(&field, 1e-5, 1e-6)?;
+            Ok(run.field)
+        });
+        match found {
+            Ok(found) => {
+                (t, field) = (next, found);
+                if t >= 1.0 {
+                    return Ok(field);
+                }
+                step *= 2.0;
+            }
+            Err(Error::Interrupted) => return Err(Error::Interrupted),
+            Err(_) => {
+                step *= 0.25;
+                if step < 1e-4 {
+                    break;
+                }
+            }
+        }
+    }
+    Err(Error::NoSolution { tried: format!("homotopy: got {:.1} % of the way", 100.0 * t) })
+}
+
+/// F(u) - share * F(u0).
+struct Homotopy<'a> {
+    model: &'a dyn Model,
+    start: &'a Field,
+    share: f64,
+}
+
+impl Model for Homotopy<'_> {
+    fn layout(&self) -> &Layout {
+        self.model.layout()
+    }
+
+    fn points(&self) -> &[f64] {
+        self.model.points()
+    }
+
+    fn linear(&self) -> bool {
+        false
+    }
+
+    fn equations(&self, batch: &Batch<'_>, out: &mut Linearised) -> Result<()> {
+        self.model.equations(batch, out)?;
+        let mut first = Linearised::default();
+        first.reset(self.layout(), batch.x.len());
+        // The linearisation about u0, asked at zero jets and taken to u0 again, is F(u0).
+        let about = Linearisation::new(self.model, self.start, self.start);
+        about.equations_at_centre(batch, &mut first)?;
+        out.residual.iter_mut().zip(&first.residual).for_each(|(a, b)| *a -= self.share * b);
+        Ok(())
+    }
+
+    fn conditions(&self) -> &[Condition] {
+        self.model.conditions()
+    }
+
+    fn condition(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> Result<()> {
+        self.model.condition(index, jets, constants, out)?;
+        let mut first = ConditionValue::default();
+        first.reset(self.layout(), self.conditions()[index].places.len());
+        let about = Linearisation::new(self.model, self.start, self.start);
+        about.condition_at_centre(index, &mut first)?;
+        out.residual -= self.share * first.residual;
+        Ok(())
+    }
+
+    fn releases(&self) -> &[Release] {
+        self.model.releases()
+    }
+
+    fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
+        self.model.admissible(x, jets, constants)
+    }
+}
