@@ -158,10 +158,7 @@ impl Rounded {
     pub fn from_decimal(value: f64) -> Self {
         let scaled = value * f64::from(1 << 20);
         let exact = value == 0.0 || (scaled.fract() == 0.0 && scaled.abs() < 1e15);
-        Self {
-            value,
-            error: if exact { 0.0 } else { value.abs() * HALF_ULP },
-        }
+        Self { value, error: if exact { 0.0 } else { value.abs() * HALF_ULP } }
     }
 
     /// Exactly this value.
@@ -235,11 +232,7 @@ impl Number for Rounded {
         };
         let near = if self.error >= a.abs() {
             // The base may be zero.
-            if b > 0.0 {
-                (a.abs() + self.error).powf(b)
-            } else {
-                f64::INFINITY
-            }
+            if b > 0.0 { (a.abs() + self.error).powf(b) } else { f64::INFINITY }
         } else {
             scaled(self.error, (value * b / a).abs())
         };
@@ -265,8 +258,9 @@ impl Number for Rounded {
                 Unary::Cos => a.sin().abs() + e / 2.0,
                 Unary::Tan => 1.0 + value * value,
                 // At the ends of their range: |asin a - asin b| <= pi sqrt(|a - b|/2).
-                Unary::Asin | Unary::Acos => (1.0 / ((1.0 - a) * (1.0 + a)).sqrt())
-                    .min(std::f64::consts::PI * (0.5 / e).sqrt()),
+                Unary::Asin | Unary::Acos => {
+                    (1.0 / ((1.0 - a) * (1.0 + a)).sqrt()).min(std::f64::consts::PI * (0.5 / e).sqrt())
+                }
                 Unary::Acosh => (1.0 / ((a - 1.0) * (a + 1.0)).sqrt()).min((2.0 / e).sqrt()),
                 Unary::Atan => 1.0 / (1.0 + a * a),
                 Unary::Sinh => a.cosh(),
@@ -296,11 +290,7 @@ impl Number for Rounded {
                 let spread = scaled(a.value.abs(), b.error) + scaled(b.value.abs(), a.error);
                 let spread = if a.value.abs() <= a.error && b.value - b.error <= 0.0 {
                     // On the negative axis the angle steps from -pi to pi.
-                    if spread == 0.0 {
-                        0.0
-                    } else {
-                        std::f64::consts::TAU
-                    }
+                    if spread == 0.0 { 0.0 } else { std::f64::consts::TAU }
                 } else {
                     spread / square
                 };
@@ -310,22 +300,14 @@ impl Number for Rounded {
             Binary::SignedPower => {
                 let size = a.unary(Unary::Abs).power(b);
                 // Where the sign is not certain, the power of the error bounds both sides.
-                let error = if a.error >= a.value.abs() {
-                    size.error + value.abs()
-                } else {
-                    size.error
-                };
+                let error = if a.error >= a.value.abs() { size.error + value.abs() } else { size.error };
                 Self::new(value, error)
             }
         }
     }
 
     fn choose(self, strict: bool, then: Self, otherwise: Self) -> Self {
-        let (taken, left) = if holds(self.value, strict) {
-            (then, otherwise)
-        } else {
-            (otherwise, then)
-        };
+        let (taken, left) = if holds(self.value, strict) { (then, otherwise) } else { (otherwise, then) };
         if self.value.abs() > self.error || self.error == 0.0 {
             return taken;
         }

@@ -10,17 +10,9 @@ use proptest::test_runner::RngSeed;
 pub(crate) fn cases(cases: u32) -> ProptestConfig {
     let base = ProptestConfig::default();
     if std::env::var_os("PROPTEST_CASES").is_some() {
-        return ProptestConfig {
-            failure_persistence: None,
-            ..base
-        };
+        return ProptestConfig { failure_persistence: None, ..base };
     }
-    ProptestConfig {
-        cases,
-        rng_seed: RngSeed::Fixed(2_385),
-        failure_persistence: None,
-        ..base
-    }
+    ProptestConfig { cases, rng_seed: RngSeed::Fixed(2_385), failure_persistence: None, ..base }
 }
 
 /// A formula as written, evaluated the plain way beside the graph.
@@ -51,14 +43,8 @@ pub(super) fn leaf(g: &mut Graph, i: usize) -> NodeId {
 
 pub(super) const VARIABLES: [Variable; LEAVES] = [
     Variable::Coordinate,
-    Variable::Jet {
-        unknown: 0,
-        order: 0,
-    },
-    Variable::Jet {
-        unknown: 0,
-        order: 1,
-    },
+    Variable::Jet { unknown: 0, order: 0 },
+    Variable::Jet { unknown: 0, order: 1 },
     Variable::Constant(0),
     Variable::Slot(0),
 ];
@@ -161,30 +147,14 @@ pub(super) fn trees() -> impl Strategy<Value = Tree> {
         let two = || (one(), one());
         prop_oneof![
             one().prop_map(Tree::Negate),
-            ("[-+*/]", two())
-                .prop_map(|(o, (a, b))| { Tree::Op(o.chars().next().expect("one sign"), a, b) }),
-            ("[-+*/]", two())
-                .prop_map(|(o, (a, b))| { Tree::Op(o.chars().next().expect("one sign"), a, b) }),
-            (
-                one(),
-                prop::sample::select(vec![-2.0, -1.0, 0.5, 1.5, 2.0, 3.0, 12.0])
-            )
+            ("[-+*/]", two()).prop_map(|(o, (a, b))| { Tree::Op(o.chars().next().expect("one sign"), a, b) }),
+            ("[-+*/]", two()).prop_map(|(o, (a, b))| { Tree::Op(o.chars().next().expect("one sign"), a, b) }),
+            (one(), prop::sample::select(vec![-2.0, -1.0, 0.5, 1.5, 2.0, 3.0, 12.0]))
                 .prop_map(|(a, k)| Tree::Power(a, k)),
             (prop::sample::select(UNARY.to_vec()), one()).prop_map(|(f, a)| Tree::Unary(f, a)),
-            (
-                prop::sample::select(vec![
-                    Binary::Atan2,
-                    Binary::Min,
-                    Binary::Max,
-                    Binary::SignedPower
-                ]),
-                two()
-            )
+            (prop::sample::select(vec![Binary::Atan2, Binary::Min, Binary::Max, Binary::SignedPower]), two())
                 .prop_map(|(f, (a, b))| Tree::Binary(f, a, b)),
-            (
-                any::<bool>(),
-                [inner.clone(), inner.clone(), inner.clone(), inner.clone()]
-            )
+            (any::<bool>(), [inner.clone(), inner.clone(), inner.clone(), inner.clone()])
                 .prop_map(|(strict, parts)| Tree::If(strict, Box::new(parts))),
         ]
     })
@@ -192,15 +162,8 @@ pub(super) fn trees() -> impl Strategy<Value = Tree> {
 
 pub(super) fn point() -> impl Strategy<Value = [f64; LEAVES]> {
     // Away from zero, where a formula like u/u would be undefined but for its simplification.
-    let signed = |size: std::ops::Range<f64>| {
-        (any::<bool>(), size).prop_map(|(minus, size)| if minus { -size } else { size })
-    };
-    (
-        0.1f64..2.385,
-        signed(0.07..2.0),
-        signed(0.05..3.0),
-        0.3f64..1.7,
-        signed(0.02..1.0),
-    )
+    let signed =
+        |size: std::ops::Range<f64>| (any::<bool>(), size).prop_map(|(minus, size)| if minus { -size } else { size });
+    (0.1f64..2.385, signed(0.07..2.0), signed(0.05..3.0), 0.3f64..1.7, signed(0.02..1.0))
         .prop_map(|(x, u, v, c, s)| [x, u, v, c, s])
 }

@@ -169,12 +169,7 @@ impl Tape {
     /// If `out` or an input is shorter than the tape needs.
     pub fn run(&self, work: &mut Workspace, inputs: &TapeInputs<'_>, out: &mut [f64]) {
         let n = inputs.x.len();
-        self.load(
-            &mut work.uniforms,
-            inputs.constants,
-            inputs.slots,
-            inputs.tests,
-        );
+        self.load(&mut work.uniforms, inputs.constants, inputs.slots, inputs.tests);
         work.registers.resize(self.registers * CHUNK, 0.0);
         for start in (0..n).step_by(CHUNK) {
             let nodes = start..n.min(start + CHUNK);
@@ -194,12 +189,7 @@ impl Tape {
                     Source::Coordinate => Operand::Each(&inputs.x[nodes.clone()]),
                     Source::Jet(j) => Operand::Each(self.row(inputs.jets, j, n, &nodes)),
                 });
-                step_all(
-                    instruction.operation,
-                    &operands,
-                    inputs.tests,
-                    &mut to[..length],
-                );
+                step_all(instruction.operation, &operands, inputs.tests, &mut to[..length]);
             }
             for (k, source) in self.outputs.iter().enumerate() {
                 let to = &mut out[k * n..][nodes.clone()];
@@ -215,24 +205,14 @@ impl Tape {
         }
     }
 
-    fn row<'a>(
-        &self,
-        jets: &'a [f64],
-        jet: usize,
-        n: usize,
-        nodes: &std::ops::Range<usize>,
-    ) -> &'a [f64] {
+    fn row<'a>(&self, jets: &'a [f64], jet: usize, n: usize, nodes: &std::ops::Range<usize>) -> &'a [f64] {
         &jets[self.rows[jet] * n..][nodes.clone()]
     }
 
     /// Numbers, constants, slots and what is computed from them.
     fn load<T: Number>(&self, uniforms: &mut Vec<T>, constants: &[T], slots: &[T], tests: &[bool]) {
         uniforms.clear();
-        uniforms.extend(
-            self.numbers
-                .iter()
-                .map(|(value, error)| T::number(*value, *error)),
-        );
+        uniforms.extend(self.numbers.iter().map(|(value, error)| T::number(*value, *error)));
         uniforms.extend(self.constants.iter().map(|c| constants[usize::from(*c)]));
         uniforms.extend(self.slots.iter().map(|s| slots[*s as usize]));
         uniforms.resize(self.uniforms, T::number(0.0, 0.0));
@@ -250,12 +230,7 @@ impl Tape {
     ///
     /// # Panics
     /// If `out` or an input is shorter than the tape needs.
-    pub fn run_scalar<T: Number>(
-        &self,
-        scratch: &mut Vec<T>,
-        inputs: &ScalarInputs<'_, T>,
-        out: &mut [T],
-    ) {
+    pub fn run_scalar<T: Number>(&self, scratch: &mut Vec<T>, inputs: &ScalarInputs<'_, T>, out: &mut [T]) {
         self.load(scratch, inputs.constants, inputs.slots, inputs.tests);
         scratch.resize(self.uniforms + self.registers, T::number(0.0, 0.0));
         let fetch = |scratch: &[T], source: Source| match source {
@@ -266,8 +241,7 @@ impl Tape {
         };
         for instruction in &self.varying {
             let operands = instruction.operands.map(|source| fetch(scratch, source));
-            scratch[self.uniforms + instruction.to] =
-                step(instruction.operation, operands, inputs.tests);
+            scratch[self.uniforms + instruction.to] = step(instruction.operation, operands, inputs.tests);
         }
         for (to, source) in out[..self.outputs.len()].iter_mut().zip(&self.outputs) {
             *to = fetch(scratch, *source);
@@ -329,11 +303,7 @@ fn step_all(operation: Operation, [a, b, c]: &[Operand<'_>; 3], tests: &[bool], 
         Operation::Binary(f) => zip(to, a, b, |a, b| binary(f, a, b)),
         Operation::Choose(strict) => {
             for (i, to) in to.iter_mut().enumerate() {
-                *to = if holds(a.at(i), strict) {
-                    b.at(i)
-                } else {
-                    c.at(i)
-                };
+                *to = if holds(a.at(i), strict) { b.at(i) } else { c.at(i) };
             }
         }
         Operation::Piece(k) => map(to, if tests[k] { a } else { b }, |a| a),
@@ -383,23 +353,14 @@ impl<'a> Compiler<'a> {
             slots: Vec::new(),
             tests: Vec::new(),
         };
-        Self {
-            graph,
-            tape,
-            places: HashMap::new(),
-        }
+        Self { graph, tape, places: HashMap::new() }
     }
 
     fn compile(mut self, outputs: &[NodeId]) -> Tape {
         let nodes = self.needed(outputs);
         self.inputs(&nodes);
-        let steps: Vec<(NodeId, Operation, Vec<NodeId>)> = nodes
-            .into_iter()
-            .filter_map(|id| {
-                self.lower(id)
-                    .map(|(operation, from)| (id, operation, from))
-            })
-            .collect();
+        let steps: Vec<(NodeId, Operation, Vec<NodeId>)> =
+            nodes.into_iter().filter_map(|id| self.lower(id).map(|(operation, from)| (id, operation, from))).collect();
         let mut last_use: HashMap<NodeId, usize> = HashMap::new();
         for (i, (_, _, from)) in steps.iter().enumerate() {
             last_use.extend(from.iter().map(|id| (*id, i)));
@@ -469,12 +430,8 @@ impl<'a> Compiler<'a> {
         for id in nodes {
             match self.graph.node(*id) {
                 Node::Number(_) | Node::Derivative(_) => {
-                    let number = self
-                        .graph
-                        .rounded(*id)
-                        .map_or(missing, |r| (r.value, r.error));
-                    self.places
-                        .insert(*id, Source::Uniform(self.tape.numbers.len()));
+                    let number = self.graph.rounded(*id).map_or(missing, |r| (r.value, r.error));
+                    self.places.insert(*id, Source::Uniform(self.tape.numbers.len()));
                     self.tape.numbers.push(number);
                 }
                 Node::Coordinate => {
@@ -531,12 +488,7 @@ impl<'a> Compiler<'a> {
             },
             Node::Unary(f, a) => (Operation::Unary(f), vec![a]),
             Node::Binary(f, a, b) => (Operation::Binary(f), vec![a, b]),
-            Node::Choose {
-                gap,
-                strict,
-                then,
-                otherwise,
-            } => match self.graph.piece_test(node) {
+            Node::Choose { gap, strict, then, otherwise } => match self.graph.piece_test(node) {
                 Some(test) => {
                     let known = self.tape.tests.iter().position(|t| *t == test);
                     let k = known.unwrap_or_else(|| {

@@ -23,51 +23,27 @@ pub(super) struct Coefficient {
 }
 
 impl Coefficient {
-    const ONE: Self = Self {
-        n: Rounded {
-            value: 1.0,
-            error: 0.0,
-        },
-        d: Rounded {
-            value: 1.0,
-            error: 0.0,
-        },
-    };
+    const ONE: Self = Self { n: Rounded { value: 1.0, error: 0.0 }, d: Rounded { value: 1.0, error: 0.0 } };
 
     fn from(n: Rounded) -> Self {
         Self { n, ..Self::ONE }
     }
 
     fn negate(self) -> Self {
-        Self {
-            n: self.n.negate(),
-            ..self
-        }
+        Self { n: self.n.negate(), ..self }
     }
 
     fn times(self, other: Self) -> Self {
-        Self {
-            n: self.n.multiply(other.n),
-            d: self.d.multiply(other.d),
-        }
-        .reduced()
+        Self { n: self.n.multiply(other.n), d: self.d.multiply(other.d) }.reduced()
     }
 
     fn over(self, other: Self) -> Self {
-        Self {
-            n: self.n.multiply(other.d),
-            d: self.d.multiply(other.n),
-        }
-        .reduced()
+        Self { n: self.n.multiply(other.d), d: self.d.multiply(other.n) }.reduced()
     }
 
     fn plus(self, other: Self) -> Self {
         if self.d == other.d {
-            return Self {
-                n: self.n.add(other.n),
-                ..self
-            }
-            .reduced();
+            return Self { n: self.n.add(other.n), ..self }.reduced();
         }
         Self::from(self.quotient().add(other.quotient()))
     }
@@ -83,18 +59,12 @@ impl Coefficient {
             q.is_finite() && q != 0.0 && (-q).mul_add(b.value, a.value) == 0.0
         };
         if self.n.value == 0.0 && self.d.value != 0.0 {
-            return Self {
-                n: self.n,
-                ..Self::ONE
-            };
+            return Self { n: self.n, ..Self::ONE };
         }
         if exact(self.n, self.d) {
             Self::from(self.quotient())
         } else if exact(self.d, self.n) {
-            Self {
-                n: Self::ONE.n,
-                d: self.d.divide(self.n),
-            }
+            Self { n: Self::ONE.n, d: self.d.divide(self.n) }
         } else {
             self
         }
@@ -217,11 +187,7 @@ impl Graph {
     fn repeated(&mut self, a: NodeId, k: i32) -> NodeId {
         if let Node::Negate(inner) = self.node(a) {
             let power = self.repeated_base(inner, k);
-            return if k % 2 == 0 {
-                power
-            } else {
-                self.negate(power)
-            };
+            return if k % 2 == 0 { power } else { self.negate(power) };
         }
         self.repeated_base(a, k)
     }
@@ -229,9 +195,7 @@ impl Graph {
     fn repeated_base(&mut self, a: NodeId, k: i32) -> NodeId {
         let mut factors = Factors::new();
         let (coefficient, rest) = self.term(a);
-        let single = coefficient == Coefficient::ONE
-            && self.collect(rest, 1, &mut factors)
-            && factors.len() == 1;
+        let single = coefficient == Coefficient::ONE && self.collect(rest, 1, &mut factors) && factors.len() == 1;
         let (base, exponent) = match factors.pop_first() {
             Some((base, e)) if single => match e.checked_mul(k) {
                 Some(e) if f64::from(e).abs() <= MOST_REPEATED => (base, e),
@@ -300,12 +264,7 @@ impl Graph {
         if let Some(gap) = self.as_number(gap) {
             return if holds(gap, strict) { then } else { otherwise };
         }
-        let node = Node::Choose {
-            gap,
-            strict,
-            then,
-            otherwise,
-        };
+        let node = Node::Choose { gap, strict, then, otherwise };
         self.intern(node, 0.0)
     }
 
@@ -341,14 +300,7 @@ impl Graph {
             }
         };
         let coefficient = coefficient.over(under);
-        (
-            if sign {
-                coefficient.negate()
-            } else {
-                coefficient
-            },
-            rest,
-        )
+        (if sign { coefficient.negate() } else { coefficient }, rest)
     }
 
     /// The node (n/d) R.
@@ -385,11 +337,7 @@ impl Graph {
         }
         let mut factors = Factors::new();
         if !(self.collect(a, 1, &mut factors) && self.collect(b, sign, &mut factors)) {
-            let node = if sign > 0 {
-                Node::Multiply(a.min(b), a.max(b))
-            } else {
-                Node::Divide(a, b)
-            };
+            let node = if sign > 0 { Node::Multiply(a.min(b), a.max(b)) } else { Node::Divide(a, b) };
             let rest = self.intern(node, 0.0);
             return self.with_coefficient(c, rest);
         }
@@ -451,10 +399,7 @@ impl Graph {
     }
 
     /// Terms of a sum, sorted by rest, each rest once; `None` where there are too many.
-    pub(super) fn collect_terms(
-        &mut self,
-        parts: &[(Coefficient, NodeId)],
-    ) -> Option<BTreeMap<NodeId, Coefficient>> {
+    pub(super) fn collect_terms(&mut self, parts: &[(Coefficient, NodeId)]) -> Option<BTreeMap<NodeId, Coefficient>> {
         let mut terms: BTreeMap<NodeId, Coefficient> = BTreeMap::new();
         let mut open = parts.to_vec();
         for _ in 0..4 * LONGEST {
@@ -473,10 +418,7 @@ impl Graph {
                 open.push((coefficient, rest));
                 continue;
             }
-            terms
-                .entry(rest)
-                .and_modify(|sum| *sum = sum.plus(coefficient))
-                .or_insert(coefficient);
+            terms.entry(rest).and_modify(|sum| *sum = sum.plus(coefficient)).or_insert(coefficient);
         }
         None
     }
@@ -485,16 +427,8 @@ impl Graph {
         let Some(terms) = self.collect_terms(parts) else {
             // Too long to sort: a plain chain.
             return parts.iter().fold(ZERO, |sum, (c, id)| {
-                let term = if c.n.value < 0.0 {
-                    self.intern(Node::Negate(*id), 0.0)
-                } else {
-                    *id
-                };
-                if sum == ZERO {
-                    term
-                } else {
-                    self.intern(Node::Add(sum.min(term), sum.max(term)), 0.0)
-                }
+                let term = if c.n.value < 0.0 { self.intern(Node::Negate(*id), 0.0) } else { *id };
+                if sum == ZERO { term } else { self.intern(Node::Add(sum.min(term), sum.max(term)), 0.0) }
             });
         };
         let mut sum = None;
@@ -535,11 +469,8 @@ impl Graph {
         let ratio = left.first()?.0 / right.first()?.0;
         // Coefficients are products of a few rounded numbers, multiplied in any order.
         let close = |p: f64, q: f64| (p - q).abs() <= 16.0 * f64::EPSILON * p.abs().max(q.abs());
-        let same = left.len() == right.len()
-            && left
-                .iter()
-                .zip(&right)
-                .all(|(l, r)| l.1 == r.1 && close(l.0, ratio * r.0));
+        let same =
+            left.len() == right.len() && left.iter().zip(&right).all(|(l, r)| l.1 == r.1 && close(l.0, ratio * r.0));
         (same && ratio.is_finite()).then_some(ratio)
     }
 }

@@ -23,16 +23,10 @@ impl Graph {
         for part in self.reach_where(&[id], |id| open(self, id)) {
             let slope = match (self.node(part), variable) {
                 (Node::Coordinate, Variable::Coordinate) => ONE,
-                (Node::Jet { unknown, order }, variable)
-                    if variable == (Variable::Jet { unknown, order }) =>
-                {
-                    ONE
-                }
+                (Node::Jet { unknown, order }, variable) if variable == (Variable::Jet { unknown, order }) => ONE,
                 (Node::Constant(a), Variable::Constant(b)) if a == b => ONE,
                 (Node::Slot(a), Variable::Slot(b)) if a == b => ONE,
-                (node, _) => self.chain_rule(node, |g, a| {
-                    g.partials.get(&(a, variable)).copied().unwrap_or(ZERO)
-                }),
+                (node, _) => self.chain_rule(node, |g, a| g.partials.get(&(a, variable)).copied().unwrap_or(ZERO)),
             };
             self.partials.insert((part, variable), slope);
         }
@@ -42,9 +36,7 @@ impl Graph {
     /// Total derivative along the span: u^(k) goes over into u^(k+1), constants and slots into 0; a
     /// [`Node::Derivative`] into the derivative of itself.
     pub fn total(&mut self, id: NodeId) -> NodeId {
-        let parts = self.reach_where(&[id], |id| {
-            self.depends_on(id).varies() && !self.totals.contains_key(&id)
-        });
+        let parts = self.reach_where(&[id], |id| self.depends_on(id).varies() && !self.totals.contains_key(&id));
         for part in parts {
             let slope = match self.node(part) {
                 Node::Coordinate => ONE,
@@ -60,11 +52,7 @@ impl Graph {
     /// Derivative of a node by those of its operands.
     fn chain_rule(&mut self, node: Node, slope: impl Fn(&Self, NodeId) -> NodeId) -> NodeId {
         match node {
-            Node::Number(_)
-            | Node::Coordinate
-            | Node::Jet { .. }
-            | Node::Constant(_)
-            | Node::Slot(_) => ZERO,
+            Node::Number(_) | Node::Coordinate | Node::Jet { .. } | Node::Constant(_) | Node::Slot(_) => ZERO,
             // Expanded, or handled by the caller.
             Node::Derivative(_) => NOT_A_NUMBER,
             Node::Negate(a) => {
@@ -101,12 +89,7 @@ impl Graph {
                 let (da, db) = (slope(self, a), slope(self, b));
                 self.binary_slope(f, [a, b], [da, db])
             }
-            Node::Choose {
-                gap,
-                strict,
-                then,
-                otherwise,
-            } => {
+            Node::Choose { gap, strict, then, otherwise } => {
                 let (then, otherwise) = (slope(self, then), slope(self, otherwise));
                 self.choose(gap, strict, then, otherwise)
             }
@@ -174,11 +157,7 @@ impl Graph {
                 let under = one_minus_square(self, a);
                 let under = self.unary(Unary::Sqrt, under);
                 let slope = self.divide(da, under);
-                if f == Unary::Asin {
-                    slope
-                } else {
-                    self.negate(slope)
-                }
+                if f == Unary::Asin { slope } else { self.negate(slope) }
             }
             Unary::Atan => {
                 let under = one_plus_square(self, a);
@@ -205,10 +184,7 @@ impl Graph {
             }
             Unary::Acosh => {
                 let (minus, plus) = (self.subtract(a, ONE), self.add(a, ONE));
-                let (minus, plus) = (
-                    self.unary(Unary::Sqrt, minus),
-                    self.unary(Unary::Sqrt, plus),
-                );
+                let (minus, plus) = (self.unary(Unary::Sqrt, minus), self.unary(Unary::Sqrt, plus));
                 let under = self.multiply(minus, plus);
                 self.divide(da, under)
             }
@@ -302,11 +278,9 @@ impl Graph {
     fn rebuild(&mut self, node: Node, made: &HashMap<NodeId, NodeId>) -> NodeId {
         let new = |a: NodeId| made.get(&a).copied().unwrap_or(a);
         match node {
-            Node::Number(_)
-            | Node::Coordinate
-            | Node::Jet { .. }
-            | Node::Constant(_)
-            | Node::Slot(_) => self.intern(node, 0.0),
+            Node::Number(_) | Node::Coordinate | Node::Jet { .. } | Node::Constant(_) | Node::Slot(_) => {
+                self.intern(node, 0.0)
+            }
             Node::Derivative(a) => self.derivative(new(a)),
             Node::Negate(a) => self.negate(new(a)),
             Node::Add(a, b) => self.add(new(a), new(b)),
@@ -315,12 +289,7 @@ impl Graph {
             Node::Power(a, b) => self.power(new(a), new(b)),
             Node::Unary(f, a) => self.unary(f, new(a)),
             Node::Binary(f, a, b) => self.binary(f, new(a), new(b)),
-            Node::Choose {
-                gap,
-                strict,
-                then,
-                otherwise,
-            } => self.choose(new(gap), strict, new(then), new(otherwise)),
+            Node::Choose { gap, strict, then, otherwise } => self.choose(new(gap), strict, new(then), new(otherwise)),
         }
     }
 
@@ -332,9 +301,7 @@ impl Graph {
             return false;
         }
         let jets = self.jets_of(id).into_iter();
-        let mut variables: Vec<Variable> = jets
-            .map(|(unknown, order)| Variable::Jet { unknown, order })
-            .collect();
+        let mut variables: Vec<Variable> = jets.map(|(unknown, order)| Variable::Jet { unknown, order }).collect();
         variables.extend(self.constants_of(id).into_iter().map(Variable::Constant));
         variables.extend(self.slots_of(id).into_iter().map(Variable::Slot));
         variables.into_iter().all(|v| {

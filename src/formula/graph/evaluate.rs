@@ -24,13 +24,7 @@ pub struct Inputs<'a, T = f64> {
 impl<T: Number> Inputs<'_, T> {
     /// For data: no unknowns, no pieces.
     pub fn at(x: T) -> Self {
-        Self {
-            x,
-            middle: x.value(),
-            jets: &|_, _| T::number(f64::NAN, f64::INFINITY),
-            constants: &[],
-            slots: &[],
-        }
+        Self { x, middle: x.value(), jets: &|_, _| T::number(f64::NAN, f64::INFINITY), constants: &[], slots: &[] }
     }
 }
 
@@ -45,11 +39,7 @@ impl Graph {
                 Node::Number(value) => T::number(value, self.facts(part).error),
                 Node::Coordinate => inputs.x,
                 Node::Jet { unknown, order } => (inputs.jets)(unknown, order),
-                Node::Constant(c) => inputs
-                    .constants
-                    .get(usize::from(c))
-                    .copied()
-                    .unwrap_or(missing),
+                Node::Constant(c) => inputs.constants.get(usize::from(c)).copied().unwrap_or(missing),
                 Node::Slot(s) => inputs.slots.get(s as usize).copied().unwrap_or(missing),
                 Node::Derivative(_) => missing,
                 Node::Negate(a) => of(a).negate(),
@@ -59,12 +49,7 @@ impl Graph {
                 Node::Power(a, b) => of(a).power(of(b)),
                 Node::Unary(f, a) => of(a).unary(f),
                 Node::Binary(f, a, b) => of(a).binary(f, of(b)),
-                node @ Node::Choose {
-                    gap,
-                    strict,
-                    then,
-                    otherwise,
-                } => {
+                node @ Node::Choose { gap, strict, then, otherwise } => {
                     let at_middle = inputs.middle != inputs.x.value();
                     let gap = if at_middle && self.piece_test(node).is_some() {
                         let here = Inputs::at(inputs.middle);

@@ -236,12 +236,9 @@ impl Key {
             Node::Power(a, b) => Self(10, pair(a, b), 0),
             Node::Unary(f, a) => Self(11, f as u64, a.0.into()),
             Node::Binary(f, a, b) => Self(12, f as u64, pair(a, b)),
-            Node::Choose {
-                gap,
-                strict,
-                then,
-                otherwise,
-            } => Self(13 + u32::from(strict), gap.0.into(), pair(then, otherwise)),
+            Node::Choose { gap, strict, then, otherwise } => {
+                Self(13 + u32::from(strict), gap.0.into(), pair(then, otherwise))
+            }
         }
     }
 }
@@ -250,23 +247,12 @@ impl Node {
     /// The nodes that a node is made of, left to right.
     pub fn operands(self) -> impl Iterator<Item = NodeId> {
         let list = match self {
-            Self::Number(_)
-            | Self::Coordinate
-            | Self::Jet { .. }
-            | Self::Constant(_)
-            | Self::Slot(_) => [None; 3],
+            Self::Number(_) | Self::Coordinate | Self::Jet { .. } | Self::Constant(_) | Self::Slot(_) => [None; 3],
             Self::Derivative(a) | Self::Negate(a) | Self::Unary(_, a) => [Some(a), None, None],
-            Self::Add(a, b)
-            | Self::Multiply(a, b)
-            | Self::Divide(a, b)
-            | Self::Power(a, b)
-            | Self::Binary(_, a, b) => [Some(a), Some(b), None],
-            Self::Choose {
-                gap,
-                then,
-                otherwise,
-                ..
-            } => [Some(gap), Some(then), Some(otherwise)],
+            Self::Add(a, b) | Self::Multiply(a, b) | Self::Divide(a, b) | Self::Power(a, b) | Self::Binary(_, a, b) => {
+                [Some(a), Some(b), None]
+            }
+            Self::Choose { gap, then, otherwise, .. } => [Some(gap), Some(then), Some(otherwise)],
         };
         list.into_iter().flatten()
     }
@@ -328,10 +314,7 @@ impl Graph {
     /// arithmetic with which it was folded from others.
     pub fn rounded(&self, id: NodeId) -> Option<Rounded> {
         match self.node(id) {
-            Node::Number(value) => Some(Rounded {
-                value,
-                error: self.facts(id).error,
-            }),
+            Node::Number(value) => Some(Rounded { value, error: self.facts(id).error }),
             _ => None,
         }
     }
@@ -454,12 +437,8 @@ impl Graph {
     }
 
     fn facts_of(&self, node: Node, error: f64) -> Facts {
-        let mut facts = Facts {
-            dependence: Dependence::default(),
-            kink: false,
-            open: matches!(node, Node::Derivative(_)),
-            error,
-        };
+        let mut facts =
+            Facts { dependence: Dependence::default(), kink: false, open: matches!(node, Node::Derivative(_)), error };
         for id in node.operands() {
             let part = self.facts(id);
             facts.dependence = facts.dependence.or(part.dependence);

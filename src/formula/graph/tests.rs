@@ -51,10 +51,7 @@ fn dual(t: &Tree, leaves: &[Dual64; LEAVES]) -> Dual64 {
                 Unary::Tanh => chain(a.re.tanh(), a.re.cosh().powi(-2)),
                 Unary::Asinh => a.asinh(),
                 // That of the crate overflows for large a.
-                Unary::Acosh => chain(
-                    a.re.acosh(),
-                    1.0 / ((a.re - 1.0).sqrt() * (a.re + 1.0).sqrt()),
-                ),
+                Unary::Acosh => chain(a.re.acosh(), 1.0 / ((a.re - 1.0).sqrt() * (a.re + 1.0).sqrt())),
                 Unary::Atanh => a.atanh(),
                 Unary::Abs => chain(a.re.abs(), a.re.signum()),
                 Unary::Sign if a.re == 0.0 => 0.0.into(),
@@ -77,11 +74,7 @@ fn dual(t: &Tree, leaves: &[Dual64; LEAVES]) -> Dual64 {
         }
         Tree::If(strict, parts) => {
             let [l, r, a, b] = parts.each_ref().map(|p| dual(p, leaves));
-            if crate::formula::number::holds(l.re - r.re, *strict) {
-                a
-            } else {
-                b
-            }
+            if crate::formula::number::holds(l.re - r.re, *strict) { a } else { b }
         }
     }
 }
@@ -110,10 +103,7 @@ fn check(runs: u32, test: impl Fn(Tree, [f64; LEAVES]) -> Result<bool, TestCaseE
             Ok(())
         })
         .unwrap_or_else(|e| panic!("{e}"));
-    assert!(
-        3 * compared.get() > total.get(),
-        "{compared:?} of {total:?}"
-    );
+    assert!(3 * compared.get() > total.get(), "{compared:?} of {total:?}");
 }
 
 /// The form into which sums and products are brought has the same value, within the bounds that both ways of
@@ -131,10 +121,7 @@ fn canonical_form_keeps_the_value() {
             return Ok(false);
         }
         let bound = 1.01 * (graph.error + plain.error);
-        prop_assert!(
-            (graph.value - plain.value).abs() <= bound,
-            "{graph:?} {plain:?}"
-        );
+        prop_assert!((graph.value - plain.value).abs() <= bound, "{graph:?} {plain:?}");
         Ok(true)
     });
 }
@@ -148,10 +135,7 @@ fn same_slope(value: f64, ours: Rounded, theirs: Dual64) -> Result<bool, TestCas
     }
     // The dual numbers round too, where u/u is 1 for us.
     let bound = 1e3 * ours.error + 1e-11 * theirs.eps.abs() + 1e-10 * value.abs() + 1e-13;
-    prop_assert!(
-        (ours.value - theirs.eps).abs() <= bound,
-        "{ours:?} {theirs:?}"
-    );
+    prop_assert!((ours.value - theirs.eps).abs() <= bound, "{ours:?} {theirs:?}");
     Ok(true)
 }
 

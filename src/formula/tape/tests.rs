@@ -5,13 +5,7 @@ use crate::formula::random::{LEAVES, build, cases, point, trees};
 use proptest::prelude::*;
 
 fn inputs<'a, T: Number>(p: &'a [T; LEAVES], jets: &'a dyn Fn(u16, u8) -> T) -> Inputs<'a, T> {
-    Inputs {
-        x: p[0],
-        middle: p[0].value(),
-        jets,
-        constants: &p[3..4],
-        slots: &p[4..5],
-    }
+    Inputs { x: p[0], middle: p[0].value(), jets, constants: &p[3..4], slots: &p[4..5] }
 }
 
 proptest! {
@@ -77,13 +71,7 @@ fn piece_tests_are_decided_by_the_piece() {
     // The same coordinate, the break itself, belongs to the piece on either side.
     for (middle, expected) in [(1.3, 10.0), (2.9, 20.0)] {
         let tests = g.decide(tape.tests(), middle);
-        let run = TapeInputs {
-            x: &[2.6, 2.6],
-            jets: &[],
-            constants: &[],
-            slots: &[],
-            tests: &tests,
-        };
+        let run = TapeInputs { x: &[2.6, 2.6], jets: &[], constants: &[], slots: &[], tests: &tests };
         let mut out = [0.0; 2];
         tape.run(&mut Workspace::default(), &run, &mut out);
         assert_eq!(out, [expected; 2]);
