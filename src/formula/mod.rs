@@ -10,7 +10,7 @@ pub mod graph;
 pub mod number;
 /// Random formulas for tests.
 #[cfg(test)]
-mod random;
+pub(crate) mod random;
 /// Text to syntax tree, with places.
 pub mod syntax;
 /// Instruction lists: evaluation over many nodes at once.

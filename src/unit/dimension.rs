@@ -312,6 +312,11 @@ const USUAL: &[([i8; 7], &str, &str)] = &[
     ([1, 2, -2, -1, 0, 0, 0], "Wb", "magnetic flux"),
 ];
 
+#[cfg(test)]
+pub(super) fn usual_units() -> impl Iterator<Item = (&'static str, Dimension)> {
+    USUAL.iter().map(|(n, unit, _)| (*unit, Dimension::whole(*n)))
+}
+
 /// Base units, `kg m/s^2`; `1` for a pure number.
 impl fmt::Display for Dimension {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {

@@ -264,7 +264,8 @@ impl<'a> Reader<'a> {
             return Ok(Parts { text: symbol.into(), scale: Scale::ONE, shift: NO_OFFSET, dimension: Dimension::NONE });
         }
         let Some((unit, power)) = lookup(symbol) else {
-            let hint = suggest(symbol);
+            // Behind a number this is no fault yet.
+            let hint = self.whole.then(|| suggest(symbol)).flatten();
             return Err(no_unit(span, format!("`{symbol}` is not a unit"), hint));
         };
         self.at = span.end;
@@ -353,10 +354,12 @@ impl<'a> Reader<'a> {
             None => "a unit is missing at the end".into(),
         };
         let hint = match found {
+            Some('*') if self.text[..self.at].ends_with('*') => Some("a power is written with ^".into()),
             Some('*') => Some("join units by a blank: kN m".into()),
             Some('²') => Some("write ^2".into()),
             Some('³') => Some("write ^3".into()),
             Some('⁻') => Some("write ^-1".into()),
+            Some(c @ ('℃' | '℉')) => suggest(c.encode_utf8(&mut [0; 4])),
             Some('°') => Some("write deg for an angle, degC for a temperature".into()),
             Some('0'..='9') => Some("a power is written with ^: m^2".into()),
             _ => None,

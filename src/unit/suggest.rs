@@ -18,7 +18,7 @@ const WORDS: &[(&str, &str)] = &[
     ("radian", "rad"), ("radians", "rad"), ("degree", "deg"), ("degrees", "deg"), ("°", "deg"), ("turn", "rev"),
     ("percent", "%"), ("pct", "%"), ("mole", "mol"), ("moles", "mol"), ("BTU", "Btu"), ("btu", "Btu"),
     ("kph", "km/h"), ("kmh", "km/h"), ("mps", "m/s"), ("gpm", "L/min"), ("sqm", "m^2"), ("cycles", "rev"),
-    ("Ohm", "ohm"), ("ohms", "ohm"), ("bars", "bar"),
+    ("Nm", "N m"), ("Ns", "N s"), ("As", "A s"), ("Ah", "A h"), ("Ws", "W s"), ("Vs", "V s"), ("Ohm", "ohm"), ("ohms", "ohm"), ("bars", "bar"),
 ];
 
 /// Units outside the table, and what they are in units of the table.

@@ -20,9 +20,9 @@ pub(super) struct Parser<'a> {
     nesting: usize,
 }
 
-/// An expression and how deep its tree is.
+/// An expression and how deep its tree is. Boxed at once: expressions by value would fill the stack of a deep parse.
 struct Tree {
-    expression: Expression,
+    expression: Box<Expression>,
     depth: usize,
 }
 
@@ -34,7 +34,7 @@ impl<'a> Parser<'a> {
     pub(super) fn formula(mut self) -> Result<Expression, SyntaxError> {
         let tree = self.expression(0).map_err(|e| *e)?;
         match self.peek() {
-            Token::End => Ok(tree.expression),
+            Token::End => Ok(*tree.expression),
             Token::Equals => {
                 Err(SyntaxError::new(self.span(), "an equation cannot stand here, only an expression", None))
             }
@@ -55,7 +55,7 @@ impl<'a> Parser<'a> {
         }
         let right = self.expression(0).map_err(|e| *e)?;
         match self.peek() {
-            Token::End => Ok((left.expression, right.expression)),
+            Token::End => Ok((*left.expression, *right.expression)),
             Token::Equals => {
                 Err(SyntaxError::new(self.span(), "a second = in one equation", Some("write two equations")))
             }
@@ -110,7 +110,7 @@ impl<'a> Parser<'a> {
                 Some("give a part of the formula a name of its own"),
             ));
         }
-        let expression = Expression { kind, span };
+        let expression = Box::new(Expression { kind, span });
         Ok(Tree { expression, depth })
     }
 
@@ -139,8 +139,8 @@ impl<'a> Parser<'a> {
             };
             let span = left.expression.span.start..right.expression.span.end;
             let depth = left.depth.max(right.depth);
-            let (a, b) = (Box::new(left.expression), Box::new(right.expression));
-            left = self.tree(Kind::Binary(operator, a, b), span, depth)?;
+            let kind = Kind::Binary(operator, left.expression, right.expression);
+            left = self.tree(kind, span, depth)?;
         }
     }
 
@@ -180,7 +180,7 @@ impl<'a> Parser<'a> {
                 return Ok(inner);
             }
             let depth = inner.depth;
-            return self.tree(Kind::Negate(Box::new(inner.expression)), span, depth);
+            return self.tree(Kind::Negate(inner.expression), span, depth);
         }
         let base = self.primary()?;
         self.primes(base)
@@ -213,7 +213,7 @@ impl<'a> Parser<'a> {
             return Err(error(start.start..end, "too many derivatives", None));
         }
         let span = base.expression.span.start..end;
-        let kind = Kind::Prime(Box::new(base.expression), primes);
+        let kind = Kind::Prime(base.expression, primes);
         self.tree(kind, span, base.depth)
     }
 
@@ -269,7 +269,7 @@ impl<'a> Parser<'a> {
                     _ => None,
                 };
                 self.at += usize::from(side.is_some());
-                arguments.push(Argument { value: tree.expression, side });
+                arguments.push(Argument { value: *tree.expression, side });
                 if *self.peek() != Token::Comma {
                     break;
                 }
@@ -302,7 +302,7 @@ impl<'a> Parser<'a> {
             self.at += 1;
             let tree = self.nested(open.clone(), |p| p.expression(0))?;
             depth = depth.max(tree.depth);
-            branches.push(Box::new(tree.expression));
+            branches.push(tree.expression);
         }
         if *self.peek() == Token::Comma {
             return Err(error(
@@ -361,7 +361,7 @@ impl<'a> Parser<'a> {
             self.at += 1;
             let right = self.expression(0)?;
             let depth = left.depth.max(right.depth) + 1;
-            let link = Test::Compare(Box::new(left.expression), sign, Box::new(right.expression.clone()));
+            let link = Test::Compare(left.expression, sign, right.expression.clone());
             test = Some(match test {
                 None => (link, depth),
                 Some((before, d)) => (Test::And(Box::new(before), Box::new(link)), d.max(depth) + 1),
@@ -406,9 +406,25 @@ impl<'a> Parser<'a> {
         if *self.peek() == Token::Close { Ok(self.advance()) } else { Err(self.unclosed(open)) }
     }
 
+    /// Whether a `)` without partner follows.
+    fn closes_later(&self) -> bool {
+        let mut depth = 0usize;
+        for (token, _) in &self.tokens[self.at..] {
+            match token {
+                Token::Open => depth += 1,
+                Token::Close if depth == 0 => return true,
+                Token::Close => depth -= 1,
+                _ => {}
+            }
+        }
+        false
+    }
+
     /// What is wrong where a `)` was expected.
     fn unclosed(&self, open: &Span) -> Box<SyntaxError> {
         match self.peek() {
+            // In an equation only what stands before the sign can tell: f(a = b) or (a = b.
+            Token::Equals if self.closes_later() => self.unexpected(),
             Token::End | Token::Equals => error(open.clone(), "this parenthesis is not closed", Some("a ) is missing")),
             _ => self.unexpected(),
         }
