@@ -308,14 +308,17 @@ impl Number for Rounded {
 
     fn choose(self, strict: bool, then: Self, otherwise: Self) -> Self {
         let (taken, left) = if holds(self.value, strict) { (then, otherwise) } else { (otherwise, then) };
-        if self.value.abs() > self.error || self.error == 0.0 {
-            return taken;
-        }
         if self.value.is_nan() {
             // What is not a number decides nothing.
             return Self::new(taken.value, f64::INFINITY);
+        }
+        if self.value.abs() > self.error || self.error == 0.0 {
+            return taken;
         }
         let apart = (taken.value - left.value).abs() + left.error;
         Self::new(taken.value, taken.error.max(apart))
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -6,6 +6,8 @@ fn unit(text: &str) -> Unit {
 }
 
 /// NIST Special Publication 811 (2008), appendix B.8 and B.9: factors to seven digits, as printed there.
+// Digits as printed, though some of them are those of pi.
+#[allow(clippy::approx_constant)]
 #[test]
 fn factors_agree_with_the_printed_table() {
     #[rustfmt::skip]

@@ -10,7 +10,7 @@ use crate::formula::number::{Number, Rounded, holds};
 use std::collections::BTreeMap;
 
 /// Longest sum or product that is flattened; a longer one stays as it is, which costs only recognition.
-const LONGEST: usize = 1000;
+const LONGEST: usize = 500;
 
 /// Largest exponent that counts as a repetition of its base.
 const MOST_REPEATED: f64 = 1000.0;
@@ -347,7 +347,7 @@ impl Graph {
     /// Adds the factors of a product; false where there are too many.
     fn collect(&self, id: NodeId, sign: i32, factors: &mut Factors) -> bool {
         let mut open = vec![(id, sign)];
-        for _ in 0..4 * LONGEST {
+        for _ in 0..2 * LONGEST {
             let Some((id, sign)) = open.pop() else {
                 factors.retain(|_, k| *k != 0);
                 return factors.len() <= LONGEST;
@@ -402,7 +402,7 @@ impl Graph {
     pub(super) fn collect_terms(&mut self, parts: &[(Coefficient, NodeId)]) -> Option<BTreeMap<NodeId, Coefficient>> {
         let mut terms: BTreeMap<NodeId, Coefficient> = BTreeMap::new();
         let mut open = parts.to_vec();
-        for _ in 0..4 * LONGEST {
+        for _ in 0..2 * LONGEST {
             let Some((c, id)) = open.pop() else {
                 terms.retain(|_, c| c.n.value != 0.0);
                 return (terms.len() <= LONGEST).then_some(terms);
@@ -442,13 +442,26 @@ impl Graph {
         sum.unwrap_or(ZERO)
     }
 
-    /// The terms of a sum, as coefficient and rest; of a number the rest is the node 1.
-    /// Together: the sum of coefficient times rest.
+    /// The terms of a sum, as coefficient and rest; of a number the rest is the node 1. A number in front of a sum is
+    /// multiplied out. Together: the sum of coefficient times rest.
     pub fn terms(&mut self, id: NodeId) -> Vec<(f64, NodeId)> {
-        match self.collect_terms(&[(Coefficient::ONE, id)]) {
-            Some(terms) => terms.into_iter().map(|(r, c)| (c.value(), r)).collect(),
-            None => vec![(1.0, id)],
+        let mut terms: BTreeMap<NodeId, f64> = BTreeMap::new();
+        let mut open = vec![(1.0, id)];
+        while let Some((factor, id)) = open.pop() {
+            if let Node::Add(a, b) = self.node(id) {
+                open.extend([(factor, a), (factor, b)]);
+                continue;
+            }
+            let (c, rest) = self.term(id);
+            let c = factor * c.value();
+            if matches!(self.node(rest), Node::Add(..)) {
+                open.push((c, rest));
+            } else {
+                *terms.entry(rest).or_insert(0.0) += c;
+            }
         }
+        terms.retain(|_, c| *c != 0.0);
+        terms.into_iter().map(|(rest, c)| (c, rest)).collect()
     }
 
     /// The coefficient and the factors of a product with their exponents, divisors with negative ones.

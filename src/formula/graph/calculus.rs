@@ -274,6 +274,25 @@ impl Graph {
         made.get(&id).copied().unwrap_or(id)
     }
 
+    /// The expression as it is in one piece, `middle` being a coordinate inside: every choice on data is replaced by
+    /// the branch taken there ([`Graph::piece_tests`]), so that data by pieces become plain numbers.
+    pub fn in_piece(&mut self, id: NodeId, middle: f64) -> NodeId {
+        let mut made: HashMap<NodeId, NodeId> = HashMap::new();
+        for part in self.reach(&[id]) {
+            let node = self.node(part);
+            let new = match (self.piece_test(node), node) {
+                (Some(test), Node::Choose { then, otherwise, .. }) => {
+                    let taken = if self.decide(&[test], middle)[0] { then } else { otherwise };
+                    made.get(&taken).copied().unwrap_or(taken)
+                }
+                _ if node.operands().all(|a| made.get(&a) == Some(&a)) => part,
+                _ => self.rebuild(node, &made),
+            };
+            made.insert(part, new);
+        }
+        made.get(&id).copied().unwrap_or(id)
+    }
+
     /// A node over new operands; operands without a new form stay.
     fn rebuild(&mut self, node: Node, made: &HashMap<NodeId, NodeId>) -> NodeId {
         let new = |a: NodeId| made.get(&a).copied().unwrap_or(a);

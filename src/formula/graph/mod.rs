@@ -176,7 +176,7 @@ pub struct PieceTest {
 }
 
 /// Most nodes of a graph: beyond it every new node is not a number, and [`Graph::is_full`] says so.
-pub const MOST_NODES: usize = 2_000_000;
+pub const MOST_NODES: usize = 1_000_000;
 
 /// What is known of a node besides its operands.
 #[derive(Debug, Clone, Copy)]
@@ -212,6 +212,7 @@ pub struct Graph {
     index: HashMap<Key, NodeId>,
     partials: HashMap<(NodeId, Variable), NodeId>,
     totals: HashMap<NodeId, NodeId>,
+    limit: usize,
     full: bool,
 }
 
@@ -270,6 +271,7 @@ impl Default for Graph {
             index: HashMap::new(),
             partials: HashMap::new(),
             totals: HashMap::new(),
+            limit: MOST_NODES,
             full: false,
         };
         for (value, id) in [(0.0, ZERO), (1.0, ONE), (f64::NAN, NOT_A_NUMBER)] {
@@ -424,7 +426,7 @@ impl Graph {
         if let Some(id) = self.index.get(&key) {
             return *id;
         }
-        if self.nodes.len() >= MOST_NODES {
+        if self.nodes.len() >= self.limit {
             self.full = true;
             return NOT_A_NUMBER;
         }

@@ -357,11 +357,11 @@ fn kinds() -> impl Strategy<Value = Kind> {
                 inner.clone()
             )
                 .prop_map(|(o, a, b)| Kind::Binary(o, boxed(a), boxed(b))),
-            (inner.clone(), 1..4usize)
-                .prop_filter("a number has no derivative, and primes add up", |(a, _)| {
-                    !matches!(a, Kind::Number { .. } | Kind::Prime(..))
-                })
-                .prop_map(|(a, n)| Kind::Prime(boxed(a), n)),
+            (inner.clone(), 1..4usize).prop_map(|(a, n)| match a {
+                // A number has no derivative, and primes add up.
+                Kind::Number { .. } | Kind::Prime(..) => a,
+                a => Kind::Prime(boxed(a), n),
+            }),
             ("[fghV]", 0..3usize, prop::collection::vec(argument, 0..3))
                 .prop_map(|(name, primes, arguments)| { Kind::Call { name, name_span: 0..0, primes, arguments } }),
             (tests, inner.clone(), inner).prop_map(|(t, a, b)| Kind::If(Box::new(t), boxed(a), boxed(b))),
