@@ -1,5 +1,6 @@
 use super::*;
 use proptest::prelude::*;
+use proptest::test_runner::RngSeed;
 
 fn unit(text: &str) -> Unit {
     Unit::parse(text, true).unwrap_or_else(|e| panic!("{text}: {e:?}"))
@@ -210,7 +211,7 @@ fn nesting_is_bounded() {
 }
 
 proptest! {
-    #![proptest_config(crate::formula::random::cases(5000))]
+    #![proptest_config(ProptestConfig { cases: 5000, rng_seed: RngSeed::Fixed(2_385), failure_persistence: None, ..ProptestConfig::default() })]
 
     #[test]
     fn no_text_panics(text in "\\PC{0,20}", star: bool) {
