@@ -158,7 +158,7 @@ impl Rounded {
     pub fn from_decimal(value: f64) -> Self {
         let scaled = value * f64::from(1 << 20);
         let exact = value == 0.0 || (scaled.fract() == 0.0 && scaled.abs() < 1e15);
-        Self { value, error: if exact { 0.0 } else { value.abs() * HALF_ULP } }
+        Self::new(value, if exact { 0.0 } else { value.abs() * HALF_ULP })
     }
 
     /// Exactly this value.

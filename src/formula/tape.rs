@@ -143,7 +143,7 @@ impl Tape {
         &self.slots
     }
 
-    /// Tests to be decided per piece.
+    /// Tests to be decided per piece: [`Graph::piece_tests`] of the outputs.
     pub fn tests(&self) -> &[PieceTest] {
         &self.tests
     }
@@ -357,6 +357,7 @@ impl<'a> Compiler<'a> {
     }
 
     fn compile(mut self, outputs: &[NodeId]) -> Tape {
+        self.tape.tests = self.graph.piece_tests(outputs);
         let nodes = self.needed(outputs);
         self.inputs(&nodes);
         let steps: Vec<(NodeId, Operation, Vec<NodeId>)> =
@@ -411,7 +412,7 @@ impl<'a> Compiler<'a> {
     }
 
     /// Everything that must be read or computed, operands first.
-    fn needed(&mut self, outputs: &[NodeId]) -> Vec<NodeId> {
+    fn needed(&self, outputs: &[NodeId]) -> Vec<NodeId> {
         let mut open: BTreeSet<NodeId> = outputs.iter().copied().collect();
         let mut found = Vec::new();
         while let Some(id) = open.pop_last() {
@@ -461,7 +462,7 @@ impl<'a> Compiler<'a> {
         }
     }
 
-    fn lower(&mut self, id: NodeId) -> Lowered {
+    fn lower(&self, id: NodeId) -> Lowered {
         let node = self.graph.node(id);
         let negated = |id| match self.graph.node(id) {
             Node::Negate(a) => Some(a),
@@ -490,11 +491,8 @@ impl<'a> Compiler<'a> {
             Node::Binary(f, a, b) => (Operation::Binary(f), vec![a, b]),
             Node::Choose { gap, strict, then, otherwise } => match self.graph.piece_test(node) {
                 Some(test) => {
-                    let known = self.tape.tests.iter().position(|t| *t == test);
-                    let k = known.unwrap_or_else(|| {
-                        self.tape.tests.push(test);
-                        self.tape.tests.len() - 1
-                    });
+                    // All piece tests have been collected before.
+                    let k = self.tape.tests.binary_search(&test).unwrap_or_default();
                     (Operation::Piece(k), vec![then, otherwise])
                 }
                 None => (Operation::Choose(strict), vec![gap, then, otherwise]),

@@ -13,7 +13,7 @@ mod table;
 
 pub use dimension::{Dimension, Exponent, ExponentRange};
 pub use read::{UnitError, scan};
-pub use suggest::suggest;
+pub use suggest::{mistaken, suggest};
 
 use scale::Scale;
 

@@ -44,6 +44,8 @@ pub fn scan(text: &str) -> Result<Option<(Unit, usize)>, UnitError> {
         return Ok(None);
     }
     match reader.product(0) {
+        // Of `1/x` no more than the 1 was a unit: then it is a number of the formula.
+        Ok(parts) if parts.text == "1" => Ok(None),
         Ok(parts) => Ok(Some((parts.unit(), reader.at))),
         Err(Stop::NoUnit(_)) => Ok(None),
         Err(Stop::Fault(error)) => Err(*error),

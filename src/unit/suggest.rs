@@ -1,6 +1,7 @@
 //! What was probably meant by a symbol that is no unit.
 
 use super::table::{PREFIXES, UNITS, lookup};
+use super::{Dimension, Unit};
 
 /// Words and foreign symbols people write for units.
 #[rustfmt::skip]
@@ -74,6 +75,19 @@ pub fn suggest(symbol: &str) -> Option<String> {
     let meant =
         word(symbol).or_else(|| with_exponent(symbol)).or_else(|| other_case(symbol)).or_else(|| joined(symbol, 3))?;
     Some(format!("did you mean {meant}?"))
+}
+
+/// What was probably meant by a unit that is right in itself but of a dimension not wanted: `C` for a temperature.
+pub fn mistaken(unit: &Unit, wanted: Dimension) -> Option<String> {
+    let table = [
+        ("C", Dimension::TEMPERATURE, "coulomb", "degree Celsius is degC"),
+        ("F", Dimension::TEMPERATURE, "farad", "degree Fahrenheit is degF"),
+        ("S", Dimension::TIME, "siemens", "second is s"),
+        ("H", Dimension::TIME, "henry", "hour is h"),
+        ("T", Dimension::MASS, "tesla", "tonne is t"),
+    ];
+    let (symbol, _, name, meant) = table.iter().find(|(s, d, ..)| *s == unit.text && *d == wanted)?;
+    Some(format!("{symbol} is the {name}; the {meant}"))
 }
 
 fn word(symbol: &str) -> Option<String> {

@@ -177,7 +177,7 @@ fn a_literal_reaches_as_far_as_it_can() {
         assert_eq!(unit.text, expected, "{text}");
         assert!(text.is_char_boundary(used) && !text[used..].starts_with(char::is_alphanumeric) || text == "m^2x");
     }
-    for text in ["x", "width*2", "and x", "1", "1 m", "2 m", "", "kn", "/m", "^2"] {
+    for text in ["x", "width*2", "and x", "1", "1 m", "1/x", "1/2", "2 m", "", "kn", "/m", "^2"] {
         assert_eq!(scan(text), Ok(None), "{text}");
     }
     for text in ["W/(m degC)", "degC/m", "deg C", "m^99999"] {
@@ -199,6 +199,15 @@ fn coherent_units_by_dimension() {
         assert_eq!(unit(usual).dimension, dimension, "{usual}");
         assert_eq!(unit(usual).factor, 1.0, "{usual}");
     }
+}
+
+#[test]
+fn capitals_that_name_another_unit() {
+    let wanted = Dimension::TEMPERATURE;
+    assert_eq!(mistaken(&unit("C"), wanted).as_deref(), Some("C is the coulomb; the degree Celsius is degC"),);
+    assert!(mistaken(&unit("S"), Dimension::TIME).is_some());
+    assert_eq!(mistaken(&unit("C"), Dimension::TIME), None);
+    assert_eq!(mistaken(&unit("degC"), wanted), None);
 }
 
 #[test]

@@ -7,6 +7,7 @@
 
 use super::{Binary, Graph, NOT_A_NUMBER, Node, NodeId, ONE, Unary, ZERO};
 use crate::formula::number::{Number, Rounded, holds};
+use crate::unit::Unit;
 use std::collections::BTreeMap;
 
 /// Longest sum or product that is flattened; a longer one stays as it is, which costs only recognition.
@@ -86,6 +87,14 @@ impl Graph {
     /// A number as read from decimal digits ([`Rounded::from_decimal`]).
     pub fn number(&mut self, value: f64) -> NodeId {
         self.rounded_node(Rounded::from_decimal(value))
+    }
+
+    /// A number with its unit, in SI; the bound for its error counts the reading of the digits and the conversion.
+    pub fn quantity(&mut self, value: f64, unit: &Unit) -> NodeId {
+        let si = unit.to_si(value);
+        let read = Rounded::from_decimal(value).error * unit.factor;
+        let converted = if si == value && read == 0.0 { 0.0 } else { si.abs() * f64::EPSILON / 2.0 };
+        self.number_within(si, read + converted)
     }
 
     /// A number with a bound for its error.

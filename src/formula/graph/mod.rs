@@ -167,7 +167,7 @@ impl Dependence {
 }
 
 /// A test on data that vary along the span: decided once per piece.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, PartialOrd, Ord)]
 pub struct PieceTest {
     /// The test is `gap < 0` or `gap <= 0`; the gap holds the coordinate and data only.
     pub gap: NodeId,
@@ -394,15 +394,9 @@ impl Graph {
     /// `signed_power` of data are kept as choices and are therefore listed too: their kinks want a break as much
     /// as the step of an `if`.
     pub fn piece_tests(&self, outputs: &[NodeId]) -> Vec<PieceTest> {
-        let mut tests: Vec<PieceTest> = Vec::new();
-        for id in self.reach(outputs) {
-            if let Some(test) = self.piece_test(self.node(id))
-                && !tests.contains(&test)
-            {
-                tests.push(test);
-            }
-        }
-        tests
+        let nodes = self.reach(outputs).into_iter();
+        let tests: BTreeSet<PieceTest> = nodes.filter_map(|id| self.piece_test(self.node(id))).collect();
+        tests.into_iter().collect()
     }
 
     /// The test of a choice that is decided once per piece.

@@ -90,3 +90,24 @@ fn registers_are_reused() {
     let tape = Tape::compile(&g, &[sum]);
     assert_eq!((tape.instructions(), tape.registers), (100, 2));
 }
+
+#[test]
+fn a_second_run_allocates_nothing() {
+    let mut g = Graph::default();
+    let (x, u, c) = (g.coordinate(), g.jet(0, 0), g.constant(0));
+    let sum = g.add(x, u);
+    let root = g.unary(Unary::Sqrt, c);
+    let product = g.multiply(sum, root);
+    let tape = Tape::compile(&g, &[product, root]);
+    let mut work = Workspace::default();
+    let mut out = vec![0.0; 2 * 200];
+    let (x, u) = (vec![1.25; 200], vec![0.5; 200]);
+    let mut memory = None;
+    for c in [4.0, 9.0] {
+        let run = TapeInputs { x: &x, jets: &u, constants: &[c], slots: &[], tests: &[] };
+        tape.run(&mut work, &run, &mut out);
+        assert_eq!((out[199], out[399]), (1.75 * c.sqrt(), c.sqrt()));
+        let now = (work.registers.as_ptr(), work.uniforms.as_ptr());
+        assert_eq!(*memory.get_or_insert(now), now);
+    }
+}
