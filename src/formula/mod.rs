@@ -1,8 +1,8 @@
 //! Formulas: text, tree, derivative, fast evaluation.
 //!
 //! A formula passes three forms: text, a syntax tree whose every part knows its place in the text
-//! ([`syntax`]), and nodes of a [`graph`] in SI units, from which derivatives are taken and a
-//! [`tape`] is compiled.
+//! ([`syntax`](crate::formula::syntax)), and nodes of a [`graph`](crate::formula::graph) in SI units, from which
+//! derivatives are taken and a [`tape`](crate::formula::tape) is compiled.
 
 /// The checked formula as a shared graph: simplification, total and partial derivatives.
 pub mod graph;
