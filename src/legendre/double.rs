@@ -56,17 +56,20 @@ impl Double {
         quick_two_sum(root, rest / (2.0 * root))
     }
 
-    /// 1 - cos(self) to full relative accuracy, for angles in [0, pi].
+    /// 1 - cos(self) for angles in [0, pi], to about 1e-24 relative.
     ///
     /// Taylor series of a sixteenth of the angle, then four doublings
     /// 1 - cos 2t = 2 (1 - cos t) (2 - (1 - cos t)), none of which cancels.
     pub(crate) fn versine(self) -> Self {
         let t = self * 0.0625;
         let square = t * t;
-        // The first term left out is below 1e-33 of the sum.
-        let mut sum = Self::from(1.0);
-        for k in (2..=12).rev() {
-            let divisor = f64::from(2 * k * (2 * k - 1));
+        // 1 - t^2/(3 4) (1 - t^2/(5 6) (1 - ...)). The terms from t^6 on are below 3e-9: plain numbers do.
+        let mut tail = 1.0;
+        for k in (4..=10).rev() {
+            tail = 1.0 - square.hi * tail / f64::from(2 * k * (2 * k - 1));
+        }
+        let mut sum = Self::from(tail);
+        for divisor in [30.0, 12.0] {
             sum = Self::from(1.0) - square * sum / divisor;
         }
         let mut versine = square * sum * 0.5;
@@ -169,7 +172,7 @@ mod tests {
         // 1 - cos(pi/3) = 1/2, 1 - cos(pi/2) = 1, 1 - cos(pi) = 2
         for (part, value) in [(3.0, 0.5), (2.0, 1.0), (1.0, 2.0)] {
             let error = (PI / part).versine() - Double::from(value);
-            assert!(error.hi.abs() < 1e-30, "pi/{part}: {error:?}");
+            assert!(error.hi.abs() < 1e-22, "pi/{part}: {error:?}");
         }
         // 1 - cos(0.001), mpmath 1.3 with 40 digits: 4.999999583333347222221974206350954e-7
         let value = Double::from(1e-3).versine();

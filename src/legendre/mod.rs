@@ -4,7 +4,9 @@
 //! by its *nodal* values at the n nodes of a [`Rule`] or by its *modal* coefficients c_k in
 //! sum_k c_k P_k; [`to_modal`] and [`to_nodal`] lead from one to the other.
 
+mod bessel;
 mod double;
+mod expansion;
 mod rule;
 mod series;
 mod transform;

@@ -3,7 +3,7 @@
 use std::f64::consts::FRAC_PI_2;
 
 use super::double::{Double, PI};
-use super::zeros::{Ends, Zero, zero};
+use super::zeros::{Ends, zeros};
 use crate::error::{Error, Result};
 
 /// An end of the reference interval [-1, 1].
@@ -107,10 +107,10 @@ impl Rule {
 ///
 /// Nodes are the zeros of P_n, weights w = 2 / ((1-s^2) P_n'(s)^2) = 2 / (dP_n/dtheta)^2.
 ///
-/// Cost O(n^2).
+/// Cost O(n).
 ///
 /// # Errors
-/// [`Error::Argument`] for n = 0.
+/// [`Error::Argument`] for n = 0 or n > 10,000,000.
 ///
 /// # Example
 /// ```
@@ -122,7 +122,7 @@ impl Rule {
 ///
 /// Source: Abramowitz & Stegun 25.4.29; NIST DLMF 3.5(v).
 pub fn gauss(n: usize) -> Result<Rule> {
-    require(n, 1, "at least 1")?;
+    require(n, 1, "1 to 10,000,000")?;
     Ok(build(n, Kind::Gauss))
 }
 
@@ -130,10 +130,10 @@ pub fn gauss(n: usize) -> Result<Rule> {
 ///
 /// Inner nodes are the zeros of P_(n-1)', weights w = 2 / (n (n-1) P_(n-1)(s)^2).
 ///
-/// Cost O(n^2).
+/// Cost O(n).
 ///
 /// # Errors
-/// [`Error::Argument`] for n < 2.
+/// [`Error::Argument`] for n < 2 or n > 10,000,000.
 ///
 /// # Example
 /// ```
@@ -145,7 +145,7 @@ pub fn gauss(n: usize) -> Result<Rule> {
 ///
 /// Source: Abramowitz & Stegun 25.4.32.
 pub fn lobatto(n: usize) -> Result<Rule> {
-    require(n, 2, "at least 2")?;
+    require(n, 2, "2 to 10,000,000")?;
     Ok(build(n, Kind::Lobatto))
 }
 
@@ -154,10 +154,10 @@ pub fn lobatto(n: usize) -> Result<Rule> {
 /// With the left end, inner nodes are the other zeros of P_(n-1) + P_n, weights
 /// w = (1-s) / (n P_(n-1)(s))^2; the right one is its mirror image.
 ///
-/// Cost O(n^2).
+/// Cost O(n).
 ///
 /// # Errors
-/// [`Error::Argument`] for n = 0.
+/// [`Error::Argument`] for n = 0 or n > 10,000,000.
 ///
 /// # Example
 /// ```
@@ -170,12 +170,15 @@ pub fn lobatto(n: usize) -> Result<Rule> {
 ///
 /// Source: Abramowitz & Stegun 25.4.31.
 pub fn radau(n: usize, end: End) -> Result<Rule> {
-    require(n, 1, "at least 1")?;
+    require(n, 1, "1 to 10,000,000")?;
     Ok(build(n, Kind::Radau(end)))
 }
 
+/// Longer rules would only exhaust the memory.
+const MOST_NODES: usize = 10_000_000;
+
 fn require(n: usize, least: usize, range: &'static str) -> Result<()> {
-    if n < least {
+    if n < least || n > MOST_NODES {
         return Err(Error::Argument { what: "number of nodes", value: n.to_string(), range });
     }
     Ok(())
@@ -196,31 +199,30 @@ fn build(n: usize, kind: Kind) -> Rule {
     let zero_angle = Double::from(0.0);
     let inner = n - usize::from(left) - usize::from(right);
     let half = inner / 2;
-    let from_left = Ends { near: left, far: right };
-    let left_half: Vec<Zero> = (1..=half).map(|k| zero(n, from_left, k)).collect();
+    let middle = left == right && inner % 2 == 1;
+    let from_left = zeros(n, Ends { near: left, far: right }, half + usize::from(middle));
+    let left_half = &from_left[..half];
+    let from_right;
+    let right_half = if left == right {
+        left_half
+    } else {
+        from_right = zeros(n, Ends { near: right, far: left }, inner - half);
+        &from_right
+    };
 
     let mut rule = Rule::with_capacity(kind, n);
     if left {
         rule.push(zero_angle, zero_angle, end_weight);
     }
-    for node in &left_half {
+    for node in left_half {
         rule.push(node.angle, node.distance, node.weight.hi);
     }
-    if left == right {
-        if inner % 2 == 1 {
-            // The middle is known; only its weight is not.
-            let weight = zero(n, from_left, half + 1).weight.hi;
-            rule.push(Double::from(FRAC_PI_2), Double::from(1.0), weight);
-        }
-        for node in left_half.iter().rev() {
-            rule.push_from_right(node.angle, node.distance, node.weight.hi);
-        }
-    } else {
-        let from_right = Ends { near: right, far: left };
-        for k in (1..=inner - half).rev() {
-            let node = zero(n, from_right, k);
-            rule.push_from_right(node.angle, node.distance, node.weight.hi);
-        }
+    if middle {
+        // Its place is known; only its weight is not.
+        rule.push(Double::from(FRAC_PI_2), Double::from(1.0), from_left[half].weight.hi);
+    }
+    for node in right_half.iter().rev() {
+        rule.push_from_right(node.angle, node.distance, node.weight.hi);
     }
     if right {
         rule.push_from_right(zero_angle, zero_angle, end_weight);
@@ -261,7 +263,8 @@ mod tests {
     }
 
     #[test]
-    fn too_few_nodes_are_refused() {
+    fn too_few_or_too_many_nodes_are_refused() {
         assert!(gauss(0).is_err() && lobatto(1).is_err() && radau(0, End::Left).is_err());
+        assert!(gauss(usize::MAX).is_err());
     }
 }
