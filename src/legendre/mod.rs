@@ -4,13 +4,25 @@
 //! by its *nodal* values at the n nodes of a [`Rule`] or by its *modal* coefficients c_k in
 //! sum_k c_k P_k; [`to_modal`] and [`to_nodal`] lead from one to the other.
 
-mod bessel;
+/// Double-double numbers.
 mod double;
+/// Inner nodes seen from an end.
+mod zero;
+
+/// Short rules: Newton's iteration.
+mod newton;
+
+/// Zeros of the Bessel functions J_0 and J_1.
+mod bessel;
+/// Long rules: expansions, at constant cost per node.
 mod expansion;
+
+/// The rules.
 mod rule;
+/// Sums of Legendre polynomials.
 mod series;
+/// Nodal values to modal coefficients and back.
 mod transform;
-mod zeros;
 
 pub use rule::{End, Kind, Rule, gauss, lobatto, radau};
 pub(crate) use series::fill_values;

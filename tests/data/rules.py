@@ -1,6 +1,6 @@
 """Writes rules.csv: reference nodes and weights of quadrature rules, 25 digits, for tests/rules.rs.
 
-    python3 rules.py > rules.csv        (Python 3, mpmath 1.3; some minutes)
+    python3 rules.py > rules.csv        (Python 3, mpmath 1.3; most of an hour)
 
 Made by another road than the crate's: mpmath with 60 digits, the plain three-term recurrence in x,
 Newton's iteration from equidistant angles and the textbook weights. Rules up to 1000 nodes are computed
@@ -89,7 +89,7 @@ def selection(n, symmetric):
 
 def main():
     print("rule,n,index,theta,one_plus_s,weight")
-    for n in (1, 2, 3, 4, 5, 7, 10, 16, 17, 32, 33, 64, 99, 100, 101, 200, 201, 500, 1000, 1001, 3000, 20000):
+    for n in (1, 2, 3, 4, 5, 7, 10, 16, 17, 32, 33, 64, 99, 100, 101, 200, 201, 500, 1000, 1001, 3000, 20000, 1_000_000):
         for rule in (gauss, lobatto, radau):
             if rule is lobatto and n < 2:
                 continue

@@ -1,4 +1,4 @@
-//! Where the nodes of a rule lie, as angles from the nearer end, with their weights.
+//! Nodes and weights of short rules, by Newton's iteration.
 //!
 //! Seen from an end at angle 0, x = cos(angle). Newton's iteration runs on the angle, with the Legendre values from the
 //! difference recurrence
@@ -10,25 +10,7 @@ use std::f64::consts::PI as PI_F64;
 use std::ops::{Add, Div, Mul, Sub};
 
 use super::double::Double;
-use super::expansion::{self, Expansion};
-
-/// Which ends of the interval are nodes themselves, seen from the end the angle is counted from.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub(crate) struct Ends {
-    pub(crate) near: bool,
-    pub(crate) far: bool,
-}
-
-/// An inner node.
-#[derive(Debug, Clone, Copy)]
-pub(crate) struct Zero {
-    /// Angle from the near end.
-    pub(crate) angle: Double,
-    /// Distance 1 - cos(angle) from the near end.
-    pub(crate) distance: Double,
-    /// Quadrature weight.
-    pub(crate) weight: Double,
-}
+use super::zero::{Ends, Zero};
 
 /// Arithmetic that plain and double-double numbers share.
 trait Real:
@@ -116,18 +98,8 @@ fn target<T: Real>(n: usize, ends: Ends, at: &Sample<T>) -> (T, T) {
     }
 }
 
-/// The first `count` inner nodes of the n-point rule, counted from the near end.
-pub(crate) fn zeros(n: usize, ends: Ends, count: usize) -> Vec<Zero> {
-    if n < expansion::LEAST_NODES {
-        (1..=count).map(|k| zero(n, ends, k)).collect()
-    } else {
-        let expansion = Expansion::new(n, ends);
-        (1..=count).map(|k| expansion.zero(k)).collect()
-    }
-}
-
 /// The k-th inner node, k = 1, 2, ..., by Newton's iteration.
-pub(super) fn zero(n: usize, ends: Ends, k: usize) -> Zero {
+pub(crate) fn zero(n: usize, ends: Ends, k: usize) -> Zero {
     let degree = if ends.near && ends.far { n - 1 } else { n };
     let mut angle = start(n, ends, k);
     // From the start (error below 1e-2 of the angle) four steps are the most ever seen.
