@@ -36,6 +36,39 @@ pub fn integral(field: &Field, profile: &dyn Profile, from: f64, to: f64) -> Res
     Ok(Estimate { value: total.value.total(), error: total.error })
 }
 
+/// Square root of the integral of the square over [from, to].
+///
+/// # Errors
+/// As [`integral`].
+pub fn norm(field: &Field, profile: &dyn Profile, from: f64, to: f64) -> Result<Estimate> {
+    let sum = integral(field, &Square(profile), from, to)?;
+    let value = sum.value.max(0.0).sqrt();
+    let error = if value > 0.0 { 0.5 * sum.error / value } else { sum.error.sqrt() };
+    Ok(Estimate { value, error })
+}
+
+/// The square of a profile.
+struct Square<'a>(&'a dyn Profile);
+
+impl Profile for Square<'_> {
+    fn tops(&self) -> &[usize] {
+        self.0.tops()
+    }
+
+    fn value(&self, x: f64, piece: usize, jets: &[f64], constants: &[f64]) -> f64 {
+        self.0.value(x, piece, jets, constants).powi(2)
+    }
+
+    fn slope(&self, x: f64, piece: usize, jets: &[f64], constants: &[f64]) -> f64 {
+        let (mut inner, mut at) = (Vec::with_capacity(jets.len()), 0);
+        for top in self.tops() {
+            inner.extend_from_slice(&jets[at..=at + top]);
+            at += top + 2;
+        }
+        2.0 * self.0.value(x, piece, &inner, constants) * self.0.slope(x, piece, jets, constants)
+    }
+}
+
 /// A compensated sum (Neumaier) with its error.
 #[derive(Default)]
 struct Sum {

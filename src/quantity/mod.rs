@@ -9,7 +9,7 @@ mod integral;
 mod root;
 
 pub use extreme::{Extreme, maximum, minimum};
-pub use integral::integral;
+pub use integral::{integral, norm};
 pub use root::roots;
 
 use crate::error::{Error, Result};

@@ -1,0 +1,267 @@
+//! Conditions: values at points tied to each other, jumps, releases.
+
+use super::functional::Kind as Asked;
+use super::lower::{Formula, Lowerer, Typed};
+use super::model::place_of;
+use super::source::Located;
+use crate::formula::graph::{Node, NodeId};
+use crate::formula::syntax::{self, Expression, Kind};
+use crate::model::{Place, Side};
+use std::collections::HashMap;
+
+/// A condition as read.
+#[derive(Debug, Clone)]
+pub(super) struct Read {
+    pub name: String,
+    pub at: Located,
+    /// Left minus right; `None` for a release.
+    pub node: Option<NodeId>,
+    /// A continuity given up: what may jump, and where.
+    pub release: Option<(NodeId, NodeId, String)>,
+}
+
+/// A condition with its points found.
+pub(super) struct Placed {
+    pub name: String,
+    pub places: Vec<Place>,
+    /// Formula of slots and constants.
+    pub formula: NodeId,
+    /// The place, unknown and order behind each slot.
+    pub reads: Vec<(usize, u16, u8)>,
+}
+
+/// An integral in a condition: it is carried as an unknown I of order 1 with I' = integrand inside the stretch.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Running {
+    pub unknown: u16,
+    pub integrand: NodeId,
+    pub ends: Option<[NodeId; 2]>,
+}
+
+/// What is found at a single place.
+pub(super) enum Refusal {
+    /// A value without side where there are two.
+    TwoValues,
+    /// A derivative above the order of its unknown.
+    TooHigh,
+}
+
+impl Lowerer<'_> {
+    /// Reads one condition.
+    pub fn condition(&mut self, name: &str, at: &Located) -> Option<Read> {
+        let read = |node, release| Read { name: name.to_owned(), at: at.clone(), node, release };
+        if !at.text.contains('=')
+            && let Ok(Expression { kind: Kind::Call { name: function, arguments, .. }, span }) = syntax::parse(&at.text)
+            && function == "release"
+        {
+            let [what, point] = &arguments[..] else {
+                return self.fault("arguments", at, &span, "write release(expression, point)", "");
+            };
+            let typed = self.lower(at, &what.value);
+            let point = self.point(at, point);
+            let text = at.text.get(what.value.span.clone()).unwrap_or("").to_owned();
+            return Some(read(None, Some((typed?.node, point?.0, text))));
+        }
+        let (left, right) = match syntax::parse_equation(&at.text) {
+            Ok(sides) => sides,
+            Err(error) => {
+                return self.fault("syntax", at, &error.span.clone(), error.message, &error.hint.unwrap_or_default());
+            }
+        };
+        let (a, b) = (self.lower(at, &left), self.lower(at, &right));
+        let (a, b) = (a?, b?);
+        let ok = [self.scalar(at, &left, a), self.scalar(at, &right, b)];
+        self.equal(at, (&left, a), (&right, b))?;
+        if ok.contains(&None) {
+            return None;
+        }
+        let node = self.graph.subtract(a.node, b.node);
+        let depends = self.graph.depends_on(node);
+        if !depends.slots && !depends.constants {
+            let span = 0..at.text.len();
+            return self.fault("condition", at, &span, "this condition holds no unknown: it says nothing about the solution", "");
+        }
+        let release = self.jumping(at, &left).or_else(|| self.jumping(at, &right));
+        Some(read(Some(node), release))
+    }
+
+    /// Both sides of an equation must measure the same.
+    pub fn equal(&mut self, at: &Located, a: (&Expression, Typed), b: (&Expression, Typed)) -> Option<()> {
+        match (a.1.dimension, b.1.dimension) {
+            (Some(p), Some(q)) if p != q => {
+                let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
+                let (left, right) = (text(a.0), text(b.0));
+                let message = format!("`{left}` is {} but `{right}` is {}", p.describe(), q.describe());
+                self.fault("dimension", at, &(a.0.span.start..b.0.span.end), message, "both sides must measure the same")
+            }
+            _ => Some(()),
+        }
+    }
+
+    /// A side that is just `jump(e, a)`, maybe with a sign or factor, replaces the continuity of e at a.
+    fn jumping(&mut self, at: &Located, e: &Expression) -> Option<(NodeId, NodeId, String)> {
+        match &e.kind {
+            Kind::Call { name, arguments, .. } if name == "jump" && !self.meanings.contains_key("jump") => {
+                let [what, point] = &arguments[..] else { return None };
+                let typed = self.lower(at, &what.value)?;
+                let point = self.point(at, point)?;
+                let text = at.text.get(what.value.span.clone()).unwrap_or("").to_owned();
+                Some((typed.node, point.0, text))
+            }
+            Kind::Negate(a) => self.jumping(at, a),
+            Kind::Binary(_, a, b) => self.jumping(at, a).or_else(|| self.jumping(at, b)),
+            _ => None,
+        }
+    }
+
+    /// The state that an expression is a multiple of: unknown and order.
+    pub fn state_of(&mut self, node: NodeId) -> Option<(u16, u8)> {
+        let (_, factors) = self.graph.factors(node);
+        match factors[..] {
+            [(factor, 1)] => match self.graph.node(factor) {
+                Node::Jet { unknown, order } => Some((unknown, order)),
+                _ => None,
+            },
+            _ => None,
+        }
+    }
+
+    /// Writes a condition in terms of jets at places.
+    pub fn place(
+        &mut self,
+        read: &Read,
+        node: NodeId,
+        points: &[f64],
+        orders: &[u8],
+        released: &dyn Fn(usize, u16, u8) -> bool,
+        running: &[(usize, Running)],
+    ) -> Option<Placed> {
+        let mut placed = Placed { name: read.name.clone(), places: Vec::new(), formula: node, reads: Vec::new() };
+        let mut map = HashMap::new();
+        for slot in self.graph.slots_of(node) {
+            let functional = self.functionals[slot as usize].clone();
+            let values: Vec<f64> = functional.points.iter().filter_map(|p| self.number_of(*p)).collect();
+            let own = self.graph.slot(slot);
+            if values.len() != functional.points.len() {
+                let message = "a point of a condition must be a datum";
+                self.faults.add("condition", functional.place.clone(), message, None);
+                return None;
+            }
+            let nearest = |x: f64| {
+                let distance = |k: &usize| (points[*k] - x).abs();
+                (0..points.len()).min_by(|p, q| distance(p).total_cmp(&distance(q))).unwrap_or(0)
+            };
+            let made = match functional.kind {
+                Asked::Value => {
+                    let point = nearest(values[0]);
+                    self.at_place(&mut placed, functional.expression, point, functional.side, points, orders, released)
+                }
+                Asked::Jump => {
+                    let point = nearest(values[0]);
+                    let mut side = |side| {
+                        self.at_place(&mut placed, functional.expression, point, Some(side), points, orders, released)
+                    };
+                    let (left, right) = (side(Side::Left), side(Side::Right));
+                    left.and_then(|l| right.map(|r| self.graph.subtract(r, l)))
+                }
+                Asked::Integral => {
+                    let unknown = running.iter().find(|(s, _)| *s == slot as usize).map(|(_, r)| r.unknown);
+                    let unknown = unknown?;
+                    let ends = if values.is_empty() { [0, points.len() - 1] } else { [nearest(values[0]), nearest(values[1])] };
+                    let jet = self.graph.jet(unknown, 0);
+                    let mut end = |point, side| self.at_place(&mut placed, jet, point, Some(side), points, orders, released);
+                    let (from, to) = (end(ends[0], Side::Right), end(ends[1], Side::Left));
+                    from.and_then(|f| to.map(|t| self.graph.subtract(t, f)))
+                }
+                _ => {
+                    let message = "a condition may hold values at points, jumps and integrals, not extremes or places";
+                    self.faults.add("condition", functional.place.clone(), message, None);
+                    return None;
+                }
+            };
+            match made {
+                Ok(made) => {
+                    map.insert(own, made);
+                }
+                Err(refusal) => {
+                    let text = &functional.text;
+                    let (message, hint) = match refusal {
+                        Refusal::TwoValues => (
+                            format!("`{text}` has two values at this point"),
+                            "mark the side: (a-) from the left, (a+) from the right",
+                        ),
+                        Refusal::TooHigh => (
+                            format!("`{text}` holds a derivative above the order of the problem"),
+                            "use the equation to express it by lower ones",
+                        ),
+                    };
+                    self.faults.add("condition", functional.place.clone(), message, Some(hint.into()));
+                    return None;
+                }
+            }
+        }
+        placed.formula = self.graph.substitute(node, &map);
+        Some(placed)
+    }
+
+    #[allow(clippy::too_many_arguments)]
+    fn at_place(
+        &mut self,
+        placed: &mut Placed,
+        expression: NodeId,
+        point: usize,
+        side: Option<Side>,
+        points: &[f64],
+        orders: &[u8],
+        released: &dyn Fn(usize, u16, u8) -> bool,
+    ) -> Result<NodeId, Refusal> {
+        let inner = point > 0 && point + 1 < points.len();
+        let expression = self.graph.expand(expression);
+        let jets = self.graph.jets_of(expression);
+        if jets.iter().any(|(u, k)| *k > orders[usize::from(*u)]) {
+            return Err(Refusal::TooHigh);
+        }
+        let at_side = |side| place_of(points, &Place { point, side });
+        if side.is_none() && inner {
+            let jumps = jets.iter().any(|(u, k)| released(point, *u, *k) || *k == orders[usize::from(*u)]);
+            let mut branch = |side| {
+                let (_, piece) = at_side(side);
+                self.graph.in_piece(expression, 0.5 * (points[piece] + points[piece + 1]))
+            };
+            let steps = branch(Side::Left) != branch(Side::Right);
+            let highest_only = jets.iter().any(|(u, k)| *k == orders[usize::from(*u)] && orders[usize::from(*u)] > 0);
+            if steps || (jumps && (highest_only || jets.iter().any(|(u, k)| released(point, *u, *k)))) {
+                return Err(Refusal::TwoValues);
+            }
+        }
+        let side = side.unwrap_or(Side::Left);
+        let (x, piece) = at_side(side);
+        let expression = self.graph.in_piece(expression, 0.5 * (points[piece] + points[piece + 1]));
+        let place = Place { point, side };
+        let index = placed.places.iter().position(|p| *p == place).unwrap_or_else(|| {
+            placed.places.push(place);
+            placed.places.len() - 1
+        });
+        let mut map = HashMap::new();
+        let (coordinate, value) = (self.graph.coordinate(), self.graph.number(x));
+        map.insert(coordinate, value);
+        for (unknown, order) in jets {
+            let read = (index, unknown, order);
+            let slot = placed.reads.iter().position(|r| *r == read).unwrap_or_else(|| {
+                placed.reads.push(read);
+                placed.reads.len() - 1
+            });
+            let (jet, slot) = (self.graph.jet(unknown, order), self.graph.slot(slot as u32));
+            map.insert(jet, slot);
+        }
+        Ok(self.graph.substitute(expression, &map))
+    }
+
+    /// Parses a formula, noting what is wrong with it.
+    pub fn parse(&mut self, at: &Located) -> Option<Formula> {
+        match syntax::parse(&at.text) {
+            Ok(tree) => Some(Formula { at: at.clone(), tree }),
+            Err(error) => self.fault("syntax", at, &error.span.clone(), error.message, &error.hint.unwrap_or_default()),
+        }
+    }
+}

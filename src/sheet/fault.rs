@@ -1,0 +1,75 @@
+//! What is wrong with a sheet, and where.
+
+use std::ops::Range;
+
+/// A fault with its place in the sheet.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Fault {
+    /// Short name of the kind of fault, stable for programs.
+    pub code: &'static str,
+    /// What is wrong.
+    pub message: String,
+    /// What to do about it.
+    pub hint: Option<String>,
+    /// Line, from 1.
+    pub line: usize,
+    /// Column in characters, from 1.
+    pub column: usize,
+    /// Bytes of the sheet.
+    pub span: Range<usize>,
+}
+
+/// Faults gathered in one reading.
+#[derive(Debug, Default)]
+pub(super) struct Faults {
+    list: Vec<Fault>,
+}
+
+impl Faults {
+    /// Notes a fault; one that repeats an earlier one at the same place is dropped.
+    pub fn add(&mut self, code: &'static str, span: Range<usize>, message: impl Into<String>, hint: Option<String>) {
+        let message = message.into();
+        if !self.list.iter().any(|f| f.span == span && f.message == message) {
+            self.list.push(Fault { code, message, hint, line: 0, column: 0, span });
+        }
+    }
+
+    /// Number of faults so far.
+    pub fn len(&self) -> usize {
+        self.list.len()
+    }
+
+    /// Whether there are none.
+    pub fn is_empty(&self) -> bool {
+        self.list.is_empty()
+    }
+
+    /// All faults in the order of the sheet, with lines and columns.
+    pub fn finish(mut self, sheet: &str) -> Vec<Fault> {
+        self.list.sort_by_key(|f| f.span.start);
+        for fault in &mut self.list {
+            (fault.line, fault.column) = line_and_column(sheet, fault.span.start);
+        }
+        self.list
+    }
+}
+
+/// Line and column (in characters), both from 1, of a byte of the text.
+pub(super) fn line_and_column(text: &str, byte: usize) -> (usize, usize) {
+    let mut end = byte.min(text.len());
+    while !text.is_char_boundary(end) {
+        end -= 1;
+    }
+    let before = &text[..end];
+    let line = before.matches('\n').count() + 1;
+    let start = before.rfind('\n').map_or(0, |n| n + 1);
+    (line, before[start..].chars().count() + 1)
+}
+
+/// The name among `known` that `name` was likely meant to be.
+pub(super) fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
+    let best = known.into_iter().map(|k| (strsim::osa_distance(name, k), k)).min_by_key(|(d, _)| *d)?;
+    // A capital for a small letter always counts as near.
+    let near = best.0 <= name.chars().count().div_ceil(3) || best.1.eq_ignore_ascii_case(name);
+    near.then_some(best.1)
+}
