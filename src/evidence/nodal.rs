@@ -241,7 +241,14 @@ impl System<'_> {
                 *b /= scale;
             }
         }
-        let solved = std::mem::replace(&mut self.a, DMatrix::zeros(0, 0)).lu().solve(&self.b);
+        let lu = self.a.clone().lu();
+        let solved = lu.solve(&self.b).and_then(|mut x| {
+            // Two steps of refinement against the growth of the factors.
+            for _ in 0..2 {
+                x += lu.solve(&(&self.b - &self.a * &x))?;
+            }
+            Some(x)
+        });
         let mut solution = solved
             .filter(|s| s.iter().all(|v| v.is_finite()))
             .ok_or_else(|| Error::Singular("the dense system of the second route is singular".into()))?;

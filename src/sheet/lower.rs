@@ -8,7 +8,6 @@ use super::fault::{Faults, nearest};
 use super::functional::{Functional, Kind as Asked};
 use super::source::Located;
 use crate::formula::graph::{Binary, Graph, NodeId, Unary};
-use crate::formula::number::Rounded;
 use crate::formula::syntax::{Argument, Comparison, Expression, Kind, Operator, Sign, Span, Test};
 use crate::model::Side;
 use crate::unit::{Dimension, Unit};
@@ -215,9 +214,7 @@ impl<'f> Lowerer<'f> {
                 }
             }
         }
-        let si = unit.to_si(value);
-        let exact = unit.factor == 1.0 && unit.offset == 0.0;
-        let node = if exact { self.graph.number(si) } else { self.graph.number_within(si, Rounded::from_decimal(1.0 / 3.0).error * 3.0 * si.abs()) };
+        let node = self.graph.quantity(value, unit);
         Some(Typed { node, dimension: Some(unit.dimension), absolute: f64::from(u8::from(unit.is_absolute())) })
     }
 

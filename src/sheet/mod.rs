@@ -1,1 +1,271 @@
 //! The calculation sheet: from a file to a located, checked model in SI units.
+//!
+//! [`read`] takes the text through these stages, noting all faults on the way: sections and located texts
+//! ([`source`]), syntax and names ([`lower`]), fluxes ([`carry`]), conditions ([`condition`]), points, orders and
+//! counts ([`assemble`]), and at last the model that the engine solves ([`model`]). [`Sheet::evaluate`] makes the
+//! asked numbers from a solution.
+
+mod along;
+mod assemble;
+mod carry;
+mod condition;
+mod fault;
+mod functional;
+mod lower;
+mod model;
+mod source;
+mod statement;
+
+pub use fault::Fault;
+pub use model::SheetModel;
+pub use source::MOST_BYTES;
+pub use statement::{Datum, Feature, Line, Role, Statement};
+
+use crate::error::{Error, Result};
+use crate::field::Field;
+use crate::formula::graph::{Graph, NodeId};
+use crate::model::{Profile, Side};
+use crate::quantity::Estimate;
+use crate::solve::Solution;
+use crate::unit::Unit;
+use functional::{Functional, Memory, Reckoner};
+
+/// A sheet that has been read and checked.
+pub struct Sheet {
+    /// Title, or empty.
+    pub title: String,
+    /// Note.
+    pub note: Option<String>,
+    /// Accuracy asked, relative.
+    pub relative: f64,
+    /// The problem as understood, for people.
+    pub statement: Statement,
+    /// Warnings: readings that may not be what was meant.
+    pub warnings: Vec<String>,
+    model: SheetModel,
+    report: Vec<Item>,
+    curves: Vec<CurveItem>,
+    balances: Vec<Balance>,
+}
+
+impl std::fmt::Debug for Sheet {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        f.debug_struct("Sheet").field("title", &self.title).field("model", &self.model).finish_non_exhaustive()
+    }
+}
+
+/// One line of the report.
+struct Item {
+    label: String,
+    formula: String,
+    unit: Unit,
+    reckoner: Reckoner,
+}
+
+/// Something that can be drawn along the span.
+struct CurveItem {
+    name: String,
+    unit: Unit,
+    along: along::Along,
+}
+
+/// An equation coefficient * g' + rest = 0 with g carried: what must balance along the span.
+struct Balance {
+    name: String,
+    unknown: usize,
+    order: usize,
+    /// -rest/coefficient
+    source: along::Along,
+}
+
+/// An asked number.
+#[derive(Debug, Clone)]
+pub struct Asked {
+    /// Label in the sheet.
+    pub label: String,
+    /// Formula as written, without the unit.
+    pub formula: String,
+    /// Unit to print in.
+    pub unit: Unit,
+    /// Value and bar in SI, or why there is none.
+    pub value: std::result::Result<Estimate, String>,
+    /// Size in SI against which the accuracy counts.
+    pub scale: f64,
+    /// Remarks on sides and ties.
+    pub remarks: Vec<String>,
+}
+
+impl Asked {
+    /// Value and bar in the unit printed.
+    pub fn printed(&self) -> Option<Estimate> {
+        let estimate = self.value.as_ref().ok()?;
+        let value = self.unit.from_si(estimate.value);
+        // Conversion rounds once more.
+        let error = self.unit.difference_from_si(estimate.error).abs() + 0.5 * f64::EPSILON * value.abs();
+        Some(Estimate { value, error })
+    }
+}
+
+/// A balance of loads against reactions, of sources against flows.
+#[derive(Debug, Clone)]
+pub struct Closure {
+    /// Name of the equation.
+    pub name: String,
+    /// g(to) - g(from), jumps taken off, in SI.
+    pub flows: Estimate,
+    /// Integral of the sources, in SI.
+    pub sources: Estimate,
+    /// Size of what is compared.
+    pub size: f64,
+}
+
+/// Reads and checks a sheet.
+///
+/// # Errors
+/// All faults of the sheet, in its order, each with its place.
+///
+/// # Example
+/// ```
+/// let sheet = spanwise::sheet::read(r#"
+/// [span]
+/// x = ["0 m", "2 m"]
+/// [unknowns]
+/// T = "degC"
+/// [equations]
+/// conduction = "T'' = 0"
+/// [conditions]
+/// left = "T(0 m) = 20 degC"
+/// right = "T(2 m) = 60 degC"
+/// [report]
+/// middle = "T(1 m) in degC"
+/// "#).expect("no faults");
+/// let solution = sheet.solve(None)?;
+/// let middle = sheet.evaluate(&solution).remove(0).printed().expect("a value");
+/// assert!((middle.value - 40.0).abs() <= middle.error);
+/// # Ok::<(), spanwise::error::Error>(())
+/// ```
+pub fn read(text: &str) -> std::result::Result<Sheet, Vec<Fault>> {
+    assemble::assemble(text)
+}
+
+impl Sheet {
+    /// The problem for the engine.
+    pub fn model(&self) -> &SheetModel {
+        &self.model
+    }
+
+    /// Solves the sheet to the accuracy asked.
+    ///
+    /// # Errors
+    /// Those of [`crate::solve::boundary`].
+    pub fn solve(&self, watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
+        let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
+        crate::solve::boundary(&self.model, &settings)
+    }
+
+    /// The asked numbers, in the order of the sheet.
+    pub fn evaluate(&self, solution: &Solution) -> Vec<Asked> {
+        self.report.iter().map(|item| self.asked(item, solution)).collect()
+    }
+
+    fn asked(&self, item: &Item, solution: &Solution) -> Asked {
+        // The answer is asked first and leaves in the memory which peak it found; companions follow.
+        let memory = Memory::default();
+        let value = solution.estimate(|field| item.reckoner.number(field, &memory));
+        let value = value.map_err(|error| self.reason(&error));
+        let scale = item.reckoner.scale(&solution.field).unwrap_or(f64::NAN);
+        let mut remarks = Vec::new();
+        if let (Ok(_), Some(extreme)) = (&value, item.reckoner.extreme(&solution.field)) {
+            let unit = &self.statement.coordinate_unit;
+            let at = |x: f64| format!("{} {}", short(unit.from_si(x)), unit.text);
+            match extreme.side {
+                Some(Side::Left) => remarks.push(format!("just left of the break at {}", at(extreme.place.value))),
+                Some(Side::Right) => remarks.push(format!("just right of the break at {}", at(extreme.place.value))),
+                None => {}
+            }
+            match extreme.ties.len() {
+                0 => {}
+                1..=3 => {
+                    let others: Vec<String> = extreme.ties.iter().map(|x| at(*x)).collect();
+                    remarks.push(format!("also reached at {}", others.join(", ")));
+                }
+                n => remarks.push(format!("also reached at {n} other places")),
+            }
+        }
+        let (label, formula, unit) = (item.label.clone(), item.formula.clone(), item.unit.clone());
+        Asked { label, formula, unit, value, scale, remarks }
+    }
+
+    /// The asked numbers on another field, without bars: for the second route. In SI.
+    pub fn plain_numbers(&self, field: &Field) -> Vec<Result<f64>> {
+        self.report.iter().map(|item| Ok(item.reckoner.number(field, &Memory::default())?.value)).collect()
+    }
+
+    /// An error of the engine in the words and units of the sheet.
+    pub fn reason(&self, error: &Error) -> String {
+        let unit = &self.statement.coordinate_unit;
+        let at = |x: f64| format!("{} = {} {}", self.statement.coordinate, short(unit.from_si(x)), unit.text);
+        match error {
+            Error::NotFinite { what, x } if x.is_finite() => {
+                format!("{what} is not finite at {}: look for a division by zero, a root or logarithm of a negative number", at(*x))
+            }
+            Error::NotFinite { what, .. } => format!("{what} is not finite"),
+            Error::Unresolved { elements, x } => {
+                format!("{elements} elements do not resolve the solution near {}", at(*x))
+            }
+            other => other.to_string(),
+        }
+    }
+
+    /// Curves along the span: name, unit, and the expression behind each; unknowns first.
+    pub fn curves(&self) -> impl Iterator<Item = (&str, &Unit, &dyn Profile)> {
+        self.curves.iter().map(|c| (c.name.as_str(), &c.unit, &c.along as &dyn Profile))
+    }
+
+    /// Balances of all carried fluxes: difference between the ends, without the jumps, against the sources.
+    pub fn balances(&self, solution: &Solution) -> Vec<Closure> {
+        let points = &self.model.points;
+        self.balances.iter().filter_map(|b| b.closure(solution, points)).collect()
+    }
+}
+
+impl Balance {
+    fn closure(&self, solution: &Solution, points: &[f64]) -> Option<Closure> {
+        let mut flows = Estimate { value: 0.0, error: 0.0 };
+        let mut size = 0.0f64;
+        // Piece by piece, so that prescribed jumps do not count.
+        for ends in points.windows(2) {
+            let left = solution.value(self.unknown, self.order, ends[0], Side::Right).ok()?;
+            let right = solution.value(self.unknown, self.order, ends[1], Side::Left).ok()?;
+            flows.value += right.value - left.value;
+            flows.error += right.error + left.error;
+            size = size.max(left.value.abs()).max(right.value.abs());
+        }
+        let sources = solution.integral(&self.source, points[0], points[points.len() - 1]).ok()?;
+        Some(Closure { name: self.name.clone(), flows, sources, size: size.max(sources.value.abs()) })
+    }
+}
+
+/// A number in a few digits, for messages.
+pub(crate) fn short(value: f64) -> String {
+    let text = format!("{value:.6}");
+    if value != 0.0 && !(1e-4..1e7).contains(&value.abs()) {
+        return format!("{value:.4e}");
+    }
+    if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').to_owned() } else { text }
+}
+
+/// What a line of the report is made of.
+struct Wanted {
+    label: String,
+    formula: String,
+    node: NodeId,
+    unit: Unit,
+}
+
+impl Wanted {
+    fn item(self, graph: &mut Graph, functionals: &[Functional], unknowns: usize, points: &[f64]) -> Item {
+        let reckoner = Reckoner::new(graph, self.node, functionals, unknowns, points);
+        Item { label: self.label, formula: self.formula, unit: self.unit, reckoner }
+    }
+}

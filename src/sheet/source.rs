@@ -30,6 +30,13 @@ impl Located {
         Self { text, span, origin }
     }
 
+    /// A part of a text.
+    pub fn part(whole: &Located, part: Range<usize>) -> Self {
+        let origin = whole.origin.get(part.start..=part.end).unwrap_or(&[]).to_vec();
+        let span = whole.place(&part);
+        Self { text: whole.text.get(part).unwrap_or("").to_owned(), span, origin }
+    }
+
     /// Bytes of the sheet behind bytes of the text.
     pub fn place(&self, inside: &Range<usize>) -> Range<usize> {
         let at = |k: usize| self.origin.get(k).copied().unwrap_or(self.span.end);
