@@ -60,7 +60,10 @@ fn every_asked_number_is_right_and_within_its_bar() {
             let size = if row.temperature { difference } else { row.value.abs() };
             let limit = if row.place { 1e-8 } else { 1e-10 };
             if error > limit * size || error > got.error {
-                faults.push(format!("{name}: {}: {} for {}, error {error:e}, bar {:e}", row.label, got.value, row.value, got.error));
+                faults.push(format!(
+                    "{name}: {}: {} for {}, error {error:e}, bar {:e}",
+                    row.label, got.value, row.value, got.error
+                ));
             }
             ratios.push(got.error / error.max(0.5 * f64::EPSILON * row.value.abs()).max(f64::MIN_POSITIVE));
         }

@@ -5,6 +5,7 @@
 //! nodes, and one LU factorisation solves everything. Digits are lost with growing n (the condition of the
 //! differentiation matrices), so it is evidence, not an answer.
 
+use crate::adapt::exponents;
 use crate::error::{Error, Result};
 use crate::field::Field;
 use crate::legendre;
@@ -47,7 +48,7 @@ pub fn nodal(model: &dyn Model, mesh: &Mesh) -> Result<Field> {
     if system.row != size {
         return Err(Error::ConditionCount { found: system.row, needed: size });
     }
-    let solution = system.solve()?;
+    let solution = system.solve(&exponents::scales(model)?)?;
     let series = mesh.elements.iter().enumerate().map(|(index, _)| {
         let grid = &grids[index];
         let mut start = system.offsets[index];
@@ -228,9 +229,15 @@ impl System<'_> {
         (element, side)
     }
 
-    fn solve(&mut self) -> Result<DVector<f64>> {
-        // Columns first (units of the unknowns), then rows, so that pivots compare like with like.
-        let columns: Vec<f64> = self.a.column_iter().map(|c| c.amax()).map(|s| if s > 0.0 { s } else { 1.0 }).collect();
+    fn solve(&mut self, scale: &[f64]) -> Result<DVector<f64>> {
+        // Columns first (sizes of the unknowns), then rows, so that pivots compare like with like.
+        let mut columns = vec![1.0; self.a.ncols()];
+        for (element, e) in self.mesh.elements.iter().enumerate() {
+            for (i, &m) in self.layout.orders().iter().enumerate() {
+                let first = self.column(element, i);
+                columns[first..first + e.nodes + m].fill(1.0 / scale[i]);
+            }
+        }
         for (mut column, scale) in self.a.column_iter_mut().zip(&columns) {
             column /= *scale;
         }

@@ -211,19 +211,19 @@ impl<'s, 'f> Assembler<'s, 'f> {
             lowered.push(Carrying { name, at: at.clone(), tree: [sides.0, sides.1], written, main: written });
         }
         let functions = self.lowerer.functions.len();
-        if complete && !source.unknowns.is_empty() && source.equations.len() != functions && !source.equations.is_empty() {
+        if complete
+            && !source.unknowns.is_empty()
+            && source.equations.len() != functions
+            && !source.equations.is_empty()
+        {
             let place = source.equations[source.equations.len() - 1].name_span.clone();
             let plural = |n: usize, what: &str| format!("{n} {what}{}", if n == 1 { "" } else { "s" });
-            let message = format!(
-                "{} for {}",
-                plural(source.equations.len(), "equation"),
-                plural(functions, "unknown function")
-            );
+            let message =
+                format!("{} for {}", plural(source.equations.len(), "equation"), plural(functions, "unknown function"));
             let hint = "write one equation for each unknown that is not constant";
             self.lowerer.faults.add("equation count", place, message, Some(hint.into()));
         }
-        let mut carrier =
-            Carrier { graph: &mut self.lowerer.graph, fluxes: Vec::new(), next: functions as u16 };
+        let mut carrier = Carrier { graph: &mut self.lowerer.graph, fluxes: Vec::new(), next: functions as u16 };
         let mut stepping = Vec::new();
         for (k, equation) in lowered.iter_mut().enumerate() {
             match carrier.carry(equation.written) {
@@ -259,7 +259,13 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 && !value.is_finite()
             {
                 let message = format!("`{}` is not finite", entry.name);
-                self.lowerer.fault::<()>("not finite", &at, &(0..at.text.len()), message, "look for a root or logarithm of a negative number");
+                self.lowerer.fault::<()>(
+                    "not finite",
+                    &at,
+                    &(0..at.text.len()),
+                    message,
+                    "look for a root or logarithm of a negative number",
+                );
             }
         }
     }
@@ -298,7 +304,8 @@ impl<'s, 'f> Assembler<'s, 'f> {
             let unit = match unit {
                 Some((unit, span)) => {
                     if typed.dimension.is_some() && unit.dimension != dimension {
-                        let message = format!("this number is {}, not {}", dimension.describe(), unit.dimension.describe());
+                        let message =
+                            format!("this number is {}, not {}", dimension.describe(), unit.dimension.describe());
                         let hint = crate::unit::mistaken(&unit, dimension).unwrap_or_default();
                         self.lowerer.fault::<()>("dimension", at, &span, message, &hint);
                         continue;
@@ -311,7 +318,9 @@ impl<'s, 'f> Assembler<'s, 'f> {
                     }
                     unit
                 }
-                None => self.usual_unit(&tree).filter(|u| u.dimension == dimension).unwrap_or_else(|| Unit::si(dimension)),
+                None => {
+                    self.usual_unit(&tree).filter(|u| u.dimension == dimension).unwrap_or_else(|| Unit::si(dimension))
+                }
             };
             let end = tree.span.end.min(at.text.len());
             let formula = at.text.get(..end).unwrap_or(&at.text).trim().to_owned();
@@ -562,8 +571,9 @@ impl<'s, 'f> Assembler<'s, 'f> {
             equation_names.push("an integral of a condition".into());
             orders.push(1);
         }
-        let released =
-            |point: usize, u: u16, k: u8| releases.iter().any(|r| (r.point, r.unknown, r.order) == (point, usize::from(u), usize::from(k)));
+        let released = |point: usize, u: u16, k: u8| {
+            releases.iter().any(|r| (r.point, r.unknown, r.order) == (point, usize::from(u), usize::from(k)))
+        };
         let mut placed: Vec<Placed> = Vec::new();
         for read in &reads {
             let Some(node) = read.node else { continue };
@@ -589,7 +599,12 @@ impl<'s, 'f> Assembler<'s, 'f> {
             ties: placed.iter().map(|p| Tie::new(graph, p.formula, &p.reads, &layout)).collect(),
             linear,
             releases,
-            unknown_names: statement.carried.iter().cloned().chain(running.iter().map(|_| "an integral".into())).collect(),
+            unknown_names: statement
+                .carried
+                .iter()
+                .cloned()
+                .chain(running.iter().map(|_| "an integral".into()))
+                .collect(),
             equation_names,
             limits: Vec::new(),
             constant_limits: Vec::new(),
@@ -616,7 +631,13 @@ impl<'s, 'f> Assembler<'s, 'f> {
     }
 
     /// Every unknown needs an equation for its highest derivative; stepped factors belong into fluxes.
-    fn check_equations(&mut self, equations: &[Carrying], nodes: &[NodeId], orders: &[u8], points: &[f64]) -> Option<()> {
+    fn check_equations(
+        &mut self,
+        equations: &[Carrying],
+        nodes: &[NodeId],
+        orders: &[u8],
+        points: &[f64],
+    ) -> Option<()> {
         let has: Vec<Vec<bool>> = nodes
             .iter()
             .map(|n| {
@@ -683,8 +704,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
                     let place = format!("{} {}", short(unit.from_si(points[k])), unit.text);
                     let name = self.stepping_name(equation, points, k).unwrap_or_else(|| "a factor".into());
                     let inner = format!("{name}*{smooth}");
-                    let message = format!("`{name}` steps at {place} but stands outside the derivative: write ({inner})'");
-                    let hint = format!("if {smooth} itself is continuous there, say so in [span]: smooth = [\"{smooth}\"]");
+                    let message =
+                        format!("`{name}` steps at {place} but stands outside the derivative: write ({inner})'");
+                    let hint =
+                        format!("if {smooth} itself is continuous there, say so in [span]: smooth = [\"{smooth}\"]");
                     let at = equation.at.clone();
                     self.lowerer.fault::<()>("stepped datum", &at, &(0..at.text.len()), message, &hint);
                     return;
@@ -786,7 +809,11 @@ impl<'s, 'f> Assembler<'s, 'f> {
             parts.push(format!("{constants} unknown constant{}", if constants == 1 { "" } else { "s" }));
         }
         if releases > 0 {
-            parts.push(format!("{releases} jump{} or release{}", if releases == 1 { "" } else { "s" }, if releases == 1 { "" } else { "s" }));
+            parts.push(format!(
+                "{releases} jump{} or release{}",
+                if releases == 1 { "" } else { "s" },
+                if releases == 1 { "" } else { "s" }
+            ));
         }
         let mut sides =
             vec![format!("{from} at {}", shown(points[0])), format!("{to} at {}", shown(points[points.len() - 1]))];
@@ -934,8 +961,11 @@ impl<'s, 'f> Assembler<'s, 'f> {
         }
         let lines = equations.iter().map(|e| {
             let jets = self.lowerer.graph.jets_of(e.main);
-            let mut own: Vec<&str> =
-                jets.iter().filter_map(|(u, _)| carried.get(usize::from(*u)).filter(|_| usize::from(*u) >= functions)).map(String::as_str).collect();
+            let mut own: Vec<&str> = jets
+                .iter()
+                .filter_map(|(u, _)| carried.get(usize::from(*u)).filter(|_| usize::from(*u) >= functions))
+                .map(String::as_str)
+                .collect();
             own.dedup();
             let remark = if own.is_empty() { String::new() } else { format!("carries {}", own.join(", ")) };
             Line { name: e.name.clone(), text: e.at.text.clone(), remark }
@@ -1017,7 +1047,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
             let value = node.and_then(|n| self.lowerer.number_of(n)).zip(typed).map(|(v, t)| {
                 let dimension = t.dimension.unwrap_or_default();
                 let written = match self.lowerer.meanings.get(&name) {
-                    Some(Meaning::Formula(Formula { tree: Expression { kind: Kind::Number { unit, .. }, .. }, .. })) => unit.clone(),
+                    Some(Meaning::Formula(Formula {
+                        tree: Expression { kind: Kind::Number { unit, .. }, .. },
+                        ..
+                    })) => unit.clone(),
                     _ => None,
                 };
                 (v, written.unwrap_or_else(|| Unit::si(dimension)))
@@ -1090,7 +1123,11 @@ impl<'s, 'f> Assembler<'s, 'f> {
             let dimension = typed.dimension.unwrap_or_default();
             let unit = self.reported_unit(&entry.name).filter(|u| u.dimension == dimension && !u.is_absolute());
             let along = Along::new(&mut self.lowerer.graph, typed.node, unknowns, points);
-            curves.push(CurveItem { name: entry.name.clone(), unit: unit.unwrap_or_else(|| Unit::si(dimension)), along });
+            curves.push(CurveItem {
+                name: entry.name.clone(),
+                unit: unit.unwrap_or_else(|| Unit::si(dimension)),
+                along,
+            });
         }
         curves
     }
@@ -1120,7 +1157,8 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let mut balances = Vec::new();
         for equation in equations {
             let jets = self.lowerer.graph.jets_of(equation.main);
-            let top = jets.iter().find(|(u, k)| usize::from(*u) >= functions && usize::from(*k) == orders[usize::from(*u)]);
+            let top =
+                jets.iter().find(|(u, k)| usize::from(*u) >= functions && usize::from(*k) == orders[usize::from(*u)]);
             let Some(&(unknown, order)) = top.filter(|(_, k)| *k > 0) else { continue };
             let graph = &mut self.lowerer.graph;
             let factor = graph.partial(equation.main, Variable::Jet { unknown, order });

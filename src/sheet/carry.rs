@@ -87,7 +87,9 @@ impl Carrier<'_> {
         let pick = if derivatives == 1 && open == 1 {
             factors.iter().position(|f| one(self.graph, f))
         } else if open == 0 && factors.iter().filter(|f| self.graph.depends_on(f.0).jets).count() == 1 {
-            factors.iter().position(|f| f.1 == 1 && matches!(self.graph.node(f.0), Node::Jet { order, .. } if order > 0))
+            factors
+                .iter()
+                .position(|f| f.1 == 1 && matches!(self.graph.node(f.0), Node::Jet { order, .. } if order > 0))
         } else {
             None
         };
@@ -178,7 +180,10 @@ impl Carrier<'_> {
     fn slope(&mut self, written: NodeId) -> Result<NodeId, Stepping> {
         let defined = self.carry(written)?;
         let (factor, factors) = self.graph.factors(defined);
+        // A bare unknown or its derivative needs no carrying; with a factor it is a flux even if the factor is uniform:
+        // the user may ask for it by name, and two second orders are better conditioned than one fourth.
         if let [(node, 1)] = factors[..]
+            && factor.abs() == 1.0
             && let Node::Jet { unknown, order } = self.graph.node(node)
         {
             let next = self.graph.jet(unknown, order + 1);

@@ -79,7 +79,13 @@ impl Lowerer<'_> {
         let depends = self.graph.depends_on(node);
         if !depends.slots && !depends.constants {
             let span = 0..at.text.len();
-            return self.fault("condition", at, &span, "this condition holds no unknown: it says nothing about the solution", "");
+            return self.fault(
+                "condition",
+                at,
+                &span,
+                "this condition holds no unknown: it says nothing about the solution",
+                "",
+            );
         }
         let release = self.jumping(at, &left).or_else(|| self.jumping(at, &right));
         Some(read(Some(node), release))
@@ -92,7 +98,13 @@ impl Lowerer<'_> {
                 let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
                 let (left, right) = (text(a.0), text(b.0));
                 let message = format!("`{left}` is {} but `{right}` is {}", p.describe(), q.describe());
-                self.fault("dimension", at, &(a.0.span.start..b.0.span.end), message, "both sides must measure the same")
+                self.fault(
+                    "dimension",
+                    at,
+                    &(a.0.span.start..b.0.span.end),
+                    message,
+                    "both sides must measure the same",
+                )
             }
             _ => Some(()),
         }
@@ -167,9 +179,14 @@ impl Lowerer<'_> {
                 Asked::Integral => {
                     let unknown = running.iter().find(|(s, _)| *s == slot as usize).map(|(_, r)| r.unknown);
                     let unknown = unknown?;
-                    let ends = if values.is_empty() { [0, points.len() - 1] } else { [nearest(values[0]), nearest(values[1])] };
+                    let ends = if values.is_empty() {
+                        [0, points.len() - 1]
+                    } else {
+                        [nearest(values[0]), nearest(values[1])]
+                    };
                     let jet = self.graph.jet(unknown, 0);
-                    let mut end = |point, side| self.at_place(&mut placed, jet, point, Some(side), points, orders, released);
+                    let mut end =
+                        |point, side| self.at_place(&mut placed, jet, point, Some(side), points, orders, released);
                     let (from, to) = (end(ends[0], Side::Right), end(ends[1], Side::Left));
                     from.and_then(|f| to.map(|t| self.graph.subtract(t, f)))
                 }

@@ -112,7 +112,14 @@ impl<'f> Lowerer<'f> {
     }
 
     /// Notes a fault at a part of a formula; always `None`.
-    pub fn fault<T>(&mut self, code: &'static str, at: &Located, span: &Span, message: impl Into<String>, hint: &str) -> Option<T> {
+    pub fn fault<T>(
+        &mut self,
+        code: &'static str,
+        at: &Located,
+        span: &Span,
+        message: impl Into<String>,
+        hint: &str,
+    ) -> Option<T> {
         let hint = (!hint.is_empty()).then(|| hint.to_owned());
         self.faults.add(code, at.place(span), message, hint);
         None
@@ -190,9 +197,7 @@ impl<'f> Lowerer<'f> {
                 let absolute = if then.absolute == otherwise.absolute { then.absolute } else { f64::NAN };
                 Some(Typed { node, dimension, absolute })
             }
-            Kind::Call { name, name_span, primes, arguments } => {
-                self.call(at, e, name, name_span, *primes, arguments)
-            }
+            Kind::Call { name, name_span, primes, arguments } => self.call(at, e, name, name_span, *primes, arguments),
         }
     }
 
@@ -305,7 +310,12 @@ impl<'f> Lowerer<'f> {
             if let [Some((_, a)), Some((_, b))] = limits {
                 if a >= b {
                     let message = format!("a piece of `{name}` runs backwards");
-                    self.faults.add("piece", from.at.span.clone(), message, Some("write the smaller limit first".into()));
+                    self.faults.add(
+                        "piece",
+                        from.at.span.clone(),
+                        message,
+                        Some("write the smaller limit first".into()),
+                    );
                 }
                 sorted.push((*a, *b, *from));
             }
@@ -316,10 +326,20 @@ impl<'f> Lowerer<'f> {
             let small = 1e-12 * (end.abs() + start.abs());
             if start < end - small {
                 let message = format!("pieces of `{name}` overlap");
-                self.faults.add("piece", from.at.span.clone(), message, Some("each place may lie in one piece only".into()));
+                self.faults.add(
+                    "piece",
+                    from.at.span.clone(),
+                    message,
+                    Some("each place may lie in one piece only".into()),
+                );
             } else if start > end + small && otherwise.is_none() {
                 let message = format!("`{name}` has a gap between two pieces");
-                self.faults.add("piece", from.at.span.clone(), message, Some("fill it, or write else = \"value\"".into()));
+                self.faults.add(
+                    "piece",
+                    from.at.span.clone(),
+                    message,
+                    Some("fill it, or write else = \"value\"".into()),
+                );
             }
         }
         let mut dimension: Option<Option<Dimension>> = None;
@@ -337,7 +357,8 @@ impl<'f> Lowerer<'f> {
             dimension = Some(match (dimension.flatten(), value.dimension) {
                 (Some(d), Some(own)) if d != own => {
                     let hint = first.map(|(f, _)| format!("the others are like `{}`", f.at.text)).unwrap_or_default();
-                    let message = format!("this piece of `{name}` is {} but another is {}", own.describe(), d.describe());
+                    let message =
+                        format!("this piece of `{name}` is {} but another is {}", own.describe(), d.describe());
                     return self.fault("dimension", &formula.at, &formula.tree.span, message, &hint);
                 }
                 (d, own) => d.or(own),
@@ -361,7 +382,13 @@ impl<'f> Lowerer<'f> {
     }
 
     /// The common dimension of two parts, or a fault that names both.
-    fn same(&mut self, at: &Located, e: &Expression, a: (&Expression, Typed), b: (&Expression, Typed)) -> Option<Option<Dimension>> {
+    fn same(
+        &mut self,
+        at: &Located,
+        e: &Expression,
+        a: (&Expression, Typed),
+        b: (&Expression, Typed),
+    ) -> Option<Option<Dimension>> {
         match (a.1.dimension, b.1.dimension) {
             (Some(p), Some(q)) if p != q => {
                 let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
@@ -384,7 +411,14 @@ impl<'f> Lowerer<'f> {
         }
     }
 
-    fn binary(&mut self, at: &Located, e: &Expression, operator: Operator, a: &Expression, b: &Expression) -> Option<Typed> {
+    fn binary(
+        &mut self,
+        at: &Located,
+        e: &Expression,
+        operator: Operator,
+        a: &Expression,
+        b: &Expression,
+    ) -> Option<Typed> {
         let (left, right) = (self.lower(at, a), self.lower(at, b));
         let (left, right) = (left?, right?);
         let graph = &mut self.graph;
@@ -392,7 +426,11 @@ impl<'f> Lowerer<'f> {
             Operator::Add | Operator::Subtract => {
                 let minus = operator == Operator::Subtract;
                 let dimension = self.same(at, e, (a, left), (b, right))?;
-                let node = if minus { self.graph.subtract(left.node, right.node) } else { self.graph.add(left.node, right.node) };
+                let node = if minus {
+                    self.graph.subtract(left.node, right.node)
+                } else {
+                    self.graph.add(left.node, right.node)
+                };
                 let absolute = if minus { left.absolute - right.absolute } else { left.absolute + right.absolute };
                 Some(Typed { node, dimension, absolute })
             }
@@ -441,7 +479,13 @@ impl<'f> Lowerer<'f> {
         }
     }
 
-    fn power(&mut self, at: &Located, e: &Expression, base: (&Expression, Typed), exponent: (&Expression, Typed)) -> Option<Typed> {
+    fn power(
+        &mut self,
+        at: &Located,
+        e: &Expression,
+        base: (&Expression, Typed),
+        exponent: (&Expression, Typed),
+    ) -> Option<Typed> {
         self.expect(at, exponent.0, exponent.1, Some(Dimension::default()))?;
         let node = self.graph.power(base.1.node, exponent.1.node);
         let pure = base.1.dimension.is_none_or(Dimension::is_none);
@@ -505,9 +549,42 @@ impl<'f> Lowerer<'f> {
 
 /// Names of all functions, for suggestions.
 pub(super) const FUNCTIONS: [&str; 36] = [
-    "sqrt", "exp", "ln", "log10", "sin", "cos", "tan", "asin", "acos", "atan", "atan2", "sinh", "cosh", "tanh", "asinh",
-    "acosh", "atanh", "abs", "sign", "min", "max", "erf", "erfc", "signed_power", "argmax", "argmin", "integral", "mean",
-    "norm", "root", "at", "jump", "release", "if", "pi", "inf",
+    "sqrt",
+    "exp",
+    "ln",
+    "log10",
+    "sin",
+    "cos",
+    "tan",
+    "asin",
+    "acos",
+    "atan",
+    "atan2",
+    "sinh",
+    "cosh",
+    "tanh",
+    "asinh",
+    "acosh",
+    "atanh",
+    "abs",
+    "sign",
+    "min",
+    "max",
+    "erf",
+    "erfc",
+    "signed_power",
+    "argmax",
+    "argmin",
+    "integral",
+    "mean",
+    "norm",
+    "root",
+    "at",
+    "jump",
+    "release",
+    "if",
+    "pi",
+    "inf",
 ];
 
 /// Functions of one pure number.
@@ -548,7 +625,13 @@ impl Lowerer<'_> {
             return self.value(at, e, name, name_span, primes, arguments);
         }
         if primes > 0 && FUNCTIONS.contains(&name) {
-            return self.fault("derivative", at, name_span, format!("`{name}` is a function"), "write (expression)' for a derivative");
+            return self.fault(
+                "derivative",
+                at,
+                name_span,
+                format!("`{name}` is a function"),
+                "write (expression)' for a derivative",
+            );
         }
         if let Some(function) = pure_function(name) {
             let [a] = self.arguments(at, e, name, arguments)?;
@@ -560,7 +643,9 @@ impl Lowerer<'_> {
             ("sqrt", _) => {
                 let [a] = self.arguments(at, e, name, arguments)?;
                 let dimension = match a.1.dimension.map(|d| d.powr(1, 2)) {
-                    Some(Err(_)) => return self.fault("dimension", at, &e.span, "this root of a unit cannot be kept", ""),
+                    Some(Err(_)) => {
+                        return self.fault("dimension", at, &e.span, "this root of a unit cannot be kept", "");
+                    }
                     Some(Ok(dimension)) => Some(dimension),
                     None => None,
                 };
@@ -599,7 +684,9 @@ impl Lowerer<'_> {
                 self.asked(at, e, name, arguments)
             }
             ("release", _) => self.fault("release", at, &e.span, "`release` stands alone, as a condition", ""),
-            ("regular", _) => self.fault("not yet", at, name_span, "`regular`: singular ends are not part of this version", ""),
+            ("regular", _) => {
+                self.fault("not yet", at, name_span, "`regular`: singular ends are not part of this version", "")
+            }
             ("fold", _) => self.fault("not yet", at, name_span, "`fold`: paths are not part of this version", ""),
             _ => {
                 let known = self.meanings.keys().map(String::as_str).chain(FUNCTIONS.iter().copied());
@@ -665,7 +752,16 @@ impl Lowerer<'_> {
         };
         let point = self.point(at, argument);
         let (typed, (point, side)) = (typed?, point?);
-        Some(self.functional(Asked::Value, typed, vec![point], side, at.place(&e.span), name_span.clone(), typed.dimension, at))
+        Some(self.functional(
+            Asked::Value,
+            typed,
+            vec![point],
+            side,
+            at.place(&e.span),
+            name_span.clone(),
+            typed.dimension,
+            at,
+        ))
     }
 
     /// A point of the span with its side.
@@ -726,7 +822,13 @@ impl Lowerer<'_> {
                 "root" => "root(expression, n) or root(expression, n, from, to)",
                 _ => "of an expression, or of an expression from one point to another",
             };
-            return self.fault("arguments", at, &e.span, format!("`{name}` is not written with {} arguments", arguments.len()), form);
+            return self.fault(
+                "arguments",
+                at,
+                &e.span,
+                format!("`{name}` is not written with {} arguments", arguments.len()),
+                form,
+            );
         }
         let typed = typed?;
         let mut kind = match name {
@@ -787,7 +889,8 @@ impl Lowerer<'_> {
         let text = at.text.get(text).unwrap_or("").to_owned();
         let functional = Functional { kind, expression: expression.node, points, side, place, text };
         let same = |f: &Functional| {
-            (f.kind, f.expression, &f.points, f.side) == (functional.kind, functional.expression, &functional.points, functional.side)
+            (f.kind, f.expression, &f.points, f.side)
+                == (functional.kind, functional.expression, &functional.points, functional.side)
         };
         let index = self.functionals.iter().position(same).unwrap_or_else(|| {
             self.functionals.push(functional);

@@ -207,7 +207,10 @@ impl Sheet {
         let at = |x: f64| format!("{} = {} {}", self.statement.coordinate, short(unit.from_si(x)), unit.text);
         match error {
             Error::NotFinite { what, x } if x.is_finite() => {
-                format!("{what} is not finite at {}: look for a division by zero, a root or logarithm of a negative number", at(*x))
+                format!(
+                    "{what} is not finite at {}: look for a division by zero, a root or logarithm of a negative number",
+                    at(*x)
+                )
             }
             Error::NotFinite { what, .. } => format!("{what} is not finite"),
             Error::Unresolved { elements, x } => {

@@ -86,7 +86,10 @@ fn origins(raw: &str, start: usize, text: &str) -> Vec<usize> {
 pub(super) enum Given {
     Formula(Located),
     /// Stretches "from .. to" with their values, and the rest.
-    Pieces { pieces: Vec<(Located, Located)>, otherwise: Option<Located> },
+    Pieces {
+        pieces: Vec<(Located, Located)>,
+        otherwise: Option<Located>,
+    },
 }
 
 /// A named entry.
@@ -123,8 +126,7 @@ pub(super) struct Source {
     pub relative: Option<(f64, Range<usize>)>,
 }
 
-const SECTIONS: [&str; 8] =
-    ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];
+const SECTIONS: [&str; 8] = ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];
 
 /// Sections that belong to parts of the contract that are not built yet.
 const LATER: [(&str, &str); 6] = [
@@ -189,7 +191,12 @@ impl Reader<'_, '_> {
             }
             let message = format!("`{key}`: {what} are not part of this version");
             let message = message.replace("a search for several solutions are", "a search for several solutions is");
-            self.faults.add("not yet", span, message.replace("following a parameter are", "following a parameter is"), None);
+            self.faults.add(
+                "not yet",
+                span,
+                message.replace("following a parameter are", "following a parameter is"),
+                None,
+            );
             return;
         }
         match key {
@@ -270,7 +277,9 @@ impl Reader<'_, '_> {
         let DeValue::Table(table) = value.get_ref() else {
             return self.text(value).map(|f| Entry { name, name_span, value: Given::Formula(f) });
         };
-        if let Some((key, _)) = table.iter().find(|(k, _)| matches!(k.as_ref().as_ref(), "against" | "points" | "file" | "through")) {
+        if let Some((key, _)) =
+            table.iter().find(|(k, _)| matches!(k.as_ref().as_ref(), "against" | "points" | "file" | "through"))
+        {
             self.faults.add("not yet", key.span(), "measured data are not part of this version", None);
             return None;
         }
@@ -284,7 +293,12 @@ impl Reader<'_, '_> {
                 pieces.extend(self.text(value).map(|value| (located, value)));
             } else {
                 let hint = "pieces are written \"0 m .. 1.4 m\" = \"value\", and else = \"value\"";
-                self.faults.add("unknown key", key.span(), format!("`{text}` is not a stretch of the span"), Some(hint.into()));
+                self.faults.add(
+                    "unknown key",
+                    key.span(),
+                    format!("`{text}` is not a stretch of the span"),
+                    Some(hint.into()),
+                );
             }
         }
         Some(Entry { name, name_span, value: Given::Pieces { pieces, otherwise } })
@@ -297,11 +311,20 @@ impl Reader<'_, '_> {
                     DeValue::Array(list) => list.iter().filter_map(|v| self.text(v)).collect(),
                     _ => self.text(value).into_iter().collect(),
                 };
-                if name == "breaks" { source.breaks = list } else { source.smooth = list }
+                if name == "breaks" {
+                    source.breaks = list
+                } else {
+                    source.smooth = list
+                }
                 return;
             }
             "until" => {
-                self.faults.add("not yet", name_span, "`until`: marching to an event is not part of this version", None);
+                self.faults.add(
+                    "not yet",
+                    name_span,
+                    "`until`: marching to an event is not part of this version",
+                    None,
+                );
                 return;
             }
             _ => {}
@@ -341,7 +364,12 @@ impl Reader<'_, '_> {
                 (other, _) => {
                     let hint = nearest(other, ["unit", "constant", "guess", "above", "below"]);
                     let hint = hint.map(|k| format!("did you mean `{k}`?"));
-                    self.faults.add("unknown key", key.span(), format!("`{other}` says nothing about an unknown"), hint);
+                    self.faults.add(
+                        "unknown key",
+                        key.span(),
+                        format!("`{other}` says nothing about an unknown"),
+                        hint,
+                    );
                 }
             }
         }
