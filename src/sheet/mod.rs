@@ -163,6 +163,11 @@ impl Sheet {
         crate::solve::boundary(&self.model, &settings)
     }
 
+    /// What is asked: label, formula, unit.
+    pub fn wanted(&self) -> impl Iterator<Item = (&str, &str, &Unit)> {
+        self.report.iter().map(|i| (i.label.as_str(), i.formula.as_str(), &i.unit))
+    }
+
     /// The asked numbers, in the order of the sheet.
     pub fn evaluate(&self, solution: &Solution) -> Vec<Asked> {
         self.report.iter().map(|item| self.asked(item, solution)).collect()
