@@ -60,6 +60,7 @@ pub fn unsolved(sheet: &Sheet, origin: Origin<'_>) -> Outcome {
         quantities: Vec::new(),
         checks: Vec::new(),
         curves: Vec::new(),
+        stations: Vec::new(),
         residual: Vec::new(),
         features: features.collect(),
         decay_names: s.carried.clone(),
@@ -127,6 +128,7 @@ pub fn solved(sheet: &Sheet, solution: &Solution, origin: Origin<'_>, second_rou
         outcome.residual = vec![residual_curve(sheet, found)];
     }
     outcome.curves = curves(sheet, solution);
+    outcome.stations = stations(sheet, &solution.field);
     outcome.mesh = mesh(sheet, &solution.field);
     outcome
 }
@@ -287,6 +289,28 @@ fn pieces(field: &Field, profile: &dyn Profile, x_unit: &Unit, unit: &Unit) -> V
     }
     lines.retain(|l| !l.is_empty());
     lines
+}
+
+/// The table of values along the span.
+fn stations(sheet: &Sheet, field: &Field) -> Vec<Vec<f64>> {
+    let x_unit = &sheet.statement.coordinate_unit;
+    let elements = &field.mesh.elements;
+    let count = if elements.len() > MOST_ELEMENTS { 4 } else { DRAWN };
+    let mut rows = Vec::new();
+    for (index, element) in elements.iter().enumerate() {
+        let joint = index > 0 && elements[index - 1].piece == element.piece;
+        for k in usize::from(joint)..=count {
+            let s = 2.0 * k as f64 / count as f64 - 1.0;
+            let x = element.coordinate(s);
+            let mut row = vec![x_unit.from_si(x)];
+            row.extend(sheet.curves().map(|(_, unit, profile)| {
+                let jets = field.jets(index, s, profile.tops());
+                unit.from_si(profile.value(x, element.piece, &jets, &field.constants))
+            }));
+            rows.push(row);
+        }
+    }
+    rows
 }
 
 fn marks(field: &Field, profile: &dyn Profile, x_unit: &Unit, unit: &Unit) -> Vec<Mark> {

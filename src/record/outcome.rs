@@ -153,6 +153,9 @@ pub struct Outcome {
     pub checks: Vec<Check>,
     /// Curves: unknowns and asked expressions.
     pub curves: Vec<Curve>,
+    /// Values along the span: the coordinate, then one value per curve. At a break there are two rows, the left and
+    /// then the right limit.
+    pub stations: Vec<Vec<f64>>,
     /// Residual along the span, relative.
     pub residual: Vec<Curve>,
     /// Supports, jumps, breaks.

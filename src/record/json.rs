@@ -1,0 +1,193 @@
+//! Results for programs.
+
+use super::outcome::{Check, Entry, Feature, FeatureKind, MeshRow, Outcome, Quantity, Status};
+use crate::sheet::Fault;
+use serde::Serialize;
+
+#[derive(Serialize)]
+struct Document<'a> {
+    program: &'static str,
+    version: &'a str,
+    status: &'static str,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    reason: Option<&'a str>,
+    title: &'a str,
+    sheet: &'a str,
+    sha256: &'a str,
+    relative: f64,
+    quantities: Vec<Number<'a>>,
+    checks: Vec<Evidence<'a>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    problem: Option<Problem<'a>>,
+    mesh: Mesh,
+    warnings: &'a [String],
+}
+
+#[derive(Serialize)]
+struct Number<'a> {
+    name: &'a str,
+    value: Option<f64>,
+    error: Option<f64>,
+    unit: &'a str,
+    formula: &'a str,
+    met: bool,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    reason: Option<&'a str>,
+    #[serde(skip_serializing_if = "<[String]>::is_empty")]
+    remarks: &'a [String],
+}
+
+#[derive(Serialize)]
+struct Evidence<'a> {
+    name: &'a str,
+    result: &'a str,
+    passed: Option<bool>,
+}
+
+#[derive(Serialize)]
+struct Line<'a> {
+    name: &'a str,
+    text: &'a str,
+    #[serde(skip_serializing_if = "str::is_empty")]
+    remark: &'a str,
+}
+
+#[derive(Serialize)]
+struct Point<'a> {
+    x: f64,
+    kind: &'static str,
+    #[serde(skip_serializing_if = "str::is_empty")]
+    label: &'a str,
+}
+
+#[derive(Serialize)]
+struct Problem<'a> {
+    coordinate: &'a str,
+    unit: &'a str,
+    span: [f64; 2],
+    unknowns: Vec<Line<'a>>,
+    equations: Vec<Line<'a>>,
+    conditions: Vec<Line<'a>>,
+    data: Vec<Line<'a>>,
+    points: Vec<Point<'a>>,
+}
+
+#[derive(Serialize)]
+struct Mesh {
+    elements: usize,
+    passes: usize,
+    nodes: Vec<usize>,
+    ends: Vec<f64>,
+}
+
+fn number(q: &Quantity) -> Number<'_> {
+    let value = q.value.filter(|v| v.is_finite());
+    Number {
+        name: &q.name,
+        value,
+        error: value.map(|_| q.error).filter(|e| e.is_finite()),
+        unit: &q.unit,
+        formula: &q.formula,
+        met: q.met,
+        reason: q.reason.as_deref(),
+        remarks: &q.remarks,
+    }
+}
+
+fn lines(entries: &[Entry]) -> Vec<Line<'_>> {
+    entries.iter().map(|e| Line { name: &e.name, text: &e.text, remark: &e.remark }).collect()
+}
+
+fn point(f: &Feature) -> Point<'_> {
+    let kind = match f.kind {
+        FeatureKind::Condition => "condition",
+        FeatureKind::Jump => "jump",
+        FeatureKind::Release => "release",
+        FeatureKind::Break => "break",
+    };
+    Point { x: f.x, kind, label: &f.label }
+}
+
+fn mesh(outcome: &Outcome) -> Mesh {
+    let rows = &outcome.mesh;
+    let mut ends: Vec<f64> = rows.iter().map(|r: &MeshRow| r.from).collect();
+    ends.extend(rows.last().map(|r| r.to));
+    Mesh { elements: rows.len(), passes: outcome.passes, nodes: rows.iter().map(|r| r.nodes).collect(), ends }
+}
+
+/// The record as JSON; with `problem` the statement of the problem is included. Never holds a number that is not
+/// finite.
+pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -> String {
+    let status = match outcome.status {
+        Status::Solved => "solved",
+        Status::Inaccurate => "inaccurate",
+        Status::Failed => "failed",
+    };
+    let problem = problem.then(|| Problem {
+        coordinate: &outcome.coordinate,
+        unit: &outcome.coordinate_unit,
+        span: [outcome.span.0, outcome.span.1],
+        unknowns: lines(&outcome.unknowns),
+        equations: lines(&outcome.equations),
+        conditions: lines(&outcome.conditions),
+        data: lines(&outcome.data),
+        points: outcome.features.iter().map(point).collect(),
+    });
+    let evidence = outcome.checks.iter().map(|Check { name, result, passed, .. }| Evidence { name, result, passed: *passed });
+    let checks = evidence.collect();
+    let document = Document {
+        program: "spanwise",
+        version,
+        status,
+        reason: outcome.reason.as_deref(),
+        title: &outcome.title,
+        sheet: &outcome.source,
+        sha256,
+        relative: outcome.relative,
+        quantities: outcome.quantities.iter().map(number).collect(),
+        checks,
+        problem,
+        mesh: mesh(outcome),
+        warnings: &outcome.warnings,
+    };
+    pretty(&document)
+}
+
+#[derive(Serialize)]
+struct FaultLine<'a> {
+    file: &'a str,
+    line: usize,
+    column: usize,
+    code: &'a str,
+    message: &'a str,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    hint: Option<&'a str>,
+}
+
+#[derive(Serialize)]
+struct FaultList<'a> {
+    status: &'static str,
+    reason: &'static str,
+    quantities: [(); 0],
+    faults: Vec<FaultLine<'a>>,
+    warnings: [(); 0],
+}
+
+/// Faults of a sheet as JSON.
+pub fn faults(file: &str, faults: &[Fault]) -> String {
+    let faults = faults
+        .iter()
+        .map(|f| {
+            let Fault { line, column, code, message, hint, .. } = f;
+            FaultLine { file, line: *line, column: *column, code, message, hint: hint.as_deref() }
+        })
+        .collect();
+    pretty(&FaultList { status: "failed", reason: "the sheet has faults", quantities: [], faults, warnings: [] })
+}
+
+fn pretty(document: &impl Serialize) -> String {
+    // Plain data with text keys always serialise.
+    let mut text = serde_json::to_string_pretty(document).unwrap_or_default();
+    text.push('\n');
+    text
+}
