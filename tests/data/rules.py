@@ -84,6 +84,8 @@ def selection(n, symmetric):
     if n > 1000:
         near_left, right = [0, 1, 2, 7, 35], right and [n - 1, n - 2, n - 8, n - 36]
         inner = [n // 300, n // 30, n // 8, n // 3, n // 2 - 1]
+    if n > 100_000:  # minutes each
+        near_left, inner, right = [1, 7], [n // 300, n // 3], right and [n - 1, n - 8]
     return sorted({j for j in near_left + inner + right if 0 <= j < top})
 
 
