@@ -1,6 +1,168 @@
 //! The command line: arguments, streams, colours, progress, exit codes.
+//!
+//! Results go to standard output, talk to standard error. Exit code 0: every asked number met its accuracy; 1:
+//! solved but not to the accuracy asked, or no solution; 2: the sheet or the command makes no sense, or a file cannot
+//! be read or written.
+
+mod arguments;
+mod faults;
+mod files;
+mod progress;
+
+use crate::error::Error;
+use crate::record::build::{self, Origin};
+use crate::record::outcome::{Outcome, Status};
+use crate::record::{json, text};
+use crate::sheet::{self, Sheet};
+use arguments::{Arguments, Colour, Task};
+use clap::Parser;
+use sha2::{Digest, Sha256};
+use std::io::{IsTerminal, Write};
+use std::process::ExitCode;
+
+/// Every asked number met its accuracy.
+const GOOD: u8 = 0;
+/// Solved but not to the accuracy asked, or no solution found.
+const NOT_MET: u8 = 1;
+/// The sheet or the command makes no sense, or a file cannot be read or written.
+const NO_SENSE: u8 = 2;
+
+/// The version of the program.
+const VERSION: &str = env!("CARGO_PKG_VERSION");
 
 /// Runs the command.
-pub fn main() -> std::process::ExitCode {
-    std::process::ExitCode::SUCCESS
+pub fn main() -> ExitCode {
+    let arguments = match Arguments::try_parse() {
+        Ok(arguments) => arguments,
+        Err(error) => {
+            let asked = !error.use_stderr();
+            // Printing help into a closed pipe is no failure.
+            let _ = error.print();
+            return ExitCode::from(if asked { GOOD } else { NO_SENSE });
+        }
+    };
+    let code = match &arguments.task {
+        Task::Solve { sheet, json, record, cross_check } => {
+            solve(sheet, *json, record.as_deref(), *cross_check, arguments.colour)
+        }
+        Task::Check { sheet, json } => check(sheet, *json, arguments.colour),
+    };
+    ExitCode::from(code)
+}
+
+/// Writes to standard output; a reader that has gone away is no failure.
+fn say(text: &str) -> u8 {
+    let mut out = std::io::stdout().lock();
+    match out.write_all(text.as_bytes()).and_then(|()| out.flush()) {
+        Err(error) if error.kind() != std::io::ErrorKind::BrokenPipe => {
+            complain(&format!("standard output cannot be written: {error}"), None);
+            NO_SENSE
+        }
+        _ => GOOD,
+    }
+}
+
+/// An error and what to do about it, on standard error.
+fn complain(message: &str, hint: Option<&str>) {
+    eprintln!("error: {message}");
+    if let Some(hint) = hint {
+        eprintln!("hint: {hint}");
+    }
+}
+
+fn coloured(choice: Colour) -> bool {
+    match choice {
+        Colour::Always => true,
+        Colour::Never => false,
+        Colour::Auto => std::env::var_os("NO_COLOR").is_none_or(|v| v.is_empty()) && std::io::stderr().is_terminal(),
+    }
+}
+
+/// Reads and checks a sheet; faults are reported.
+fn read(name: &str, as_json: bool, colour: Colour) -> Result<(Sheet, String), u8> {
+    let text = files::sheet(name).map_err(|failure| {
+        complain(&failure.message, failure.hint);
+        NO_SENSE
+    })?;
+    match sheet::read(&text) {
+        Ok(sheet) => {
+            for warning in &sheet.warnings {
+                eprintln!("warning: {warning}");
+            }
+            Ok((sheet, text))
+        }
+        Err(found) => {
+            eprint!("{}", faults::render(name, &text, &found, coloured(colour)));
+            if as_json {
+                say(&json::faults(name, &found));
+            }
+            Err(NO_SENSE)
+        }
+    }
+}
+
+fn check(name: &str, as_json: bool, colour: Colour) -> u8 {
+    let (sheet, text) = match read(name, as_json, colour) {
+        Ok(read) => read,
+        Err(code) => return code,
+    };
+    let outcome = build::unsolved(&sheet, Origin { source: name, text: &text });
+    if as_json {
+        return say(&json::statement(&outcome, &digest(&text), VERSION));
+    }
+    let s = &sheet.statement;
+    let conditions = s.order + s.constants + s.releases;
+    let kind = if s.linear { "linear" } else { "nonlinear" };
+    let count = format!("\norder {}, {conditions} conditions, {kind}; nothing was solved\n", s.order);
+    say(&(text::statement(&outcome) + &count))
+}
+
+fn solve(name: &str, as_json: bool, record: Option<&std::path::Path>, cross_check: bool, colour: Colour) -> u8 {
+    let (sheet, text) = match read(name, as_json, colour) {
+        Ok(read) => read,
+        Err(code) => return code,
+    };
+    let origin = Origin { source: name, text: &text };
+    let progress = progress::Progress::start();
+    let solved = sheet.solve(Some(&|step| progress.step(step)));
+    progress.finish();
+    let outcome = match &solved {
+        Ok(solution) => build::solved(&sheet, solution, origin, cross_check),
+        Err(error) => build::failed(&sheet, origin, error),
+    };
+    if matches!(solved, Err(Error::Interrupted)) {
+        complain("interrupted: nothing was written", None);
+        return NOT_MET;
+    }
+    if let Some(reason) = outcome.reason.as_ref().filter(|_| outcome.status == Status::Failed) {
+        complain(&format!("{name}: {reason}"), None);
+    }
+    let digest = digest(&text);
+    let mut code = if as_json {
+        say(&json::document(&outcome, &digest, VERSION, false))
+    } else if outcome.status == Status::Failed {
+        GOOD
+    } else {
+        say(&text::results(&outcome))
+    };
+    if let Some(folder) = record
+        && let Err(failure) = files::write_record(folder, &rendered(&outcome, &digest))
+    {
+        complain(&failure.message, failure.hint);
+        code = NO_SENSE;
+    }
+    match outcome.status {
+        Status::Solved => code,
+        _ => code.max(NOT_MET),
+    }
+}
+
+/// The files of a record: name inside the folder, and content.
+fn rendered(outcome: &Outcome, digest: &str) -> Vec<(String, Vec<u8>)> {
+    crate::record::files(outcome, digest, VERSION)
+}
+
+/// SHA-256 of the sheet, in hexadecimal.
+fn digest(text: &str) -> String {
+    Sha256::digest(text.as_bytes()).iter().map(|b| format!("{b:02x}")).collect()
 }

@@ -115,15 +115,8 @@ fn mesh(outcome: &Outcome) -> Mesh {
     Mesh { elements: rows.len(), passes: outcome.passes, nodes: rows.iter().map(|r| r.nodes).collect(), ends }
 }
 
-/// The record as JSON; with `problem` the statement of the problem is included. Never holds a number that is not
-/// finite.
-pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -> String {
-    let status = match outcome.status {
-        Status::Solved => "solved",
-        Status::Inaccurate => "inaccurate",
-        Status::Failed => "failed",
-    };
-    let problem = problem.then(|| Problem {
+fn problem_of(outcome: &Outcome) -> Problem<'_> {
+    Problem {
         coordinate: &outcome.coordinate,
         unit: &outcome.coordinate_unit,
         span: [outcome.span.0, outcome.span.1],
@@ -132,8 +125,20 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
         conditions: lines(&outcome.conditions),
         data: lines(&outcome.data),
         points: outcome.features.iter().map(point).collect(),
-    });
-    let evidence = outcome.checks.iter().map(|Check { name, result, passed, .. }| Evidence { name, result, passed: *passed });
+    }
+}
+
+/// The record as JSON; with `problem` the statement of the problem is included. Never holds a number that is not
+/// finite.
+pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -> String {
+    let status = match outcome.status {
+        Status::Solved => "solved",
+        Status::Inaccurate => "inaccurate",
+        Status::Failed => "failed",
+    };
+    let problem = problem.then(|| problem_of(outcome));
+    let evidence =
+        outcome.checks.iter().map(|Check { name, result, passed, .. }| Evidence { name, result, passed: *passed });
     let checks = evidence.collect();
     let document = Document {
         program: "spanwise",
@@ -151,6 +156,31 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
         warnings: &outcome.warnings,
     };
     pretty(&document)
+}
+
+/// The problem as understood, nothing solved.
+pub fn statement(outcome: &Outcome, sha256: &str, version: &str) -> String {
+    #[derive(Serialize)]
+    struct Understood<'a> {
+        program: &'static str,
+        version: &'a str,
+        status: &'static str,
+        title: &'a str,
+        sheet: &'a str,
+        sha256: &'a str,
+        problem: Problem<'a>,
+        warnings: &'a [String],
+    }
+    pretty(&Understood {
+        program: "spanwise",
+        version,
+        status: "checked",
+        title: &outcome.title,
+        sheet: &outcome.source,
+        sha256,
+        problem: problem_of(outcome),
+        warnings: &outcome.warnings,
+    })
 }
 
 #[derive(Serialize)]

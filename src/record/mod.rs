@@ -12,3 +12,14 @@ pub mod text;
 pub mod json;
 /// The solution along the span as a table.
 pub mod csv;
+
+use outcome::Outcome;
+
+/// The files of a record: name inside its folder, and content.
+pub fn files(outcome: &Outcome, sha256: &str, version: &str) -> Vec<(String, Vec<u8>)> {
+    vec![
+        ("record.json".into(), json::document(outcome, sha256, version, true).into_bytes()),
+        ("solution.csv".into(), csv::table(outcome).into_bytes()),
+        ("sheet.toml".into(), outcome.sheet.clone().into_bytes()),
+    ]
+}

@@ -1,0 +1,74 @@
+//! Arguments as typed.
+
+use clap::builder::styling::Styles;
+use clap::{Parser, Subcommand, ValueEnum};
+use std::path::PathBuf;
+
+const EXAMPLE: &str = "\
+Example:
+  spanwise solve agitator-shaft.toml --record agitator-record
+
+  A sheet in short:
+    [given]
+    L = \"3.2 m\"
+    k = { \"0 m .. 1.1 m\" = \"0.8 W/(m K)\", else = \"0.04 W/(m K)\" }
+    [span]
+    x = [\"0 m\", \"L\"]
+    [unknowns]
+    T = \"degC\"
+    [equations]
+    conduction = \"(k*T')' = 0\"
+    [conditions]
+    inside = \"T(0 m) = 20 degC\"
+    outside = \"T(L) = -5 degC\"
+    [report]
+    \"heat flux\" = \"-k(L)*T'(L) in W/m^2\"
+
+Exit code 0: every asked number met its accuracy; 1: solved but not to the accuracy asked, or
+no solution; 2: the sheet cannot be read or makes no sense.";
+
+/// Solves problems along one coordinate, written as a calculation sheet; every number with its error bar.
+#[derive(Debug, Parser)]
+#[command(name = "spanwise", version, about, after_help = EXAMPLE, styles = Styles::plain())]
+pub(super) struct Arguments {
+    #[command(subcommand)]
+    pub task: Task,
+    /// Colours in messages
+    #[arg(long = "color", value_enum, default_value_t = Colour::Auto, global = true)]
+    pub colour: Colour,
+}
+
+#[derive(Debug, Subcommand)]
+pub(super) enum Task {
+    /// Solve a sheet and print the asked numbers
+    Solve {
+        /// The sheet; `-` reads standard input
+        sheet: String,
+        /// Print JSON instead of a table
+        #[arg(long)]
+        json: bool,
+        /// Write the record (page, plots, data) into this folder
+        #[arg(long, value_name = "DIR")]
+        record: Option<PathBuf>,
+        /// Solve by a second, independent route as well and show the difference
+        #[arg(long)]
+        cross_check: bool,
+    },
+    /// Read a sheet, count, check dimensions, show the problem as understood; solve nothing
+    Check {
+        /// The sheet; `-` reads standard input
+        sheet: String,
+        /// Print JSON instead of text
+        #[arg(long)]
+        json: bool,
+    },
+}
+
+/// When messages are coloured.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub(super) enum Colour {
+    /// On a terminal, unless NO_COLOR is set
+    Auto,
+    Always,
+    Never,
+}

@@ -1,0 +1,102 @@
+//! Reading the sheet, writing the record.
+
+use crate::sheet::MOST_BYTES;
+use std::fs::{self, File};
+use std::io::{Read, Write};
+use std::path::Path;
+
+/// What went wrong with a file, and what to do.
+pub(super) struct Failure {
+    pub message: String,
+    pub hint: Option<&'static str>,
+}
+
+impl Failure {
+    fn new(message: String, hint: Option<&'static str>) -> Self {
+        Self { message, hint }
+    }
+}
+
+/// The text of a sheet; `-` is standard input. A file above the limit is refused without being read whole.
+pub(super) fn sheet(name: &str) -> Result<String, Failure> {
+    let mut bytes = Vec::new();
+    let limit = MOST_BYTES as u64 + 1;
+    let read = if name == "-" {
+        std::io::stdin().lock().take(limit).read_to_end(&mut bytes)
+    } else {
+        File::open(name).and_then(|f| f.take(limit).read_to_end(&mut bytes))
+    };
+    if let Err(error) = read {
+        let hint = (error.kind() == std::io::ErrorKind::NotFound).then_some("check the name and the folder");
+        return Err(Failure::new(format!("{name} cannot be read: {error}"), hint));
+    }
+    if bytes.len() > MOST_BYTES {
+        let message = format!("{name} is larger than {MOST_BYTES} bytes, the limit of a sheet");
+        return Err(Failure::new(message, Some("is this the right file?")));
+    }
+    String::from_utf8(bytes).map_err(|error| {
+        let at = error.utf8_error().valid_up_to();
+        let before = error.as_bytes().get(..at).unwrap_or(&[]);
+        let line = before.iter().filter(|b| **b == b'\n').count() + 1;
+        Failure::new(format!("{name} is not UTF-8 text: line {line}"), Some("save it with the encoding UTF-8"))
+    })
+}
+
+/// Writes the files of a record. All are written under temporary names first and then renamed one by one: a file is
+/// there whole or not at all, and if one cannot be written none appears.
+pub(super) fn write_record(folder: &Path, files: &[(String, Vec<u8>)]) -> Result<(), Failure> {
+    let hint = Some("choose a folder that can be written");
+    let failed = |path: &Path, error: &std::io::Error| {
+        Failure::new(format!("the record cannot be written: {}: {error}", path.display()), hint)
+    };
+    // Folders that were not there are taken away again when something fails.
+    let mut made = Vec::new();
+    let outcome = write_all(folder, files, &mut made).map_err(|(path, error)| failed(&path, &error));
+    if outcome.is_err() {
+        for path in made.iter().rev() {
+            let _ = fs::remove_dir(path);
+        }
+    }
+    outcome
+}
+
+type Trouble = (std::path::PathBuf, std::io::Error);
+
+fn write_all(folder: &Path, files: &[(String, Vec<u8>)], made: &mut Vec<std::path::PathBuf>) -> Result<(), Trouble> {
+    let mut temporary = Vec::with_capacity(files.len());
+    for (name, content) in files {
+        let path = folder.join(name);
+        let parent = path.parent().unwrap_or(folder).to_owned();
+        make_folder(&parent, made)?;
+        let written = || {
+            let mut builder = tempfile::Builder::new();
+            builder.prefix(".record-");
+            #[cfg(unix)]
+            {
+                use std::os::unix::fs::PermissionsExt;
+                builder.permissions(fs::Permissions::from_mode(0o644));
+            }
+            let mut file = builder.tempfile_in(&parent)?;
+            file.write_all(content)?;
+            file.flush()?;
+            Ok(file)
+        };
+        temporary.push((path.clone(), written().map_err(|e| (path, e))?));
+    }
+    for (path, file) in temporary {
+        file.persist(&path).map_err(|e| (path, e.error))?;
+    }
+    Ok(())
+}
+
+fn make_folder(path: &Path, made: &mut Vec<std::path::PathBuf>) -> Result<(), Trouble> {
+    if path.is_dir() || path.as_os_str().is_empty() {
+        return Ok(());
+    }
+    if let Some(parent) = path.parent() {
+        make_folder(parent, made)?;
+    }
+    fs::create_dir(path).map_err(|e| (path.to_owned(), e))?;
+    made.push(path.to_owned());
+    Ok(())
+}
