@@ -83,6 +83,10 @@ fn write_all(folder: &Path, files: &[(String, Vec<u8>)], made: &mut Vec<std::pat
         };
         temporary.push((path.clone(), written().map_err(|e| (path, e))?));
     }
+    // A folder in the place of a file is the one thing that renaming would only find half-way.
+    if let Some((path, _)) = temporary.iter().find(|(path, _)| path.is_dir()) {
+        return Err((path.clone(), std::io::Error::from(std::io::ErrorKind::IsADirectory)));
+    }
     for (path, file) in temporary {
         file.persist(&path).map_err(|e| (path, e.error))?;
     }

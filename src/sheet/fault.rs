@@ -68,8 +68,12 @@ pub(super) fn line_and_column(text: &str, byte: usize) -> (usize, usize) {
 
 /// The name among `known` that `name` was likely meant to be.
 pub(super) fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
-    let best = known.into_iter().map(|k| (strsim::osa_distance(name, k), k)).min_by_key(|(d, _)| *d)?;
-    // A capital for a small letter always counts as near.
-    let near = best.0 <= name.chars().count().div_ceil(3) || best.1.eq_ignore_ascii_case(name);
+    let known: Vec<&str> = known.into_iter().collect();
+    // A capital for a small letter is the nearest miss of all.
+    if let Some(same) = known.iter().find(|k| k.eq_ignore_ascii_case(name)) {
+        return Some(same);
+    }
+    let best = known.into_iter().map(|k| (strsim::osa_distance(name, k), k)).min_by_key(|(d, k)| (*d, k.len()))?;
+    let near = name.chars().count() > 1 && best.0 <= name.chars().count().div_ceil(3);
     near.then_some(best.1)
 }

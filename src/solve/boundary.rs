@@ -15,8 +15,6 @@ use crate::tolerance;
 
 /// Most passes of the mesh adaptation.
 pub(super) const PASSES: usize = 40;
-/// Solves with changed coefficients.
-pub(super) const NUDGES: u64 = 4;
 /// How many nodes the answer has more than the mesh it was adapted on.
 pub(super) const ENRICH: usize = 4;
 
@@ -56,8 +54,8 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
     let between = solver.solve(&mesh.enriched(ENRICH / 2), Some(&base), &Perturbation::NONE)?.field;
     let answer = solver.solve(&mesh.enriched(ENRICH), Some(&base), &Perturbation::NONE)?;
     let mut nudged = Vec::new();
-    for seed in 0..NUDGES {
-        let nudge = Perturbation { size: tolerance::NUDGE, seed: 2385 + seed, by_piece: seed % 2 == 1 };
+    for pattern in 0..Perturbation::PATTERNS {
+        let nudge = Perturbation::nudge(pattern);
         nudged.push(solver.solve(&mesh, Some(&base), &nudge)?.field);
     }
     let companions = Companions { coarser: vec![base, between, other_rows], nudged };

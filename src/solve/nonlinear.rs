@@ -1,6 +1,6 @@
 //! Nonlinear boundary-value problems: start, mesh and iteration together, homotopy when they find no way.
 
-use super::boundary::{ENRICH, NUDGES, PASSES, Solver, wanted_tail};
+use super::boundary::{ENRICH, PASSES, Solver, wanted_tail};
 use super::{Settings, Solution};
 use crate::adapt::{exponents, refine, seed};
 use crate::error::{Error, Result};
@@ -107,8 +107,8 @@ fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<S
     let answer = run.polished(&mesh.enriched(ENRICH), &base)?;
     let condition = solver.solve(&mesh.enriched(ENRICH), Some(&base), &Perturbation::NONE)?.condition;
     let mut nudged = Vec::new();
-    for seed in 0..NUDGES {
-        let nudge = Perturbation { size: tolerance::NUDGE, seed: 2385 + seed, by_piece: seed % 2 == 1 };
+    for pattern in 0..Perturbation::PATTERNS {
+        let nudge = Perturbation::nudge(pattern);
         nudged.push(solver.solve(&mesh, Some(&base), &nudge)?.field);
     }
     let companions = Companions { coarser: vec![base, between, about], nudged };
