@@ -11,7 +11,6 @@ use crate::linear::{Library, transfer};
 use crate::mesh::Mesh;
 use crate::model::{Batch, Condition, ConditionValue, Layout, Linearised, Model, Release};
 use crate::newton::{Iteration, Linearisation, Stepper, newton};
-use crate::tolerance;
 
 /// Most steps of one iteration.
 const STEPS: usize = 40;
