@@ -8,7 +8,10 @@ use spanwise::problem::Problem;
 use spanwise::solve::Settings;
 
 fn main() -> Result<(), Error> {
-    println!("{:>8} {:>9} {:>7} {:>24} {:>9} {:>9}", "eps", "elements", "passes", "u one layer before end", "error", "bar");
+    println!(
+        "{:>8} {:>9} {:>7} {:>24} {:>9} {:>9}",
+        "eps", "elements", "passes", "u one layer before end", "error", "bar"
+    );
     for eps in [1e-3, 1e-6, 1e-9] {
         let mut problem = Problem::new(0.0, 1.0);
         let u = problem.unknown("u", 2);

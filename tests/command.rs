@@ -44,7 +44,7 @@ fn json_follows_the_contract() {
     assert_eq!(first["name"], "torque at the locked end");
     assert_eq!(first["unit"], "N m");
     let (value, error) = (first["value"].as_f64().expect("a value"), first["error"].as_f64().expect("a bar"));
-    assert!((value - 1216.849_903_612_467).abs() <= error && error < 1e-10);
+    assert!((value - 1_216.849_903_612_467).abs() <= error && error < 1e-10);
     assert_eq!(json["sha256"].as_str().map(str::len), Some(64));
 }
 

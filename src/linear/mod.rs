@@ -10,10 +10,14 @@
 
 pub(crate) mod chain;
 pub(crate) mod closure;
+pub(crate) mod condition;
 pub(crate) mod element;
+pub(crate) mod frame;
 pub(crate) mod householder;
+pub(crate) mod nudge;
 pub(crate) mod pass;
 pub(crate) mod tables;
 
+pub(crate) use nudge::Perturbation;
 pub(crate) use pass::{Pass, solve, transfer};
 pub(crate) use tables::Library;

@@ -40,6 +40,8 @@ use num_dual::DualSVec64;
 pub type Number = DualSVec64<WIDTH>;
 
 type Equation = Box<dyn Fn(&Station<'_>) -> Number + Send + Sync>;
+/// Name, places and closure of a condition.
+type Tied = (String, Vec<(f64, Side)>, Tie);
 type Tie = Box<dyn Fn(&[Station<'_>]) -> Number + Send + Sync>;
 
 /// A boundary-value problem under construction. Whether it is linear is found from its derivatives at several states.
@@ -48,7 +50,7 @@ pub struct Problem {
     unknowns: Vec<(String, usize)>,
     constants: Vec<String>,
     equations: Vec<(String, Equation)>,
-    conditions: Vec<(String, Vec<(f64, Side)>, Tie)>,
+    conditions: Vec<Tied>,
     releases: Vec<(f64, usize, usize)>,
 }
 
