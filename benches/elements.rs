@@ -1,30 +1,107 @@
-//! Cost of one linear solve against the number of elements, beside its floor: the bare factorisations.
+//! Cost of one linear solve against the number of elements, beside its floor: the bare factorisations; and the accuracy
+//! of one element against its number of nodes.
 //!
-//! Prints a table and the slope in log-log; run with `cargo bench --bench elements`.
+//! Prints tables and the slope in log-log; run with `cargo bench --bench elements`.
 
 use faer::dyn_stack::{MemBuffer, MemStack};
 use faer::linalg::lu::partial_pivoting::factor::{lu_in_place, lu_in_place_scratch};
 use faer::{MatMut, Par};
+use spanwise::error::Result;
 use spanwise::mesh::Mesh;
-use spanwise::model::{Model, Side};
+use spanwise::model::{Batch, Condition, ConditionValue, Layout, Linearised, Model, Place, Release, Side};
 use spanwise::problem::Problem;
 use spanwise::solve;
 use std::time::Instant;
 
 const NODES: usize = 16;
 
-/// A beam on many small steps of bedding: y of order 2, M of order 2.
-fn beam() -> impl Model {
-    let mut beam = Problem::new(0.0, 1000.0);
-    let y = beam.unknown("y", 2);
-    let m = beam.unknown("M", 2);
-    beam.equation("bending", move |at| at.d(y, 2) * 2.385 - at.d(m, 0));
-    beam.equation("load", move |at| at.d(m, 2) + at.d(y, 0) * 0.385 - at.x().sin());
-    for (x, side) in [(0.0, Side::Right), (1000.0, Side::Left)] {
-        beam.condition("pinned", &[(x, side)], move |v| v[0].d(y, 0));
-        beam.condition("pinned", &[(x, side)], move |v| v[0].d(m, 0));
+/// A beam on a bedding, E I y'' - M = 0, M'' + k y = sin x, pinned at both ends; written by hand, so that the engine
+/// is measured and not the evaluation of formulas.
+struct Beam {
+    layout: Layout,
+    conditions: Vec<Condition>,
+}
+
+impl Beam {
+    fn new() -> Self {
+        let pinned = |point| Condition { name: "pinned".into(), places: vec![Place { point, side: Side::Right }] };
+        Self { layout: Layout::new(&[2, 2], 0), conditions: vec![pinned(0), pinned(0), pinned(1), pinned(1)] }
     }
-    beam.build().expect("well posed")
+}
+
+impl Model for Beam {
+    fn layout(&self) -> &Layout {
+        &self.layout
+    }
+
+    fn points(&self) -> &[f64] {
+        &[0.0, 1000.0]
+    }
+
+    fn linear(&self) -> bool {
+        true
+    }
+
+    fn equations(&self, batch: &Batch<'_>, out: &mut Linearised) -> Result<()> {
+        let n = batch.x.len();
+        let jet = |k: usize, node: usize| batch.jets[k * n + node];
+        for node in 0..n {
+            // jets: y, y', y'', M, M', M''
+            out.residual[node] = 2.385 * jet(2, node) - jet(3, node);
+            out.residual[n + node] = jet(5, node) + 0.385 * jet(0, node) - batch.x[node].sin();
+            out.jets[2 * n + node] = 2.385;
+            out.jets[3 * n + node] = -1.0;
+            out.jets[(6 + 5) * n + node] = 1.0;
+            out.jets[6 * n + node] = 0.385;
+        }
+        Ok(())
+    }
+
+    fn conditions(&self) -> &[Condition] {
+        &self.conditions
+    }
+
+    fn condition(&self, index: usize, jets: &[f64], _constants: &[f64], out: &mut ConditionValue) -> Result<()> {
+        let jet = if index % 2 == 0 { 0 } else { 3 };
+        out.residual = jets[jet];
+        out.jets[jet] = 1.0;
+        Ok(())
+    }
+
+    fn releases(&self) -> &[Release] {
+        &[]
+    }
+}
+
+/// u'''' + (1 + x) u = f with u = sin(2.385 x) + x^2, clamped, in one element: errors of u, u'', u'''.
+fn accuracy() {
+    let c = 2.385f64;
+    let u = move |k: usize, x: f64| {
+        let wave = c.powi(k as i32) * (c * x + 0.5 * std::f64::consts::PI * k as f64).sin();
+        wave + [x * x, 2.0 * x, 2.0, 0.0, 0.0][k]
+    };
+    let mut beam = Problem::new(-1.0, 1.0);
+    let y = beam.unknown("u", 4);
+    beam.equation("bending", move |at| {
+        let x = at.x();
+        at.d(y, 4) + at.d(y, 0) * (1.0 + x) - (u(4, x) + (1.0 + x) * u(0, x))
+    });
+    for (x, side) in [(-1.0, Side::Right), (1.0, Side::Left)] {
+        for k in 0..2 {
+            beam.condition("clamped", &[(x, side)], move |v| v[0].d(y, k) - u(k, x));
+        }
+    }
+    let model = beam.build().expect("well posed");
+    println!("clamped beam in one element: largest error");
+    println!("{:>5} {:>9} {:>9} {:>9}", "n", "u", "u''", "u'''");
+    for n in [16, 24, 32, 48, 64, 96, 128, 160, 200] {
+        let field = solve::on_mesh(&model, &Mesh::uniform(&[-1.0, 1.0], 1, n)).expect("regular");
+        let error = |k: usize| {
+            let at = |j: usize| -1.0 + 0.01 * j as f64;
+            (0..=200).map(|j| (field.value(y, k, at(j), Side::Left) - u(k, at(j))).abs()).fold(0.0, f64::max)
+        };
+        println!("{n:>5} {:>9.1e} {:>9.1e} {:>9.1e}", error(0), error(2), error(3));
+    }
 }
 
 /// Seconds for one tall factorisation of the element's size.
@@ -51,7 +128,8 @@ fn floor() -> f64 {
 }
 
 fn main() {
-    let model = beam();
+    accuracy();
+    let model = Beam::new();
     let floor = floor();
     println!("tall factorisation {} x {}: {:.2} us", 2 * NODES + 4, 2 * NODES, 1e6 * floor);
     println!("{:>9} {:>12} {:>12} {:>7}", "elements", "s", "us/element", "/floor");

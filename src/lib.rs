@@ -25,11 +25,11 @@ pub mod field;
 pub mod quantity;
 
 /// Linear algebra of one pass: condense an element, chain the elements, close with the conditions.
-pub mod linear;
+pub(crate) mod linear;
 /// Damped Newton iteration: a nonlinear model as a sequence of linear ones.
 pub(crate) mod newton;
 /// Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.
-pub mod adapt;
+pub(crate) mod adapt;
 /// What the answer rests on: error bars, residual, second route, explanations of singular problems.
 pub mod evidence;
 /// Drivers: from a model to a solution.
