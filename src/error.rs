@@ -36,6 +36,12 @@ pub enum Error {
     /// The problem has no unique solution; the text explains which motion is free and what contradicts.
     #[error("{0}")]
     Singular(String),
+    /// The factor of the highest derivative vanishes: the equations are singular there.
+    #[error("the factor of the highest derivative vanishes at x = {x}: singular points are not covered")]
+    SingularPoint {
+        /// Where.
+        x: f64,
+    },
     /// No solution was found.
     #[error("no solution found: {tried}")]
     NoSolution {

@@ -279,3 +279,23 @@ fn a_watch_stops_the_solve() {
     p.condition("l", &[(0.0, Side::Right)], move |v| v[0].d(y, 0) - 1.0);
     assert_eq!(p.solve(&settings).err(), Some(Error::Interrupted));
 }
+
+/// A factor of the highest derivative that vanishes admits false solutions: sqrt(x) y' = f, f' = -1 would be "solved"
+/// with a jump at x = 0.
+#[test]
+fn singular_points_are_refused() {
+    for inside in [0.0, 0.385f64] {
+        let mut p = Problem::new(0.0, 1.0);
+        let (y, f) = (p.unknown("y", 1), p.unknown("f", 1));
+        p.equation("flux", move |at| {
+            at.d(y, 1) * (at.x() - inside).abs().sqrt() * (at.x() - inside).signum() - at.d(f, 0)
+        });
+        p.equation("balance", move |at| at.d(f, 1) + 1.0);
+        p.condition("left", &[(0.0, Side::Right)], move |v| v[0].d(y, 0));
+        p.condition("right", &[(1.0, Side::Left)], move |v| v[0].d(y, 0) - 1.0);
+        match p.solve(&Settings::default()) {
+            Err(Error::SingularPoint { x }) => assert!((x - inside).abs() <= 1.0 / 32.0, "{x}"),
+            other => panic!("expected a refusal, got {:?}", other.map(|s| s.condition)),
+        }
+    }
+}

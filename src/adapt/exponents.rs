@@ -69,6 +69,43 @@ pub(crate) fn scales(model: &dyn Model) -> Result<Vec<f64>> {
     Ok(scale.into_iter().map(|s| s / first).collect())
 }
 
+/// Refuses a linear model whose matrix of leading coefficients becomes singular at an end of a piece or changes the sign
+/// of its determinant within one: collocation there would admit false solutions.
+pub(crate) fn check_leading(model: &dyn Model, scale: &[f64]) -> Result<()> {
+    let layout = model.layout();
+    let (d, jets) = (layout.unknowns(), layout.jets());
+    let points = model.points();
+    let length = points[points.len() - 1] - points[0];
+    let determinant = |piece: usize, x: f64| -> Result<f64> {
+        let equations = sample(model, piece, x)?;
+        let entry = |e: usize, i: usize| {
+            let m = layout.orders()[i];
+            equations.jets[e * jets + layout.jet(i, m)] * scale[i] / length.powi(m as i32)
+        };
+        Ok(DMatrix::from_fn(d, d, entry).determinant())
+    };
+    let count = if points.len() > 100 { 2 } else { 32 };
+    for piece in 0..points.len() - 1 {
+        let (a, b) = (points[piece], points[piece + 1]);
+        let at = |k: usize| if k == count { b } else { a + (b - a) * k as f64 / count as f64 };
+        let values = (0..=count).map(|k| determinant(piece, at(k))).collect::<Result<Vec<f64>>>()?;
+        let largest = values.iter().fold(0.0f64, |s, v| s.max(v.abs()));
+        if largest == 0.0 {
+            return Err(Error::Singular(
+                "the equations do not determine the highest derivatives of all unknowns: they hide a constraint".into(),
+            ));
+        }
+        for k in 0..=count {
+            let vanishes = values[k].abs() <= 1e-15 * largest;
+            let changes = k > 0 && values[k - 1] * values[k] < 0.0;
+            if vanishes || changes {
+                return Err(Error::SingularPoint { x: at(k) });
+            }
+        }
+    }
+    Ok(())
+}
+
 /// All pieces, or an even choice of them when there are many.
 fn pieces_to_sample(pieces: usize) -> impl Iterator<Item = usize> {
     (0..pieces).step_by(pieces.div_ceil(200).max(1))

@@ -9,56 +9,79 @@ use crate::model::{Batch, Linearised, Model};
 /// The residual of the equations along the span.
 #[derive(Debug, Clone)]
 pub struct Residual {
-    /// Per element: (x, residual relative to the sum of the sizes of the terms of its equation), the
-    /// worst equation at each point.
+    /// Per element: (x, residual relative to the largest terms of its equation on the span), the worst
+    /// equation at each point.
     pub points: Vec<Vec<(f64, f64)>>,
-    /// Root of the mean square over the span, by Gauss weights.
+    /// L2 norm of the residual over that of the sum of the sizes of the terms, worst equation, by Gauss weights.
     pub norm: f64,
-    /// Largest value.
+    /// Largest value of `points`.
     pub largest: f64,
 }
 
+/// Residual and sum of the sizes of the terms of each equation at one point.
+struct At {
+    x: f64,
+    weight: f64,
+    residuals: Vec<f64>,
+    terms: Vec<f64>,
+}
+
 /// Residual of a solution at n + 3 Gauss nodes per element (not the collocation nodes, where it
-/// vanishes by construction), with its L2 norm by the Gauss weights. A residual is no error bound: it is to be
-/// read beside the condition number.
+/// vanishes by construction). A residual is no error bound: it is to be read beside the condition number.
+///
+/// # Errors
+/// Those of the model's equations.
 pub fn residual(model: &dyn Model, field: &Field) -> Result<Residual> {
-    let mut points = Vec::with_capacity(field.mesh.elements.len());
-    let (mut sum, mut largest) = (0.0, 0.0f64);
+    let d = model.layout().unknowns();
+    let mut elements: Vec<Vec<At>> = Vec::with_capacity(field.mesh.elements.len());
     let mut rule = legendre::gauss(1)?;
-    for (e, element) in field.mesh.elements.iter().enumerate() {
+    for (index, element) in field.mesh.elements.iter().enumerate() {
         if rule.len() != element.nodes + 3 {
             rule = legendre::gauss(element.nodes + 3)?;
         }
-        let values = relative(model, field, e, rule.nodes())?;
-        for ((_, r), w) in values.iter().zip(rule.weights()) {
-            sum += 0.5 * element.length() * w * r * r;
-            largest = largest.max(*r);
-        }
-        points.push(values);
+        let nodes = rule.nodes().iter().zip(rule.weights());
+        let points = nodes.map(|(s, w)| at(model, field, index, *s, 0.5 * element.length() * w));
+        elements.push(points.collect::<Result<_>>()?);
     }
-    Ok(Residual { points, norm: (sum / field.mesh.length()).sqrt(), largest })
+    let mut largest_terms = vec![0.0f64; d];
+    let mut sums = vec![[0.0f64; 2]; d];
+    for point in elements.iter().flatten() {
+        for e in 0..d {
+            largest_terms[e] = largest_terms[e].max(point.terms[e]);
+            sums[e][0] += point.weight * point.residuals[e].powi(2);
+            sums[e][1] += point.weight * point.terms[e].powi(2);
+        }
+    }
+    let share = |r: f64, t: f64| if t > 0.0 { r / t } else { 0.0 };
+    let norm = sums.iter().map(|[r, t]| share(r.sqrt(), t.sqrt())).fold(0.0, f64::max);
+    let points: Vec<Vec<(f64, f64)>> = elements
+        .iter()
+        .map(|points| {
+            let worst = |p: &At| (0..d).map(|e| share(p.residuals[e], largest_terms[e])).fold(0.0, f64::max);
+            points.iter().map(|p| (p.x, worst(p))).collect()
+        })
+        .collect();
+    let largest = points.iter().flatten().map(|p| p.1).fold(0.0, f64::max);
+    Ok(Residual { points, norm, largest })
 }
 
-/// Size of the residual of each equation on a grid that is finer than, and apart from, the collocation
-/// nodes, relative to the sum of the sizes of its terms: (x, worst equation's ratio).
-fn relative(model: &dyn Model, field: &Field, element: usize, nodes: &[f64]) -> Result<Vec<(f64, f64)>> {
+fn at(model: &dyn Model, field: &Field, element: usize, s: f64, weight: f64) -> Result<At> {
     let layout = model.layout();
-    let (d, j) = (layout.unknowns(), layout.jets());
+    let (d, j, p) = (layout.unknowns(), layout.jets(), layout.constants());
     let place = field.element(element);
-    let mut points = Vec::with_capacity(nodes.len());
-    for s in nodes {
-        let x = [place.coordinate(*s)];
-        let jets = field.jets(element, *s, layout.orders());
-        let mut at = Linearised::default();
-        at.reset(layout, 1);
-        model.equations(&Batch { piece: place.piece, x: &x, jets: &jets, constants: &field.constants }, &mut at)?;
-        let zero = sample(model, place.piece, x[0])?;
-        let ratio = (0..d).map(|e| {
-            let terms: f64 = at.jets[e * j..(e + 1) * j].iter().zip(&jets).map(|(a, u)| (a * u).abs()).sum();
-            let terms = terms + zero.residual[e].abs();
-            if terms > 0.0 { at.residual[e].abs() / terms } else { 0.0 }
-        });
-        points.push((x[0], ratio.fold(0.0, f64::max)));
-    }
-    Ok(points)
+    let x = place.coordinate(s);
+    let jets = field.jets(element, s, layout.orders());
+    let mut here = Linearised::default();
+    here.reset(layout, 1);
+    model.equations(&Batch { piece: place.piece, x: &[x], jets: &jets, constants: &field.constants }, &mut here)?;
+    let sources = sample(model, place.piece, x).map(|zero| zero.residual).unwrap_or_else(|_| vec![0.0; d]);
+    let sizes = |factors: &[f64], values: &[f64]| factors.iter().zip(values).map(|(a, u)| (a * u).abs()).sum::<f64>();
+    let terms = (0..d).map(|e| {
+        let of_jets = sizes(&here.jets[e * j..(e + 1) * j], &jets);
+        let of_constants = sizes(&here.constants[e * p..(e + 1) * p], &field.constants);
+        of_jets + of_constants + sources[e].abs()
+    });
+    let terms = terms.collect();
+    let residuals = here.residual.iter().map(|r| r.abs()).collect();
+    Ok(At { x, weight, residuals, terms })
 }

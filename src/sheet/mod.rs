@@ -181,8 +181,7 @@ impl Sheet {
         let scale = item.reckoner.scale(&solution.field).unwrap_or(f64::NAN);
         let mut remarks = Vec::new();
         if let (Ok(_), Some(extreme)) = (&value, item.reckoner.extreme(&solution.field)) {
-            let unit = &self.statement.coordinate_unit;
-            let at = |x: f64| format!("{} {}", short(unit.from_si(x)), unit.text);
+            let at = |x: f64| self.shown(x);
             match extreme.side {
                 Some(Side::Left) => remarks.push(format!("just left of the break at {}", at(extreme.place.value))),
                 Some(Side::Right) => remarks.push(format!("just right of the break at {}", at(extreme.place.value))),
@@ -206,10 +205,16 @@ impl Sheet {
         self.report.iter().map(|item| Ok(item.reckoner.number(field, &Memory::default())?.value)).collect()
     }
 
+    /// A coordinate in the unit of the span.
+    fn shown(&self, x: f64) -> String {
+        let unit = &self.statement.coordinate_unit;
+        let number = short(unit.from_si(x));
+        if unit.text == "1" { number } else { format!("{number} {}", unit.text) }
+    }
+
     /// An error of the engine in the words and units of the sheet.
     pub fn reason(&self, error: &Error) -> String {
-        let unit = &self.statement.coordinate_unit;
-        let at = |x: f64| format!("{} = {} {}", self.statement.coordinate, short(unit.from_si(x)), unit.text);
+        let at = |x: f64| format!("{} = {}", self.statement.coordinate, self.shown(x));
         match error {
             Error::NotFinite { what, x } if x.is_finite() => {
                 format!(
@@ -221,6 +226,10 @@ impl Sheet {
             Error::Unresolved { elements, x } => {
                 format!("{elements} elements do not resolve the solution near {}", at(*x))
             }
+            Error::SingularPoint { x } => format!(
+                "the factor of the highest derivative vanishes at {}: singular points are not part of this version",
+                at(*x)
+            ),
             other => other.to_string(),
         }
     }

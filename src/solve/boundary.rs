@@ -30,6 +30,7 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
         return nonlinear(model, settings);
     }
     let scale = exponents::scales(model)?;
+    exponents::check_leading(model, &scale)?;
     let mut mesh = seed::seed(model, &scale, settings.most_elements)?;
     let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
     let mut solver = Solver { model, settings, scale, library: Library::new(depth), pass: 0 };
