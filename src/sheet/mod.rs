@@ -6,13 +6,21 @@
 //! asked numbers from a solution.
 
 mod along;
+mod arithmetic;
 mod assemble;
+mod call;
 mod carry;
 mod condition;
+mod count;
+mod describe;
+mod draw;
 mod fault;
 mod functional;
+mod guard;
 mod lower;
 mod model;
+mod piece;
+mod points;
 mod source;
 mod statement;
 

@@ -1,0 +1,159 @@
+//! Conditions against order: releases, counts, integrals that run along.
+
+use super::assemble::Assembler;
+use super::condition::{Read, Running};
+use super::functional::Kind as Asked;
+use super::short;
+use crate::formula::graph::NodeId;
+use crate::model::Release;
+use std::collections::BTreeSet;
+
+impl Assembler<'_, '_> {
+    pub(super) fn releases(&mut self, reads: &[Read], orders: &[u8], points: &[f64]) -> Option<Vec<Release>> {
+        let mut releases = Vec::new();
+        for read in reads {
+            let Some((what, point, text)) = &read.release else { continue };
+            let x = self.lowerer.number_of(*point)?;
+            let near = |k: &usize| (points[*k] - x).abs();
+            let point = (0..points.len()).min_by(|p, q| near(p).total_cmp(&near(q)))?;
+            let state = self.lowerer.state_of(*what).filter(|(u, k)| *k < orders[usize::from(*u)]);
+            let Some((unknown, order)) = state else {
+                let message = format!("`{text}` is not one of the continuous quantities of this problem");
+                let hint = "name an unknown, one of its lower derivatives, or a flux as it stands in the equation";
+                self.lowerer.faults.add("release", read.at.span.clone(), message, Some(hint.into()));
+                continue;
+            };
+            let release = Release { point, unknown: usize::from(unknown), order: usize::from(order) };
+            if releases.contains(&release) {
+                let message = format!("the continuity of `{text}` is given up twice at this point");
+                self.lowerer.faults.add("release", read.at.span.clone(), message, None);
+            } else {
+                releases.push(release);
+            }
+        }
+        self.lowerer.faults.is_empty().then_some(releases)
+    }
+
+    /// Conditions must number order + constants + releases.
+    pub(super) fn check_count(&mut self, reads: &[Read], orders: &[u8], releases: usize, points: &[f64]) -> Option<()> {
+        let order: usize = orders.iter().map(|m| usize::from(*m)).sum();
+        let constants = self.lowerer.constants.len();
+        let needed = order + constants + releases;
+        let given = reads.iter().filter(|r| r.node.is_some()).count();
+        if given == needed {
+            return Some(());
+        }
+        let unit = self.coordinate_unit();
+        let shown = |x: f64| format!("{} = {} {}", self.lowerer.coordinate, short(unit.from_si(x)), unit.text);
+        let (mut from, mut to, mut inner, mut spread) = (0, 0, 0, 0);
+        for node in reads.iter().filter_map(|r| r.node) {
+            let slots: Vec<u32> = self.lowerer.graph.slots_of(node).into_iter().collect();
+            let places: Vec<f64> = slots
+                .iter()
+                .flat_map(|s| self.lowerer.functionals[*s as usize].points.clone())
+                .filter_map(|p| self.lowerer.number_of(p))
+                .collect();
+            let integral = slots.iter().any(|s| self.lowerer.functionals[*s as usize].kind == Asked::Integral);
+            let small = 1e-12 * (points[points.len() - 1] - points[0]);
+            let all = |x: f64| !places.is_empty() && !integral && places.iter().all(|p| (p - x).abs() <= small);
+            if all(points[0]) {
+                from += 1;
+            } else if all(points[points.len() - 1]) {
+                to += 1;
+            } else if places.len() == 1 || (places.len() > 1 && places.iter().all(|p| (p - places[0]).abs() <= small)) {
+                inner += 1;
+            } else {
+                spread += 1;
+            }
+        }
+        let mut parts = vec![format!("order {order}")];
+        if constants > 0 {
+            parts.push(format!("{constants} unknown constant{}", if constants == 1 { "" } else { "s" }));
+        }
+        if releases > 0 {
+            parts.push(format!(
+                "{releases} jump{} or release{}",
+                if releases == 1 { "" } else { "s" },
+                if releases == 1 { "" } else { "s" }
+            ));
+        }
+        let mut sides =
+            vec![format!("{from} at {}", shown(points[0])), format!("{to} at {}", shown(points[points.len() - 1]))];
+        if inner > 0 {
+            sides.push(format!("{inner} inside"));
+        }
+        if spread > 0 {
+            sides.push(format!("{spread} over several points"));
+        }
+        let message =
+            format!("{needed} conditions are needed ({}), {given} given: {}", parts.join(", "), sides.join(", "));
+        let place = self.source.conditions.last().map_or_else(
+            || self.source.equations.last().map_or(0..0, |e| e.name_span.clone()),
+            |c| c.name_span.clone(),
+        );
+        let hint = if given < needed {
+            let each: Vec<String> = self
+                .lowerer
+                .functions
+                .iter()
+                .enumerate()
+                .map(|(u, f)| format!("`{}` (order {})", f.name, self.true_order(u, orders)))
+                .collect();
+            let short = needed - given;
+            let end = if from < to { shown(points[0]) } else { shown(points[points.len() - 1]) };
+            format!("{short} more, most likely at {end}; unknowns: {}", each.join(", "))
+        } else {
+            format!("{} too many", given - needed)
+        };
+        self.lowerer.faults.add("condition count", place, message, Some(hint));
+        None
+    }
+
+    /// Order of an unknown with the fluxes that follow from it.
+    pub(super) fn true_order(&self, unknown: usize, orders: &[u8]) -> usize {
+        let own = usize::from(orders[unknown]);
+        let mut total = own;
+        for (k, carried) in self.lowerer.carried.iter().enumerate() {
+            let first = self.lowerer.graph.jets_of(carried.written).into_iter().next();
+            if first.is_some_and(|(u, _)| usize::from(u) == unknown) {
+                total += usize::from(orders[self.lowerer.functions.len() + k]);
+            }
+        }
+        total
+    }
+
+    pub(super) fn running(&mut self, reads: &[Read], given: usize) -> Vec<(usize, Running)> {
+        let mut slots: BTreeSet<u32> = BTreeSet::new();
+        for node in reads.iter().filter_map(|r| r.node) {
+            slots.extend(self.lowerer.graph.slots_of(node));
+        }
+        let integrals = slots.into_iter().filter(|s| self.lowerer.functionals[*s as usize].kind == Asked::Integral);
+        integrals
+            .enumerate()
+            .map(|(k, slot)| {
+                let functional = &self.lowerer.functionals[slot as usize];
+                let ends = match functional.points[..] {
+                    [from, to] => Some([from, to]),
+                    _ => None,
+                };
+                let unknown = (given + k) as u16;
+                (slot as usize, Running { unknown, integrand: functional.expression, ends })
+            })
+            .collect()
+    }
+
+    /// I' - integrand = 0 inside the stretch, I' = 0 outside.
+    pub(super) fn running_equation(&mut self, run: &Running) -> NodeId {
+        let graph = &mut self.lowerer.graph;
+        let zero = graph.number(0.0);
+        let mut inside = graph.expand(run.integrand);
+        if let Some([from, to]) = run.ends {
+            let x = graph.coordinate();
+            let (below, above) = (graph.subtract(x, from), graph.subtract(x, to));
+            inside = graph.choose(above, true, inside, zero);
+            inside = graph.choose(below, true, zero, inside);
+        }
+        let slope = graph.jet(run.unknown, 1);
+        graph.subtract(slope, inside)
+    }
+}

@@ -1,0 +1,196 @@
+//! Ends and breaks: where the span is cut.
+
+use super::assemble::Assembler;
+use super::condition::Read;
+use super::lower::{Formula, Meaning};
+use super::{Wanted, short};
+use crate::formula::graph::{Inputs, NodeId};
+use crate::formula::syntax::{self, Expression, Kind};
+use crate::unit::Unit;
+use std::collections::BTreeSet;
+use std::ops::Range;
+
+/// Most points (ends and breaks) of a sheet.
+const MOST_POINTS: usize = 20_000;
+
+impl Assembler<'_, '_> {
+    /// Further breaks, with their places.
+    pub(super) fn breaks(&mut self) -> Vec<(f64, Range<usize>)> {
+        let mut breaks = Vec::new();
+        for at in &self.source.breaks {
+            let Some(formula) = self.lowerer.parse(at) else { continue };
+            let Some(typed) = self.lowerer.lower(at, &formula.tree) else { continue };
+            let wanted = self.lowerer.coordinate_dimension;
+            if self.lowerer.expect(at, &formula.tree, typed, wanted).is_none() {
+                continue;
+            }
+            match self.lowerer.number_of(typed.node) {
+                Some(x) => breaks.push((x, at.span.clone())),
+                None => {
+                    self.lowerer.fault::<()>("break", at, &formula.tree.span, "a break must be a datum", "");
+                }
+            }
+        }
+        breaks
+    }
+
+    /// Ends and breaks, ascending; places outside the span are faults.
+    pub(super) fn points(
+        &mut self,
+        span: [f64; 2],
+        equations: &[NodeId],
+        reads: &[Read],
+        breaks: &[(f64, Range<usize>)],
+        wanted: &[Wanted],
+    ) -> Option<Vec<f64>> {
+        let length = span[1] - span[0];
+        // Points that differ by rounding are one point.
+        let small = 1e-13 * length.max(span[0].abs()).max(span[1].abs());
+        let inside = |x: f64| x >= span[0] - small && x <= span[1] + small;
+        let unit = self.coordinate_unit();
+        let shown = |x: f64| format!("{} {}", short(unit.from_si(x)), unit.text);
+        let mut points = span.to_vec();
+        for (x, place) in breaks {
+            if inside(*x) {
+                points.push(*x);
+            } else {
+                let message = format!("the break at {} lies outside the span", shown(*x));
+                self.lowerer.faults.add("outside", place.clone(), message, None);
+            }
+        }
+        for (node, place) in self.lowerer.limits.clone() {
+            let Some(x) = self.lowerer.number_of(node) else { continue };
+            if inside(x) {
+                points.push(x);
+            } else {
+                let message = format!("this piece ends at {}, outside the span", shown(x));
+                self.lowerer.faults.add("outside", place, message, None);
+            }
+        }
+        let mut used: BTreeSet<u32> = BTreeSet::new();
+        let mut own: Vec<NodeId> = equations.to_vec();
+        for read in reads {
+            used.extend(read.node.iter().flat_map(|n| self.lowerer.graph.slots_of(*n)));
+            if let Some((_, point, _)) = &read.release {
+                match self.lowerer.number_of(*point) {
+                    Some(x) if x > span[0] + small && x < span[1] - small => points.push(x),
+                    _ => {
+                        let message = "a jump or release must lie at a point inside the span";
+                        self.lowerer.faults.add("outside", read.at.span.clone(), message, None);
+                    }
+                }
+            }
+        }
+        for slot in used {
+            let functional = self.lowerer.functionals[slot as usize].clone();
+            own.push(functional.expression);
+            for node in &functional.points {
+                match self.lowerer.number_of(*node) {
+                    Some(x) if inside(x) => points.push(x),
+                    Some(x) => {
+                        let message = format!("this point, {}, lies outside the span", shown(x));
+                        self.lowerer.faults.add("outside", functional.place.clone(), message, None);
+                    }
+                    None => {}
+                }
+            }
+        }
+        for functional in self.lowerer.functionals.clone() {
+            own.push(functional.expression);
+            for node in &functional.points {
+                if let Some(x) = self.lowerer.number_of(*node).filter(|x| !inside(*x)) {
+                    let message = format!("this point, {}, lies outside the span", shown(x));
+                    self.lowerer.faults.add("outside", functional.place.clone(), message, None);
+                }
+            }
+        }
+        own.extend(wanted.iter().map(|w| w.node));
+        for test in self.lowerer.graph.piece_tests(&own) {
+            points.extend(self.sign_changes(test.gap, span));
+        }
+        points.iter_mut().for_each(|x| *x = x.clamp(span[0], span[1]));
+        points.sort_by(f64::total_cmp);
+        let mut merged: Vec<f64> = Vec::with_capacity(points.len());
+        for x in points {
+            match merged.last() {
+                Some(last) if x - last <= small => {}
+                _ => merged.push(x),
+            }
+        }
+        // The last end stays what was written.
+        if let Some(last) = merged.last_mut() {
+            *last = span[1];
+        }
+        if merged.len() > MOST_POINTS {
+            let place = self.source.coordinate.as_ref().map_or(0..0, |c| c.name_span.clone());
+            let message = format!("the sheet has {} breaks; at most {MOST_POINTS} are allowed", merged.len() - 2);
+            self.lowerer.faults.add("too large", place, message, None);
+        }
+        self.lowerer.faults.is_empty().then_some(merged)
+    }
+
+    /// Where an expression of the coordinate and data changes sign inside the span.
+    pub(super) fn sign_changes(&mut self, gap: NodeId, span: [f64; 2]) -> Vec<f64> {
+        let slope = self.lowerer.graph.total(gap);
+        let graph = &self.lowerer.graph;
+        let at = |x: f64| graph.evaluate::<f64>(gap, &Inputs::at(x));
+        if let Some(slope) = graph.as_number(slope) {
+            // Straight: the crossing is exact.
+            let x = -at(0.0) / slope;
+            return if x > span[0] && x < span[1] { vec![x] } else { Vec::new() };
+        }
+        let samples = 2000;
+        let place = |k: usize| span[0] + (span[1] - span[0]) * k as f64 / samples as f64;
+        let mut changes = Vec::new();
+        for k in 0..samples {
+            let (mut a, mut b) = (place(k), place(k + 1));
+            let (left, right) = (at(a), at(b));
+            if left == 0.0 && k > 0 {
+                changes.push(a);
+            }
+            if (left < 0.0) == (right < 0.0) || left == 0.0 || right == 0.0 {
+                continue;
+            }
+            for _ in 0..200 {
+                let middle = 0.5 * (a + b);
+                if middle <= a || middle >= b {
+                    break;
+                }
+                if (at(middle) < 0.0) == (left < 0.0) { a = middle } else { b = middle }
+            }
+            changes.push(b);
+        }
+        changes
+    }
+
+    /// The unit in which the ends of the span are written.
+    pub(super) fn coordinate_unit(&self) -> Unit {
+        fn first(tree: &Expression) -> Option<Unit> {
+            match &tree.kind {
+                Kind::Number { unit, .. } => unit.clone(),
+                Kind::Negate(a) => first(a),
+                Kind::Binary(_, a, b) => first(a).or_else(|| first(b)),
+                _ => None,
+            }
+        }
+        let dimension = self.lowerer.coordinate_dimension.unwrap_or_default();
+        let mut queue: Vec<Expression> = Vec::new();
+        for at in self.source.coordinate.iter().flat_map(|c| &c.value) {
+            queue.extend(syntax::parse(&at.text).ok());
+        }
+        let mut named = Vec::new();
+        for tree in &queue {
+            if let Some(unit) = first(tree).filter(|u| u.dimension == dimension) {
+                return unit;
+            }
+            if let Kind::Name(name) = &tree.kind {
+                named.push(name.clone());
+            }
+        }
+        let by_name = named.iter().find_map(|name| match self.lowerer.meanings.get(name) {
+            Some(Meaning::Formula(Formula { tree, .. })) => first(tree).filter(|u| u.dimension == dimension),
+            _ => None,
+        });
+        by_name.unwrap_or_else(|| Unit::si(dimension))
+    }
+}
