@@ -14,8 +14,8 @@ use crate::model::{Batch, ConditionValue, Layout, Linearised, Model, Place, Side
 use crate::operator;
 use nalgebra::{DMatrix, DVector};
 
-/// Largest dense system: 200 MB.
-const LARGEST: usize = 5000;
+/// Largest dense system: some two seconds of factorisation.
+const LARGEST: usize = 3000;
 
 /// Solves a linear problem on a mesh by the second route.
 ///

@@ -1,17 +1,17 @@
 //! Formulas: text, tree, derivative, fast evaluation.
 //!
 //! A formula passes three forms: text, a syntax tree whose every part knows its place in the text
-//! ([`syntax`](crate::formula::syntax)), and nodes of a [`graph`](crate::formula::graph) in SI units, from which
-//! derivatives are taken and a [`tape`](crate::formula::tape) is compiled.
+//! ([`syntax`]), and nodes of a [`graph`] in SI units, from which
+//! derivatives are taken and a [`tape`] is compiled.
 
-/// The checked formula as a shared graph: simplification, total and partial derivatives.
+// The checked formula as a shared graph: simplification, total and partial derivatives.
 pub mod graph;
-/// What formulas are evaluated with: plain numbers, and numbers with a running error bound.
+// What formulas are evaluated with: plain numbers, and numbers with a running error bound.
 pub mod number;
 /// Random formulas for tests.
 #[cfg(test)]
 pub(crate) mod random;
-/// Text to syntax tree, with places.
+// Text to syntax tree, with places.
 pub mod syntax;
-/// Instruction lists: evaluation over many nodes at once.
+// Instruction lists: evaluation over many nodes at once.
 pub mod tape;

@@ -1,8 +1,8 @@
 //! The calculation sheet: from a file to a located, checked model in SI units.
 //!
 //! [`read`] takes the text through these stages, noting all faults on the way: sections and located texts
-//! ([`source`]), syntax and names ([`lower`]), fluxes ([`carry`]), conditions ([`condition`]), points, orders and
-//! counts ([`assemble`]), and at last the model that the engine solves ([`model`]). [`Sheet::evaluate`] makes the
+//! (`source`), syntax and names (`lower`), fluxes (`carry`), conditions (`condition`), points, orders and
+//! counts (`assemble`), and at last the model that the engine solves (`model`). [`Sheet::evaluate`] makes the
 //! asked numbers from a solution.
 
 mod along;
