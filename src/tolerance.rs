@@ -30,11 +30,11 @@ pub const NUDGE: f64 = 1e-12;
 
 /// Safety factor on the largest difference between the answer and its companions on other meshes: each is one sample
 /// of truncation and rounding, of the same size as the error of the answer or larger.
-pub const TRUNCATION: f64 = 3.0;
+pub const TRUNCATION: f64 = 5.0;
 
 /// How many roundings enter a coefficient: data are products of a few rounded numbers, and each solve adds
 /// some.
-pub const DATA: f64 = 2.0;
+pub const DATA: f64 = 4.0;
 
 /// Rounding of the number itself and of its conversion to a unit, relative.
 pub const LAST_PLACE: f64 = 4.0 * ROUNDOFF;
