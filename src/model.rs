@@ -184,6 +184,17 @@ pub trait Model: Sync {
     fn condition(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> Result<()>;
     /// Continuities given up (one entry also for each that a jump condition replaces).
     fn releases(&self) -> &[Release];
+    /// Bounds for the rounding errors in what [`Model::equations`] gives at the nodes of a batch, in the same layout; false
+    /// if nothing is known (then a few units in the last place are assumed). `out` has been reset.
+    fn equation_rounding(&self, batch: &Batch<'_>, out: &mut Linearised) -> bool {
+        let _ = (batch, out);
+        false
+    }
+    /// The same for a condition.
+    fn condition_rounding(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> bool {
+        let _ = (index, jets, constants, out);
+        false
+    }
     /// Whether jets at x lie where the equations are meant to hold (`above`, `below` of a sheet).
     fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
         let _ = (x, jets, constants);

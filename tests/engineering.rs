@@ -94,3 +94,21 @@ fn second_route_agrees_on_every_linear_sheet() {
         }
     }
 }
+
+/// 1.000000001 - 1 keeps seven digits only: the answer is that uncertain, and the bar must say so, without asking for more
+/// than the data deserve.
+#[test]
+fn data_that_cancel_widen_the_bar() {
+    let text = "[given]\nc = \"(1.000000001 - 1)*1e9\"\np = \"(1.0000001 - 1)*1e7\"\n[span]\nx = [\"0\", \"1\"]\n\
+                [unknowns]\ny = \"1\"\n[equations]\ne = \"y'' = -c\"\n[conditions]\na = \"y(0) = 0\"\nb = \"y(1) = p\"\n\
+                [report]\nm = \"y(0.5)\"\ns = \"y'(1)\"\n";
+    let sheet = sheet::read(text).unwrap_or_else(|faults| panic!("{faults:#?}"));
+    let solution = sheet.solve(None).expect("regular");
+    // By decimals c = 1 and p = 1: y = x/2 - x^2/2 + x.
+    for (asked, exact) in sheet.evaluate(&solution).iter().zip([0.625, 0.5]) {
+        let got = asked.printed().expect("a value");
+        let error = (got.value - exact).abs();
+        assert!(error > 1e-12, "the data cancel less than thought: {error:e}");
+        assert!(error <= got.error && got.error < 1e-6, "{}: error {error:e}, bar {:e}", asked.label, got.error);
+    }
+}

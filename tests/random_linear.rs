@@ -85,7 +85,8 @@ fn second_order_with_steps() {
         for (k, x) in points.iter().enumerate() {
             let jump = (p(k + 1, *x) - p(k, *x)) * u.at(1, *x);
             problem.release(*x, g, 0);
-            problem.condition("step", &[(*x, Side::Left), (*x, Side::Right)], move |v| v[1].d(g, 0) - v[0].d(g, 0) - jump);
+            problem
+                .condition("step", &[(*x, Side::Left), (*x, Side::Right)], move |v| v[1].d(g, 0) - v[0].d(g, 0) - jump);
         }
         let kind = (random.next() * 3.0) as usize;
         problem.condition("left", &[(from, Side::Right)], move |v| v[0].d(y, 0) - u.at(0, from));
@@ -112,7 +113,8 @@ fn second_order_with_steps() {
         let antiderivative = |x: f64| -a / b * (b * x + c).cos() + d / e * (e * x).exp();
         let exact = antiderivative(to) - antiderivative(from);
         // The closed form itself cancels: what it is known to counts with the bar.
-        let known = 4.0 * f64::EPSILON * ((a / b).abs() + (d / e * (e * to).exp()).abs() + (d / e * (e * from).exp()).abs());
+        let known =
+            4.0 * f64::EPSILON * ((a / b).abs() + (d / e * (e * to).exp()).abs() + (d / e * (e * from).exp()).abs());
         let scale = size * length;
         tally.add(format!("case {case} integral"), (mean.value - exact).abs() / scale, (mean.error + known) / scale);
     }

@@ -28,13 +28,14 @@ pub(super) fn linear_condition(
     let mut value = ConditionValue::default();
     value.reset(layout, condition.places.len());
     let zeros = vec![0.0; condition.places.len() * layout.jets()];
-    model.condition(index, &zeros, &vec![0.0; layout.constants()], &mut value)?;
+    let none = vec![0.0; layout.constants()];
+    model.condition(index, &zeros, &none, &mut value)?;
     let entries = value.jets.iter().chain(&value.constants).chain([&value.residual]);
     if !entries.into_iter().all(|v| v.is_finite()) {
         let x = condition.places.first().map_or(0.0, |p| model.points()[p.point]);
         return Err(Error::NotFinite { what: format!("condition {}", condition.name), x });
     }
-    perturbation.apply_condition(index, &mut value);
+    perturbation.apply_condition(model, index, &zeros, &none, &mut value);
     let mut tail = value.constants.clone();
     tail.push(value.residual);
     let mut places = Vec::with_capacity(condition.places.len());
@@ -76,10 +77,11 @@ fn replace_highest(
     let x = [model.points()[place.point]];
     let mut equations = Linearised::default();
     equations.reset(layout, 1);
-    let batch = Batch { piece, x: &x, jets: &vec![0.0; jets], constants: &vec![0.0; constants] };
+    let (zeros, none) = (vec![0.0; jets], vec![0.0; constants]);
+    let batch = Batch { piece, x: &x, jets: &zeros, constants: &none };
     model.equations(&batch, &mut equations)?;
     check_finite(model, &x, &equations)?;
-    perturbation.apply(piece, layout, 1, &mut equations);
+    perturbation.apply(model, &batch, &mut equations);
     let leading = DMatrix::from_fn(d, d, |e, i| equations.jets[e * jets + layout.jet(i, layout.orders()[i])]);
     // highest . A_m^-1 as weights of the equations
     let weights = leading.transpose().full_piv_lu().solve(&DVector::from_column_slice(highest));

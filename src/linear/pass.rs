@@ -51,9 +51,10 @@ pub(crate) fn solve(
         let x: Vec<f64> = tables.nodes.iter().map(|s| element.coordinate(*s)).collect();
         equations.reset(layout, x.len());
         let jets = &zeros[..layout.jets() * x.len()];
-        model.equations(&Batch { piece: element.piece, x: &x, jets, constants: &none }, &mut equations)?;
+        let batch = Batch { piece: element.piece, x: &x, jets, constants: &none };
+        model.equations(&batch, &mut equations)?;
         check_finite(model, &x, &equations)?;
-        perturbation.apply(element.piece, layout, x.len(), &mut equations);
+        perturbation.apply(model, &batch, &mut equations);
         let local = Sizes { common: scale, local: &sizes[index] };
         let Condensed { rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
         responses.push(Response { values: response, ratios: ratios(layout, x.len(), &equations) });

@@ -2,7 +2,8 @@
 
 use crate::error::Result;
 use crate::formula::graph::{Graph, NodeId, Variable};
-use crate::formula::tape::{Tape, TapeInputs, Workspace};
+use crate::formula::number::Rounded;
+use crate::formula::tape::{ScalarInputs, Tape, TapeInputs, Workspace};
 use crate::model::{Batch, Condition, ConditionValue, Layout, Linearised, Model, Place, Release};
 use std::sync::{Mutex, PoisonError};
 
@@ -64,6 +65,29 @@ impl Equations {
         }
         lock().push((work, values));
     }
+
+    /// Bounds for the rounding in all outputs, node by node.
+    fn rounding(&self, layout: &Layout, batch: &Batch<'_>, out: &mut Linearised) {
+        let n = batch.x.len();
+        let mut scratch = Vec::new();
+        let mut values = vec![Rounded::exact(0.0); self.outputs.len()];
+        let constants: Vec<Rounded> = batch.constants.iter().map(|c| Rounded::exact(*c)).collect();
+        for node in 0..n {
+            let jets: Vec<Rounded> = batch.jets.chunks_exact(n).map(|row| Rounded::exact(row[node])).collect();
+            let x = Rounded { value: batch.x[node], error: 0.5 * f64::EPSILON * batch.x[node].abs() };
+            let tests = &self.tests[batch.piece];
+            let inputs = ScalarInputs { x, jets: &jets, constants: &constants, slots: &[], tests };
+            self.tape.run_scalar(&mut scratch, &inputs, &mut values);
+            for (output, value) in self.outputs.iter().zip(&values) {
+                let to = match *output {
+                    Output::Residual(e) => &mut out.residual[e * n + node],
+                    Output::Jet(e, jet) => &mut out.jets[(e * layout.jets() + jet) * n + node],
+                    Output::Constant(e, c) => &mut out.constants[(e * layout.constants() + c) * n + node],
+                };
+                *to = if value.error.is_finite() { value.error } else { 0.0 };
+            }
+        }
+    }
 }
 
 /// A condition as a formula of the jets at its places: slot k holds the jet `reads[k]`.
@@ -100,6 +124,27 @@ impl Tie {
         }
         for (constant, value) in self.constants.iter().zip(&values[1 + self.reads.len()..]) {
             out.constants[*constant] = *value;
+        }
+    }
+}
+
+impl Tie {
+    /// Bounds for the rounding in all outputs.
+    fn rounding(&self, layout: &Layout, jets: &[f64], constants: &[f64], out: &mut ConditionValue) {
+        let exact = |values: &[f64]| values.iter().map(|v| Rounded::exact(*v)).collect::<Vec<Rounded>>();
+        let slots: Vec<f64> = self.reads.iter().map(|(place, jet)| jets[place * layout.jets() + jet]).collect();
+        let mut values = vec![Rounded::exact(0.0); self.tape.outputs()];
+        let (slots, constants) = (exact(&slots), exact(constants));
+        let inputs =
+            ScalarInputs { x: Rounded::exact(f64::NAN), jets: &[], constants: &constants, slots: &slots, tests: &[] };
+        self.tape.run_scalar(&mut Vec::new(), &inputs, &mut values);
+        let bound = |v: &Rounded| if v.error.is_finite() { v.error } else { 0.0 };
+        out.residual = bound(&values[0]);
+        for ((place, jet), value) in self.reads.iter().zip(&values[1..]) {
+            out.jets[place * layout.jets() + jet] += bound(value);
+        }
+        for (constant, value) in self.constants.iter().zip(&values[1 + self.reads.len()..]) {
+            out.constants[*constant] = bound(value);
         }
     }
 }
@@ -172,6 +217,16 @@ impl Model for SheetModel {
 
     fn releases(&self) -> &[Release] {
         &self.releases
+    }
+
+    fn equation_rounding(&self, batch: &Batch<'_>, out: &mut Linearised) -> bool {
+        self.equations.rounding(&self.layout, batch, out);
+        true
+    }
+
+    fn condition_rounding(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> bool {
+        self.ties[index].rounding(&self.layout, jets, constants, out);
+        true
     }
 
     fn admissible(&self, _x: f64, jets: &[f64], constants: &[f64]) -> bool {
