@@ -62,7 +62,7 @@ impl Model for Beam {
     }
 
     fn condition(&self, index: usize, jets: &[f64], _constants: &[f64], out: &mut ConditionValue) -> Result<()> {
-        let jet = if index % 2 == 0 { 0 } else { 3 };
+        let jet = if index.is_multiple_of(2) { 0 } else { 3 };
         out.residual = jets[jet];
         out.jets[jet] = 1.0;
         Ok(())

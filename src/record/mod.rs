@@ -10,6 +10,10 @@ pub mod number;
 pub mod text;
 /// Results for programs.
 pub mod json;
+/// Curves along the span, residual, decay as SVG.
+pub mod plot;
+/// The record as a page.
+pub mod page;
 /// The solution along the span as a table.
 pub mod csv;
 
@@ -17,9 +21,13 @@ use outcome::Outcome;
 
 /// The files of a record: name inside its folder, and content.
 pub fn files(outcome: &Outcome, sha256: &str, version: &str) -> Vec<(String, Vec<u8>)> {
-    vec![
+    let (page, plots) = page::with_plots(outcome, sha256, version);
+    let mut files = vec![
+        ("record.html".into(), page.into_bytes()),
         ("record.json".into(), json::document(outcome, sha256, version, true).into_bytes()),
         ("solution.csv".into(), csv::table(outcome).into_bytes()),
         ("sheet.toml".into(), outcome.sheet.clone().into_bytes()),
-    ]
+    ];
+    files.extend(plots.into_iter().map(|p| (format!("plots/{}", p.file), p.svg.into_bytes())));
+    files
 }
