@@ -5,6 +5,7 @@ use super::condition::{Placed, Read};
 use super::fault::{Fault, Faults};
 use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
+use super::reduce::Reduction;
 use super::source::{self, Given, Located, MOST_BYTES, Source};
 use super::{Item, Sheet, Wanted};
 use crate::formula::graph::NodeId;
@@ -59,16 +60,16 @@ impl<'s, 'f> Assembler<'s, 'f> {
         self.lowerer.carried = fluxes.iter().map(|f| Carried { written: f.written, unknown: f.unknown }).collect();
         self.names();
         let reads = self.conditions();
+        self.lowerer.reporting = true;
         let wanted = self.report();
+        self.lowerer.reporting = false;
         let breaks = self.breaks();
-        let ((equations, fluxes), span) = (equations?, span?);
-        if !self.lowerer.faults.is_empty() {
-            // Orders and counts only make sense for a sheet whose parts do.
-            return None;
-        }
-        let (nodes, names) = self.all_equations(&equations, &fluxes);
-        let reads = reads?;
-        let points = self.points(span, &nodes, &reads, &breaks, &wanted)?;
+        self.check_smooth();
+        let understood = equations.as_ref().map(|(e, f)| self.all_equations(e, f));
+        let nodes: &[NodeId] = understood.as_ref().map_or(&[], |u| &u.0);
+        // Each check runs as soon as what it needs is there: all faults in one pass.
+        let points = span.map(|span| self.points(span, nodes, reads.as_deref().unwrap_or(&[]), &breaks, &wanted));
+        let ((equations, fluxes), (nodes, names), points) = (equations?, understood?, points?);
         self.build(equations, fluxes, nodes, names, reads, wanted, points)
     }
 
@@ -231,7 +232,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             let hint = "write it inside the derivative, (k*T')', or divide the equation by it";
             self.lowerer.fault::<()>("stepped datum", &at, &(0..at.text.len()), message, hint);
         }
-        complete.then_some((lowered, fluxes))
+        (complete && lowered.len() == functions).then_some((lowered, fluxes))
     }
 
     /// Lowers every name once, so that faults in unused ones are found too.
@@ -360,7 +361,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         fluxes: Vec<Flux>,
         mut nodes: Vec<NodeId>,
         mut equation_names: Vec<String>,
-        reads: Vec<Read>,
+        reads: Option<Vec<Read>>,
         wanted: Vec<Wanted>,
         points: Vec<f64>,
     ) -> Option<Sheet> {
@@ -372,9 +373,14 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 *at = order.max(*at);
             }
         }
-        self.check_equations(&equations, &nodes, &orders, &points)?;
+        for equation in &equations {
+            self.check_steps(equation, &fluxes, &points);
+        }
+        let owners = self.owners(&equations, &nodes, &orders)?;
+        self.lowerer.reduction = Reduction::new(&mut self.lowerer.graph, &nodes, &orders, &owners);
+        let reads = reads?;
         let releases = self.releases(&reads, &orders, &points)?;
-        self.check_count(&reads, &orders, releases.len(), &points)?;
+        self.check_count(&reads, &orders, releases.len(), &points);
         let order: usize = orders.iter().map(|m| usize::from(*m)).sum();
 
         // Integrals in conditions run along as unknowns.
@@ -424,10 +430,16 @@ impl<'s, 'f> Assembler<'s, 'f> {
             layout,
             points: points.clone(),
         };
+        if linear {
+            self.check_regular(&model, &equations, &nodes)?;
+        }
         let unknowns = orders.len();
         let curves = self.curves(unknowns, &points);
         let balances = self.balances(&equations, &orders, unknowns, &points);
-        let Lowerer { mut graph, functionals, warnings, .. } = self.lowerer;
+        let Lowerer { mut graph, mut functionals, warnings, reduction, .. } = self.lowerer;
+        for functional in &mut functionals {
+            functional.expression = reduction.reduce(&mut graph, functional.expression);
+        }
         let report: Vec<Item> =
             wanted.into_iter().map(|w| w.item(&mut graph, &functionals, unknowns, &points)).collect();
         Some(Sheet {

@@ -218,10 +218,10 @@ impl Lowerer<'_> {
         Some(self.functional(
             Asked::Value,
             typed,
-            vec![point],
+            vec![(point, at.place(&argument.value.span))],
             side,
             at.place(&e.span),
-            name_span.clone(),
+            name_span.start..name_span.end + primes,
             typed.dimension,
             at,
         ))
@@ -319,7 +319,7 @@ impl Lowerer<'_> {
         let mut side = None;
         for argument in points {
             let (point, own) = self.point(at, argument)?;
-            places.push(point);
+            places.push((point, at.place(&argument.value.span)));
             side = side.or(own);
         }
         let x = self.coordinate_dimension;
@@ -340,7 +340,7 @@ impl Lowerer<'_> {
         &mut self,
         kind: Asked,
         expression: Typed,
-        points: Vec<NodeId>,
+        points: Vec<(NodeId, Range<usize>)>,
         side: Option<Side>,
         place: Range<usize>,
         text: Span,
@@ -350,15 +350,32 @@ impl Lowerer<'_> {
         let keeps = matches!(kind, Asked::Value | Asked::Maximum | Asked::Minimum | Asked::Mean);
         let absolute = if keeps { expression.absolute } else { 0.0 };
         let text = at.text.get(text).unwrap_or("").to_owned();
-        let functional = Functional { kind, expression: expression.node, points, side, place, text };
+        let (points, point_places) = points.into_iter().unzip();
+        let functional = Functional {
+            kind,
+            expression: expression.node,
+            points,
+            point_places,
+            side,
+            place,
+            text,
+            dimension: expression.dimension,
+            reported: self.reporting,
+        };
         let same = |f: &Functional| {
             (f.kind, f.expression, &f.points, f.side)
                 == (functional.kind, functional.expression, &functional.points, functional.side)
         };
-        let index = self.functionals.iter().position(same).unwrap_or_else(|| {
-            self.functionals.push(functional);
-            self.functionals.len() - 1
-        });
+        let index = match self.functionals.iter().position(same) {
+            Some(index) => {
+                self.functionals[index].reported |= self.reporting;
+                index
+            }
+            None => {
+                self.functionals.push(functional);
+                self.functionals.len() - 1
+            }
+        };
         Typed { node: self.graph.slot(index as u32), dimension, absolute }
     }
 }

@@ -4,10 +4,10 @@ use super::functional::Kind as Asked;
 use super::lower::{Formula, Lowerer, Typed};
 use super::model::place_of;
 use super::source::Located;
-use crate::formula::graph::{Node, NodeId};
+use crate::formula::graph::{Graph, Node, NodeId};
 use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::{Place, Side};
-use std::collections::HashMap;
+use std::collections::{BTreeSet, HashMap};
 
 /// A condition as read.
 #[derive(Debug, Clone)]
@@ -149,76 +149,110 @@ impl Lowerer<'_> {
         running: &[(usize, Running)],
     ) -> Option<Placed> {
         let mut placed = Placed { name: read.name.clone(), places: Vec::new(), formula: node, reads: Vec::new() };
-        let mut map = HashMap::new();
-        for slot in self.graph.slots_of(node) {
-            let functional = self.functionals[slot as usize].clone();
-            let values: Vec<f64> = functional.points.iter().filter_map(|p| self.number_of(*p)).collect();
+        // What each number asked is in terms of the jets at places. Inner ones were lowered first: ascending order
+        // is an order of dependence.
+        let mut made = HashMap::new();
+        for slot in self.all_slots(&[node]) {
             let own = self.graph.slot(slot);
-            if values.len() != functional.points.len() {
-                let message = "a point of a condition must be a datum";
-                self.faults.add("condition", functional.place.clone(), message, None);
-                return None;
-            }
-            let nearest = |x: f64| {
-                let distance = |k: &usize| (points[*k] - x).abs();
-                (0..points.len()).min_by(|p, q| distance(p).total_cmp(&distance(q))).unwrap_or(0)
-            };
-            let made = match functional.kind {
-                Asked::Value => {
-                    let point = nearest(values[0]);
-                    self.at_place(&mut placed, functional.expression, point, functional.side, points, orders, released)
+            match self.place_slot(&mut placed, slot, &made, points, orders, released, running) {
+                Ok(node) => {
+                    made.insert(own, node);
                 }
-                Asked::Jump => {
-                    let point = nearest(values[0]);
-                    let mut side = |side| {
-                        self.at_place(&mut placed, functional.expression, point, Some(side), points, orders, released)
-                    };
-                    let (left, right) = (side(Side::Left), side(Side::Right));
-                    left.and_then(|l| right.map(|r| self.graph.subtract(r, l)))
-                }
-                Asked::Integral => {
-                    let unknown = running.iter().find(|(s, _)| *s == slot as usize).map(|(_, r)| r.unknown);
-                    let unknown = unknown?;
-                    let ends = if values.is_empty() {
-                        [0, points.len() - 1]
-                    } else {
-                        [nearest(values[0]), nearest(values[1])]
-                    };
-                    let jet = self.graph.jet(unknown, 0);
-                    let mut end =
-                        |point, side| self.at_place(&mut placed, jet, point, Some(side), points, orders, released);
-                    let (from, to) = (end(ends[0], Side::Right), end(ends[1], Side::Left));
-                    from.and_then(|f| to.map(|t| self.graph.subtract(t, f)))
-                }
-                _ => {
-                    let message = "a condition may hold values at points, jumps and integrals, not extremes or places";
-                    self.faults.add("condition", functional.place.clone(), message, None);
-                    return None;
-                }
-            };
-            match made {
-                Ok(made) => {
-                    map.insert(own, made);
-                }
-                Err(refusal) => {
-                    let text = &functional.text;
-                    let (message, hint) = match refusal {
-                        Refusal::TwoValues => (
-                            format!("`{text}` has two values at this point"),
-                            "mark the side: (a-) from the left, (a+) from the right",
-                        ),
-                        Refusal::TooHigh => (
-                            format!("`{text}` holds a derivative above the order of the problem"),
-                            "use the equation to express it by lower ones",
-                        ),
-                    };
-                    self.faults.add("condition", functional.place.clone(), message, Some(hint.into()));
+                Err((message, hint)) => {
+                    let place = self.functionals[slot as usize].place.clone();
+                    self.faults.add("condition", place, message, hint.map(str::to_owned));
                     return None;
                 }
             }
         }
-        placed.formula = self.graph.substitute(node, &map);
+        placed.formula = self.graph.substitute(node, &made);
         Some(placed)
+    }
+
+    /// The numbers asked in some expressions, and those inside them, ascending.
+    pub fn all_slots(&self, nodes: &[NodeId]) -> BTreeSet<u32> {
+        let mut all = BTreeSet::new();
+        let mut queue = nodes.to_vec();
+        while let Some(node) = queue.pop() {
+            for slot in self.graph.slots_of(node) {
+                if all.insert(slot) {
+                    let functional = &self.functionals[slot as usize];
+                    queue.push(functional.expression);
+                    queue.extend(&functional.points);
+                }
+            }
+        }
+        all
+    }
+
+    /// A number asked in a condition, in terms of the jets at places; `made` holds the numbers inside it.
+    #[allow(clippy::too_many_arguments)]
+    fn place_slot(
+        &mut self,
+        placed: &mut Placed,
+        slot: u32,
+        made: &HashMap<NodeId, NodeId>,
+        points: &[f64],
+        orders: &[u8],
+        released: &dyn Fn(usize, u16, u8) -> bool,
+        running: &[(usize, Running)],
+    ) -> Result<NodeId, (String, Option<&'static str>)> {
+        let functional = self.functionals[slot as usize].clone();
+        let values: Vec<f64> = functional.points.iter().filter_map(|p| self.number_of(*p)).collect();
+        if values.len() != functional.points.len() {
+            return Err(("a point of a condition must be a datum".into(), None));
+        }
+        let nearest = |x: f64| {
+            let distance = |k: &usize| (points[*k] - x).abs();
+            (0..points.len()).min_by(|p, q| distance(p).total_cmp(&distance(q))).unwrap_or(0)
+        };
+        let expression = functional.expression;
+        let mut side_at = |lowerer: &mut Self, expression, point, side| {
+            lowerer.at_place(placed, expression, point, side, made, points, orders, released)
+        };
+        let found = match functional.kind {
+            Asked::Value => side_at(self, expression, nearest(values[0]), functional.side),
+            Asked::Jump => {
+                let point = nearest(values[0]);
+                let left = side_at(self, expression, point, Some(Side::Left));
+                let right = side_at(self, expression, point, Some(Side::Right));
+                left.and_then(|l| right.map(|r| self.graph.subtract(r, l)))
+            }
+            Asked::Integral => {
+                if self.graph.depends_on(expression).slots {
+                    let message = "an integral of a condition cannot hold values at points";
+                    return Err((message.into(), Some("take them out of the integral: integral(y) - y(L)*L")));
+                }
+                let run = running.iter().find(|(s, _)| *s == slot as usize).map(|(_, r)| *r);
+                let run = run.ok_or_else(|| ("this integral is not understood".to_owned(), None))?;
+                let ends = match values[..] {
+                    [from, to] => [nearest(from.min(to)), nearest(from.max(to))],
+                    _ => [0, points.len() - 1],
+                };
+                let jet = self.graph.jet(run.unknown, 0);
+                let from = side_at(self, jet, ends[0], Some(Side::Right));
+                let to = side_at(self, jet, ends[1], Some(Side::Left));
+                let sum = from.and_then(|f| to.map(|t| self.graph.subtract(t, f)));
+                // From right to left the integral counts negative.
+                let backwards = matches!(values[..], [from, to] if to < from);
+                sum.map(|s| if backwards { self.graph.negate(s) } else { s })
+            }
+            _ => {
+                let message = "a condition may hold values at points, jumps and integrals, not extremes or places";
+                return Err((message.into(), None));
+            }
+        };
+        let text = &functional.text;
+        found.map_err(|refusal| match refusal {
+            Refusal::TwoValues => (
+                format!("`{text}` has two values at this point"),
+                Some("mark the side: (a-) from the left, (a+) from the right"),
+            ),
+            Refusal::TooHigh => (
+                format!("`{text}` holds a derivative above the order of the problem"),
+                Some("use the equation to express it by lower ones"),
+            ),
+        })
     }
 
     #[allow(clippy::too_many_arguments)]
@@ -228,29 +262,33 @@ impl Lowerer<'_> {
         expression: NodeId,
         point: usize,
         side: Option<Side>,
+        made: &HashMap<NodeId, NodeId>,
         points: &[f64],
         orders: &[u8],
         released: &dyn Fn(usize, u16, u8) -> bool,
     ) -> Result<NodeId, Refusal> {
         let inner = point > 0 && point + 1 < points.len();
-        let expression = self.graph.expand(expression);
-        let jets = self.graph.jets_of(expression);
-        if jets.iter().any(|(u, k)| *k > orders[usize::from(*u)]) {
+        let mut expression = self.reduction.reduce(&mut self.graph, expression);
+        let top = |graph: &Graph, e, above: u8| {
+            graph.jets_of(e).iter().any(|(u, k)| *k >= orders[usize::from(*u)].saturating_add(above))
+        };
+        if top(&self.graph, expression, 1) {
             return Err(Refusal::TooHigh);
         }
         let at_side = |side| place_of(points, &Place { point, side });
         if side.is_none() && inner {
-            let jumps = jets.iter().any(|(u, k)| released(point, *u, *k) || *k == orders[usize::from(*u)]);
-            let mut branch = |side| {
+            // The highest derivatives may step wherever data do: only states have one value.
+            expression = self.reduction.lowest(&mut self.graph, expression);
+            let jumps = self.graph.jets_of(expression).iter().any(|(u, k)| released(point, *u, *k));
+            let [left, right] = [Side::Left, Side::Right].map(|side| {
                 let (_, piece) = at_side(side);
                 self.graph.in_piece(expression, 0.5 * (points[piece] + points[piece + 1]))
-            };
-            let steps = branch(Side::Left) != branch(Side::Right);
-            let highest_only = jets.iter().any(|(u, k)| *k == orders[usize::from(*u)] && orders[usize::from(*u)] > 0);
-            if steps || (jumps && (highest_only || jets.iter().any(|(u, k)| released(point, *u, *k)))) {
+            });
+            if left != right || jumps || top(&self.graph, expression, 0) {
                 return Err(Refusal::TwoValues);
             }
         }
+        let jets = self.graph.jets_of(expression);
         let side = side.unwrap_or(Side::Left);
         let (x, piece) = at_side(side);
         let expression = self.graph.in_piece(expression, 0.5 * (points[piece] + points[piece + 1]));
@@ -259,7 +297,7 @@ impl Lowerer<'_> {
             placed.places.push(place);
             placed.places.len() - 1
         });
-        let mut map = HashMap::new();
+        let mut map = made.clone();
         let (coordinate, value) = (self.graph.coordinate(), self.graph.number(x));
         map.insert(coordinate, value);
         for (unknown, order) in jets {

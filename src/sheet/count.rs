@@ -6,13 +6,15 @@ use super::functional::Kind as Asked;
 use super::short;
 use crate::formula::graph::NodeId;
 use crate::model::Release;
-use std::collections::BTreeSet;
 
 impl Assembler<'_, '_> {
+    /// Continuities given up; `None` if some cannot be.
     pub(super) fn releases(&mut self, reads: &[Read], orders: &[u8], points: &[f64]) -> Option<Vec<Release>> {
+        let before = self.lowerer.faults.len();
         let mut releases = Vec::new();
         for read in reads {
             let Some((what, point, text)) = &read.release else { continue };
+            // A point that is no datum has been refused already.
             let x = self.lowerer.number_of(*point)?;
             let near = |k: &usize| (points[*k] - x).abs();
             let point = (0..points.len()).min_by(|p, q| near(p).total_cmp(&near(q)))?;
@@ -31,23 +33,23 @@ impl Assembler<'_, '_> {
                 releases.push(release);
             }
         }
-        self.lowerer.faults.is_empty().then_some(releases)
+        (self.lowerer.faults.len() == before).then_some(releases)
     }
 
     /// Conditions must number order + constants + releases.
-    pub(super) fn check_count(&mut self, reads: &[Read], orders: &[u8], releases: usize, points: &[f64]) -> Option<()> {
+    pub(super) fn check_count(&mut self, reads: &[Read], orders: &[u8], releases: usize, points: &[f64]) {
         let order: usize = orders.iter().map(|m| usize::from(*m)).sum();
         let constants = self.lowerer.constants.len();
         let needed = order + constants + releases;
         let given = reads.iter().filter(|r| r.node.is_some()).count();
         if given == needed {
-            return Some(());
+            return;
         }
         let unit = self.coordinate_unit();
         let shown = |x: f64| format!("{} = {} {}", self.lowerer.coordinate, short(unit.from_si(x)), unit.text);
         let (mut from, mut to, mut inner, mut spread) = (0, 0, 0, 0);
         for node in reads.iter().filter_map(|r| r.node) {
-            let slots: Vec<u32> = self.lowerer.graph.slots_of(node).into_iter().collect();
+            let slots = self.lowerer.all_slots(&[node]);
             let places: Vec<f64> = slots
                 .iter()
                 .flat_map(|s| self.lowerer.functionals[*s as usize].points.clone())
@@ -106,7 +108,6 @@ impl Assembler<'_, '_> {
             format!("{} too many", given - needed)
         };
         self.lowerer.faults.add("condition count", place, message, Some(hint));
-        None
     }
 
     /// Order of an unknown with the fluxes that follow from it.
@@ -123,10 +124,8 @@ impl Assembler<'_, '_> {
     }
 
     pub(super) fn running(&mut self, reads: &[Read], given: usize) -> Vec<(usize, Running)> {
-        let mut slots: BTreeSet<u32> = BTreeSet::new();
-        for node in reads.iter().filter_map(|r| r.node) {
-            slots.extend(self.lowerer.graph.slots_of(node));
-        }
+        let nodes: Vec<NodeId> = reads.iter().filter_map(|r| r.node).collect();
+        let slots = self.lowerer.all_slots(&nodes);
         let integrals = slots.into_iter().filter(|s| self.lowerer.functionals[*s as usize].kind == Asked::Integral);
         integrals
             .enumerate()
@@ -144,11 +143,14 @@ impl Assembler<'_, '_> {
 
     /// I' - integrand = 0 inside the stretch, I' = 0 outside.
     pub(super) fn running_equation(&mut self, run: &Running) -> NodeId {
+        let ends = run.ends.map(|ends| ends.map(|end| self.lowerer.number_of(end)));
+        let backwards = matches!(ends, Some([Some(from), Some(to)]) if to < from);
         let graph = &mut self.lowerer.graph;
         let zero = graph.number(0.0);
         let mut inside = graph.expand(run.integrand);
         if let Some([from, to]) = run.ends {
             let x = graph.coordinate();
+            let [from, to] = if backwards { [to, from] } else { [from, to] };
             let (below, above) = (graph.subtract(x, from), graph.subtract(x, to));
             inside = graph.choose(above, true, inside, zero);
             inside = graph.choose(below, true, zero, inside);

@@ -94,9 +94,7 @@ impl Assembler<'_, '_> {
         let jet = self.lowerer.graph.jet(flux.unknown, 0);
         for entry in &self.source.given {
             let Some(name) = syntax::name(&entry.name) else { continue };
-            let named = Expression { kind: Kind::Name(name.clone()), span: 0..0 };
-            let Some(at) = self.source.equations.first().map(|e| e.value.clone()) else { continue };
-            let typed = self.lowerer.lower(&at, &named);
+            let typed = self.lowerer.named(&name);
             let ratio = typed.and_then(|t| self.lowerer.graph.ratio(t.node, jet));
             match ratio {
                 Some(r) if r == 1.0 && !taken.contains(&name) => return name,
@@ -118,9 +116,7 @@ impl Assembler<'_, '_> {
         let mut data = Vec::new();
         for entry in &self.source.given {
             let Some(name) = syntax::name(&entry.name) else { continue };
-            let Some(at) = self.source.equations.first().map(|e| e.value.clone()) else { continue };
-            let named = Expression { kind: Kind::Name(name.clone()), span: 0..0 };
-            let typed = self.lowerer.lower(&at, &named);
+            let typed = self.lowerer.named(&name);
             let text = match &entry.value {
                 Given::Formula(at) => at.text.clone(),
                 Given::Pieces { pieces, otherwise } => {
@@ -163,7 +159,7 @@ impl Assembler<'_, '_> {
             let places: Vec<f64> = match &read.release {
                 Some((_, point, _)) => self.lowerer.number_of(*point).into_iter().collect(),
                 None => {
-                    let slots = read.node.map(|n| self.lowerer.graph.slots_of(n)).unwrap_or_default();
+                    let slots = read.node.map(|n| self.lowerer.all_slots(&[n])).unwrap_or_default();
                     let points = slots.iter().flat_map(|s| self.lowerer.functionals[*s as usize].points.clone());
                     let points: Vec<NodeId> = points.collect();
                     points.into_iter().filter_map(|p| self.lowerer.number_of(p)).collect()

@@ -2,39 +2,60 @@
 
 use super::along::Along;
 use super::assemble::{Assembler, Carrying};
+use super::functional::Kind as Asked;
 use super::{Balance, CurveItem};
-use crate::formula::graph::Variable;
-use crate::formula::syntax::{self, Expression, Kind};
+use crate::formula::graph::{NodeId, Variable};
+use crate::formula::syntax::{self, Kind};
 use crate::unit::Unit;
 
+/// An expression to be drawn along the span.
+pub(super) struct Drawn {
+    pub name: String,
+    pub node: NodeId,
+    pub unit: Unit,
+}
+
 impl Assembler<'_, '_> {
-    /// Unknowns and named expressions, to be drawn.
-    pub(super) fn curves(&mut self, unknowns: usize, points: &[f64]) -> Vec<CurveItem> {
-        let mut curves = Vec::new();
-        for (u, function) in self.lowerer.functions.clone().into_iter().enumerate() {
+    /// Unknowns, named expressions of them, and what the report asks of other expressions.
+    pub(super) fn drawn(&mut self) -> Vec<Drawn> {
+        let mut drawn: Vec<Drawn> = Vec::new();
+        for (u, function) in self.lowerer.functions.iter().enumerate() {
             let node = self.lowerer.graph.jet(u as u16, 0);
-            let along = Along::new(&mut self.lowerer.graph, node, unknowns, points);
-            curves.push(CurveItem { name: function.name, unit: function.unit, along });
+            drawn.push(Drawn { name: function.name.clone(), node, unit: function.unit.clone() });
         }
         for entry in &self.source.given {
             let Some(name) = syntax::name(&entry.name) else { continue };
-            let Some(at) = self.source.equations.first().map(|e| e.value.clone()) else { continue };
-            let named = Expression { kind: Kind::Name(name), span: 0..0 };
-            let Some(typed) = self.lowerer.lower(&at, &named) else { continue };
+            let Some(typed) = self.lowerer.named(&name) else { continue };
             let depends = self.lowerer.graph.depends_on(typed.node);
             if !depends.jets || depends.slots {
                 continue;
             }
             let dimension = typed.dimension.unwrap_or_default();
             let unit = self.reported_unit(&entry.name).filter(|u| u.dimension == dimension && !u.is_absolute());
-            let along = Along::new(&mut self.lowerer.graph, typed.node, unknowns, points);
-            curves.push(CurveItem {
-                name: entry.name.clone(),
-                unit: unit.unwrap_or_else(|| Unit::si(dimension)),
-                along,
-            });
+            let unit = unit.unwrap_or_else(|| Unit::si(dimension));
+            drawn.push(Drawn { name: entry.name.clone(), node: typed.node, unit });
         }
-        curves
+        for functional in &self.lowerer.functionals {
+            let depends = self.lowerer.graph.depends_on(functional.expression);
+            let along = !matches!(functional.kind, Asked::Value | Asked::Jump);
+            let new = !drawn.iter().any(|d| d.node == functional.expression || d.name == functional.text);
+            if along && functional.reported && new && depends.jets && !depends.slots {
+                let (name, node) = (functional.text.clone(), functional.expression);
+                drawn.push(Drawn { name, node, unit: Unit::si(functional.dimension.unwrap_or_default()) });
+            }
+        }
+        drawn
+    }
+
+    pub(super) fn curves(&mut self, unknowns: usize, points: &[f64]) -> Vec<CurveItem> {
+        let drawn = self.drawn().into_iter();
+        let graph = &mut self.lowerer.graph;
+        let reduction = &self.lowerer.reduction;
+        let item = |d: Drawn| {
+            let node = reduction.reduce(graph, d.node);
+            CurveItem { name: d.name, unit: d.unit, along: Along::new(graph, node, unknowns, points) }
+        };
+        drawn.map(item).collect()
     }
 
     /// The unit in which the report first asks for something of a name.

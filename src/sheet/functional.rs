@@ -8,6 +8,7 @@ use crate::formula::number::Rounded;
 use crate::formula::tape::{ScalarInputs, Tape};
 use crate::model::{Profile, Side};
 use crate::quantity::{self, Estimate, Extreme};
+use crate::unit::Dimension;
 use std::cell::RefCell;
 use std::collections::{BTreeSet, HashMap};
 use std::ops::Range;
@@ -35,11 +36,17 @@ pub(super) struct Functional {
     pub expression: NodeId,
     /// A point, or both ends of a stretch, or none for the whole span.
     pub points: Vec<NodeId>,
+    /// Where the points stand in the sheet.
+    pub point_places: Vec<Range<usize>>,
     pub side: Option<Side>,
     /// Where it stands in the sheet.
     pub place: Range<usize>,
     /// The expression as written.
     pub text: String,
+    /// What the expression measures.
+    pub dimension: Option<Dimension>,
+    /// Whether it stands in the report itself.
+    pub reported: bool,
 }
 
 /// A formula of numbers asked, ready to be evaluated on fields.

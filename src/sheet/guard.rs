@@ -1,21 +1,77 @@
 //! Guards on the equations: each unknown determined, no step outside a flux, linear or not.
 
 use super::assemble::{Assembler, Carrying};
-use super::carry::Carrier;
+use super::carry::{Carrier, Flux};
 use super::condition::Placed;
+use super::model::SheetModel;
 use super::short;
 use crate::formula::graph::{Inputs, NodeId, Variable};
 use crate::formula::syntax::{Expression, Kind};
+use crate::model::{Batch, Linearised, Model};
+use std::ops::Range;
+
+const HIDDEN: &str = "an equation for each unknown is needed, or a hidden constraint must be differentiated";
+
+/// Determinants this small, in rows and columns scaled to 1, count as zero.
+const VANISHING: f64 = 1e-13;
+
+/// Sizes of rows, and of columns after the rows have been divided by theirs.
+fn sizes(matrix: &[Vec<f64>]) -> [Vec<f64>; 2] {
+    let size = |values: &mut dyn Iterator<Item = f64>| match values.fold(0.0f64, |m, v| m.max(v.abs())) {
+        0.0 => 1.0,
+        size => size,
+    };
+    let rows: Vec<f64> = matrix.iter().map(|r| size(&mut r.iter().copied())).collect();
+    let column = |c: usize| size(&mut matrix.iter().zip(&rows).map(|(r, s)| r[c] / s));
+    let columns = (0..matrix.len()).map(column).collect();
+    [rows, columns]
+}
+
+/// Determinant after dividing rows and columns by their sizes.
+fn determinant(matrix: &[Vec<f64>], [rows, columns]: &[Vec<f64>; 2]) -> f64 {
+    let scaled = |(r, s): (&Vec<f64>, &f64)| r.iter().zip(columns).map(|(v, c)| v / s / c).collect();
+    let mut m: Vec<Vec<f64>> = matrix.iter().zip(rows).map(scaled).collect();
+    let mut product = 1.0;
+    for k in 0..m.len() {
+        let pivot = (k..m.len()).max_by(|a, b| m[*a][k].abs().total_cmp(&m[*b][k].abs())).unwrap_or(k);
+        m.swap(k, pivot);
+        let own = m[k][k];
+        product *= own;
+        if own == 0.0 {
+            break;
+        }
+        for r in k + 1..m.len() {
+            let factor = m[r][k] / own;
+            for c in k..m.len() {
+                m[r][c] -= factor * m[k][c];
+            }
+        }
+    }
+    product
+}
+
+/// What stands inside the first derivative of an expression in an equation, as written.
+fn differentiated(equation: &Carrying) -> Option<String> {
+    fn inside(tree: &Expression) -> Option<Range<usize>> {
+        match &tree.kind {
+            Kind::Prime(inner, _) => Some(inner.span.clone()),
+            Kind::Negate(a) => inside(a),
+            Kind::Binary(_, a, b) | Kind::If(_, a, b) => inside(a).or_else(|| inside(b)),
+            Kind::Call { .. } | Kind::Number { .. } | Kind::Name(_) => None,
+        }
+    }
+    let span = equation.tree.iter().find_map(inside)?;
+    equation.at.text.get(span).map(str::to_owned)
+}
 
 impl Assembler<'_, '_> {
-    /// Every unknown needs an equation for its highest derivative; stepped factors belong into fluxes.
-    pub(super) fn check_equations(
+    /// For each unknown an equation for its highest derivative.
+    pub(super) fn owners(
         &mut self,
         equations: &[Carrying],
         nodes: &[NodeId],
         orders: &[u8],
-        points: &[f64],
-    ) -> Option<()> {
+    ) -> Option<Vec<Option<usize>>> {
         let has: Vec<Vec<bool>> = nodes
             .iter()
             .map(|n| {
@@ -38,90 +94,171 @@ impl Assembler<'_, '_> {
         }
         for e in 0..nodes.len() {
             if !assign(e, &has, &mut owner, &mut vec![false; orders.len()]) {
-                let place = equations.get(e).map_or(0..0, |q| q.at.span.clone());
+                let place = self.written_for(equations, nodes, e);
                 let missing = owner.iter().position(Option::is_none).and_then(|u| self.lowerer.functions.get(u));
                 let name = missing.map_or("an unknown".into(), |u| format!("`{}`", u.name));
                 let message = format!("the equations do not determine the highest derivative of {name}");
-                let hint = "an equation for each unknown is needed, or a hidden constraint must be differentiated";
-                self.lowerer.faults.add("equation count", place, message, Some(hint.into()));
+                self.lowerer.faults.add("equation count", place, message, Some(HIDDEN.into()));
                 return None;
             }
         }
-        for equation in equations {
-            self.check_steps(equation, points);
+        Some(owner)
+    }
+
+    /// Place of an equation of the sheet; for the definition of a flux that of the equation that first holds it.
+    fn written_for(&self, equations: &[Carrying], nodes: &[NodeId], e: usize) -> Range<usize> {
+        if let Some(own) = equations.get(e) {
+            return own.at.span.clone();
         }
-        self.lowerer.faults.is_empty().then_some(())
+        let flux = (self.lowerer.functions.len() + e - equations.len()) as u16;
+        let holds = |q: &&NodeId| self.lowerer.graph.jets_of(**q).iter().any(|(u, k)| *u == flux && *k > 0);
+        match nodes.iter().position(|q| holds(&q)) {
+            Some(outer) if outer != e => self.written_for(equations, nodes, outer),
+            _ => equations.first().map_or(0..0, |q| q.at.span.clone()),
+        }
+    }
+
+    /// Refuses equations whose highest derivatives are not determined at a point, or nowhere.
+    pub(super) fn check_regular(&mut self, model: &SheetModel, equations: &[Carrying], nodes: &[NodeId]) -> Option<()> {
+        let layout = model.layout();
+        let (points, d) = (model.points(), layout.unknowns());
+        let jets = vec![1.0; 3 * layout.jets()];
+        let constants = vec![1.0; layout.constants()];
+        let mut out = Linearised::default();
+        for piece in 0..points.len() - 1 {
+            let [a, b] = [points[piece], points[piece + 1]];
+            let x = [a, a + 0.385 * (b - a), b];
+            out.reset(layout, 3);
+            model.equations(&Batch { piece, x: &x, jets: &jets, constants: &constants }, &mut out).ok()?;
+            let matrix = |node: usize| {
+                let entry = |e: usize, u: usize| {
+                    let top = layout.jet(u, layout.orders()[u]);
+                    out.jets[(e * layout.jets() + top) * 3 + node]
+                };
+                (0..d).map(|e| (0..d).map(|u| entry(e, u)).collect::<Vec<f64>>()).collect::<Vec<_>>()
+            };
+            let middle = matrix(1);
+            if middle.iter().flatten().any(|v| !v.is_finite()) {
+                continue;
+            }
+            let sizes = sizes(&middle);
+            let whole = determinant(&middle, &sizes);
+            if whole.abs() <= VANISHING {
+                let place = equations.first().map_or(0..0, |q| q.at.span.clone());
+                let message = "the equations do not determine all highest derivatives: they depend on each other";
+                self.lowerer.faults.add("equation count", place, message, Some(HIDDEN.into()));
+                return None;
+            }
+            for (node, x) in [(0, a), (2, b)] {
+                let here = matrix(node);
+                let open = here.iter().flatten().any(|v| !v.is_finite());
+                if !open && determinant(&here, &sizes).abs() > VANISHING * whole.abs() {
+                    continue;
+                }
+                // The first row in which the highest derivatives vanish or blow up.
+                let gone =
+                    |(row, size): (&Vec<f64>, &f64)| row.iter().all(|v| v.is_nan() || v.abs() <= VANISHING * size);
+                let row = here.iter().zip(&sizes[0]).position(gone);
+                let row = row.or_else(|| here.iter().position(|r| r.iter().any(|v| !v.is_finite()))).unwrap_or(0);
+                let place = self.written_for(equations, nodes, row);
+                let unit = self.coordinate_unit();
+                let message = format!(
+                    "at {} = {} {} the factor of the highest derivative vanishes or is not finite: singular points are \
+                     not part of this version",
+                    self.lowerer.coordinate,
+                    short(unit.from_si(x)),
+                    unit.text
+                );
+                self.lowerer.faults.add("not yet", place, message, Some("begin the span beside that point".into()));
+                return None;
+            }
+        }
+        Some(())
     }
 
     /// Refuses a datum that steps and multiplies the highest derivative outside a flux.
-    pub(super) fn check_steps(&mut self, equation: &Carrying, points: &[f64]) {
+    pub(super) fn check_steps(&mut self, equation: &Carrying, fluxes: &[Flux], points: &[f64]) {
         let carrier = Carrier { graph: &mut self.lowerer.graph, fluxes: Vec::new(), next: 0 };
         let mut orders: Vec<(u16, u8)> = carrier.orders(&[equation.written]).into_iter().collect();
         orders.sort_unstable();
+        let jets = self.lowerer.graph.jets_of(equation.main);
         for (unknown, order) in orders {
-            // Of first order the unknown itself is what is continuous, whatever the factor does.
-            if order < 2 || !self.lowerer.graph.jets_of(equation.main).contains(&(unknown, order)) {
-                continue;
-            }
             let Some(declared) = self.lowerer.functions.get(usize::from(unknown)).cloned() else { continue };
-            let smooth = format!("{}{}", declared.name, "'".repeat(usize::from(order) - 1));
-            if self.source.smooth.iter().any(|s| s.text.trim() == smooth) {
+            let smooth = format!("{}{}", declared.name, "'".repeat(usize::from(order).saturating_sub(1)));
+            if order == 0 || self.source.smooth.iter().any(|s| s.text.trim() == smooth) {
                 continue;
             }
-            let factor = self.lowerer.graph.partial(equation.main, Variable::Jet { unknown, order });
-            for k in 1..points.len() - 1 {
-                let [left, right] = [(k - 1, k), (k, k + 1)].map(|(a, b)| 0.5 * (points[a] + points[b]));
-                let [left, right] = [left, right].map(|m| self.lowerer.graph.in_piece(factor, m));
-                let at = |node| {
-                    let inputs = Inputs { jets: &|_, _| 1.0, ..Inputs::at(points[k]) };
-                    self.lowerer.graph.evaluate::<f64>(node, &inputs)
+            // Of first order the unknown itself is what is continuous, whatever the factor does.
+            if order > 1 && jets.contains(&(unknown, order)) {
+                let factor = self.lowerer.graph.partial(equation.main, Variable::Jet { unknown, order });
+                if let Some(k) = (1..points.len() - 1).find(|k| self.steps(factor, points, *k)) {
+                    return self.stepped(equation, &smooth, &smooth, points, k);
+                }
+            }
+            // A factor outside a flux: it may step only if the flux holds its reciprocal, as in (1/A)*(A*k*T')'.
+            for flux in fluxes {
+                let Some(top) = jets.iter().filter(|(u, _)| *u == flux.unknown).map(|(_, k)| *k).max() else {
+                    continue;
                 };
-                let (a, b) = (at(left), at(right));
-                if (a - b).abs() > 1e-12 * a.abs().max(b.abs()) {
-                    let unit = self.coordinate_unit();
-                    let place = format!("{} {}", short(unit.from_si(points[k])), unit.text);
-                    let name = self.stepping_name(equation, points, k).unwrap_or_else(|| "a factor".into());
-                    let inner = format!("{name}*{smooth}");
-                    let message =
-                        format!("`{name}` steps at {place} but stands outside the derivative: write ({inner})'");
-                    let hint =
-                        format!("if {smooth} itself is continuous there, say so in [span]: smooth = [\"{smooth}\"]");
-                    let at = equation.at.clone();
-                    self.lowerer.fault::<()>("stepped datum", &at, &(0..at.text.len()), message, &hint);
-                    return;
+                let own = self.lowerer.graph.jets_of(flux.defined).into_iter().filter(|(u, _)| *u == unknown);
+                let Some(inner) = own.map(|(_, k)| k).max().filter(|_| top > 0) else { continue };
+                let outside = Variable::Jet { unknown: flux.unknown, order: top };
+                let outside = self.lowerer.graph.partial(equation.main, outside);
+                let inside = self.lowerer.graph.partial(flux.defined, Variable::Jet { unknown, order: inner });
+                let (_, inside) = self.lowerer.graph.factors(inside);
+                let (_, outside) = self.lowerer.graph.factors(outside);
+                for (factor, exponent) in outside {
+                    let undone = inside.iter().any(|(f, e)| *f == factor && e * exponent < 0);
+                    let step = (1..points.len() - 1).find(|k| self.steps(factor, points, *k));
+                    if let Some(k) = step.filter(|_| !undone) {
+                        let text = differentiated(equation).unwrap_or_else(|| smooth.clone());
+                        return self.stepped(equation, &text, &smooth, points, k);
+                    }
                 }
             }
         }
     }
 
-    /// The datum in an equation that steps at a point.
-    pub(super) fn stepping_name(&mut self, equation: &Carrying, points: &[f64], k: usize) -> Option<String> {
-        fn names(tree: &Expression, found: &mut Vec<String>) {
+    /// Whether a factor has two values at a break.
+    fn steps(&mut self, factor: NodeId, points: &[f64], k: usize) -> bool {
+        let [left, right] = [(k - 1, k), (k, k + 1)].map(|(a, b)| {
+            let node = self.lowerer.graph.in_piece(factor, 0.5 * (points[a] + points[b]));
+            let inputs = Inputs { jets: &|_, _| 1.0, ..Inputs::at(points[k]) };
+            self.lowerer.graph.evaluate::<f64>(node, &inputs)
+        });
+        (left - right).abs() > 1e-12 * left.abs().max(right.abs())
+    }
+
+    fn stepped(&mut self, equation: &Carrying, inner: &str, smooth: &str, points: &[f64], k: usize) {
+        let unit = self.coordinate_unit();
+        let place = format!("{} {}", short(unit.from_si(points[k])), unit.text);
+        let (name, span) =
+            self.stepping_name(equation, points, k).unwrap_or(("a factor".into(), 0..equation.at.text.len()));
+        let message = format!("`{name}` steps at {place} but stands outside the derivative: write ({name}*{inner})'");
+        let hint = format!("if {smooth} itself is continuous there, say so in [span]: smooth = [\"{smooth}\"]");
+        let at = equation.at.clone();
+        self.lowerer.fault::<()>("stepped datum", &at, &span, message, &hint);
+    }
+
+    /// The datum outside all derivatives of an equation that steps at a point, and where it stands.
+    fn stepping_name(&mut self, equation: &Carrying, points: &[f64], k: usize) -> Option<(String, Range<usize>)> {
+        fn names(tree: &Expression, found: &mut Vec<(String, Range<usize>)>) {
             match &tree.kind {
-                Kind::Name(name) => found.push(name.clone()),
-                Kind::Negate(a) | Kind::Prime(a, _) => names(a, found),
-                Kind::Binary(_, a, b) => {
-                    names(a, found);
-                    names(b, found);
-                }
-                Kind::If(_, a, b) => {
+                Kind::Name(name) => found.push((name.clone(), tree.span.clone())),
+                Kind::Negate(a) => names(a, found),
+                Kind::Binary(_, a, b) | Kind::If(_, a, b) => {
                     names(a, found);
                     names(b, found);
                 }
                 Kind::Call { arguments, .. } => arguments.iter().for_each(|a| names(&a.value, found)),
-                Kind::Number { .. } => {}
+                Kind::Number { .. } | Kind::Prime(..) => {}
             }
         }
         let mut found = Vec::new();
         equation.tree.iter().for_each(|tree| names(tree, &mut found));
-        found.into_iter().find(|name| {
-            let named = Expression { kind: Kind::Name(name.clone()), span: 0..0 };
-            let Some(typed) = self.lowerer.lower(&equation.at, &named) else { return false };
-            let own = self.lowerer.graph.depends_on(typed.node).only_coordinate();
-            let branch = |graph: &mut crate::formula::graph::Graph, a: usize| {
-                graph.in_piece(typed.node, 0.5 * (points[a] + points[a + 1]))
-            };
-            own && branch(&mut self.lowerer.graph, k - 1) != branch(&mut self.lowerer.graph, k)
+        found.into_iter().find(|(name, _)| {
+            let Some(typed) = self.lowerer.named(name) else { return false };
+            self.lowerer.graph.depends_on(typed.node).only_coordinate() && self.steps(typed.node, points, k)
         })
     }
 

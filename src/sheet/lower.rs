@@ -7,6 +7,7 @@
 use super::call::FUNCTIONS;
 use super::fault::{Faults, nearest};
 use super::functional::Functional;
+use super::reduce::Reduction;
 use super::source::Located;
 use crate::formula::graph::{Graph, NodeId};
 use crate::formula::syntax::{Expression, Kind, Span};
@@ -30,6 +31,19 @@ pub(super) struct Typed {
 pub(super) struct Formula {
     pub at: Located,
     pub tree: Expression,
+}
+
+/// The stretch that a datum by pieces covers, where it has no `else`.
+#[derive(Debug, Clone)]
+pub(super) struct Cover {
+    pub name: String,
+    pub ends: [f64; 2],
+    /// Places of the first and the last limit.
+    pub places: [Range<usize>; 2],
+}
+
+impl Cover {
+    pub const HINT: &str = "fill it, or write else = \"value\"";
 }
 
 /// What a declared name stands for.
@@ -83,10 +97,16 @@ pub(super) struct Lowerer<'f> {
     pub functionals: Vec<Functional>,
     /// Set once the equations are done: what conditions and reports recognise.
     pub carried: Vec<Carried>,
+    /// Set once the orders are known.
+    pub reduction: Reduction,
     /// Whether values at points may be asked.
     pub scalars: bool,
+    /// Whether the report is being read.
+    pub reporting: bool,
     /// Limits of pieces, with their places: each must lie inside the span.
     pub limits: Vec<(NodeId, Range<usize>)>,
+    /// Stretches covered by data by pieces: they must reach over the whole span.
+    pub covers: Vec<Cover>,
     states: [HashMap<String, State>; 2],
     stack: Vec<String>,
 }
@@ -104,8 +124,11 @@ impl<'f> Lowerer<'f> {
             coordinate_dimension: None,
             functionals: Vec::new(),
             carried: Vec::new(),
+            reduction: Reduction::default(),
             scalars: false,
+            reporting: false,
             limits: Vec::new(),
+            covers: Vec::new(),
             states: [HashMap::new(), HashMap::new()],
             stack: Vec::new(),
         }
@@ -221,6 +244,12 @@ impl<'f> Lowerer<'f> {
         }
         let node = self.graph.quantity(value, unit);
         Some(Typed { node, dimension: Some(unit.dimension), absolute: f64::from(u8::from(unit.is_absolute())) })
+    }
+
+    /// What a declared name stands for, `None` if it is at fault.
+    pub fn named(&mut self, name: &str) -> Option<Typed> {
+        let nowhere = Located::default();
+        self.name(&nowhere, name, &(0..0))
     }
 
     /// A name, lowered once for the equations and once for the rest.

@@ -21,6 +21,7 @@ mod lower;
 mod model;
 mod piece;
 mod points;
+mod reduce;
 mod source;
 mod statement;
 

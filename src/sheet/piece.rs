@@ -1,6 +1,6 @@
 //! Data by stretches of the span.
 
-use super::lower::{Formula, Lowerer, Typed};
+use super::lower::{Cover, Formula, Lowerer, Typed};
 use crate::unit::Dimension;
 
 impl Lowerer<'_> {
@@ -23,44 +23,36 @@ impl Lowerer<'_> {
                 }
             });
             let value = self.lower(&value.at, &value.tree).map(|t| (value, t));
-            parts.push((limits, value, from));
+            parts.push((limits, value, [from, to]));
         }
-        let mut sorted: Vec<(f64, f64, &Formula)> = Vec::new();
-        for (limits, _, from) in &parts {
+        let mut sorted: Vec<(f64, f64, [&Formula; 2])> = Vec::new();
+        let place = |f: &Formula| f.at.place(&f.tree.span);
+        for (limits, _, ends) in &parts {
             if let [Some((_, a)), Some((_, b))] = limits {
                 if a >= b {
                     let message = format!("a piece of `{name}` runs backwards");
-                    self.faults.add(
-                        "piece",
-                        from.at.span.clone(),
-                        message,
-                        Some("write the smaller limit first".into()),
-                    );
+                    self.faults.add("piece", place(ends[0]), message, Some("write the smaller limit first".into()));
                 }
-                sorted.push((*a, *b, *from));
+                sorted.push((*a, *b, *ends));
             }
         }
         sorted.sort_by(|p, q| p.0.total_cmp(&q.0));
         for pair in sorted.windows(2) {
-            let ((_, end, _), (start, _, from)) = (pair[0], pair[1]);
+            let ((_, end, _), (start, _, [from, _])) = (pair[0], pair[1]);
             let small = 1e-12 * (end.abs() + start.abs());
             if start < end - small {
                 let message = format!("pieces of `{name}` overlap");
-                self.faults.add(
-                    "piece",
-                    from.at.span.clone(),
-                    message,
-                    Some("each place may lie in one piece only".into()),
-                );
+                self.faults.add("piece", place(from), message, Some("each place may lie in one piece only".into()));
             } else if start > end + small && otherwise.is_none() {
                 let message = format!("`{name}` has a gap between two pieces");
-                self.faults.add(
-                    "piece",
-                    from.at.span.clone(),
-                    message,
-                    Some("fill it, or write else = \"value\"".into()),
-                );
+                self.faults.add("piece", place(from), message, Some(Cover::HINT.into()));
             }
+        }
+        if let (None, Some(first), Some(last)) = (otherwise, sorted.first(), sorted.last())
+            && sorted.len() == parts.len()
+        {
+            let places = [place(first.2[0]), place(last.2[1])];
+            self.covers.push(Cover { name: name.to_owned(), ends: [first.0, last.1], places });
         }
         let mut dimension: Option<Option<Dimension>> = None;
         let mut first: Option<(&Formula, Typed)> = None;

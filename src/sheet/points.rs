@@ -2,7 +2,7 @@
 
 use super::assemble::Assembler;
 use super::condition::Read;
-use super::lower::{Formula, Meaning};
+use super::lower::{Cover, Formula, Meaning};
 use super::{Wanted, short};
 use crate::formula::graph::{Inputs, NodeId};
 use crate::formula::syntax::{self, Expression, Kind};
@@ -14,6 +14,27 @@ use std::ops::Range;
 const MOST_POINTS: usize = 20_000;
 
 impl Assembler<'_, '_> {
+    /// What `smooth` insists on must be an unknown or a derivative of one.
+    pub(super) fn check_smooth(&mut self) {
+        for at in &self.source.smooth {
+            let Some(formula) = self.lowerer.parse(at) else { continue };
+            let name = match &formula.tree.kind {
+                Kind::Name(name) => Some(name),
+                Kind::Prime(inner, _) => match &inner.kind {
+                    Kind::Name(name) => Some(name),
+                    _ => None,
+                },
+                _ => None,
+            };
+            let function = name.and_then(|n| self.lowerer.meanings.get(n));
+            if !matches!(function, Some(Meaning::Function(_) | Meaning::Faulty)) {
+                let message = format!("`{}` is neither an unknown nor a derivative of one", at.text.trim());
+                let hint = "smooth names what is continuous although a datum steps: smooth = [\"T'\"]";
+                self.lowerer.fault::<()>("smooth", at, &formula.tree.span, message, hint);
+            }
+        }
+    }
+
     /// Further breaks, with their places.
     pub(super) fn breaks(&mut self) -> Vec<(f64, Range<usize>)> {
         let mut breaks = Vec::new();
@@ -34,7 +55,7 @@ impl Assembler<'_, '_> {
         breaks
     }
 
-    /// Ends and breaks, ascending; places outside the span are faults.
+    /// Ends and breaks, ascending; places outside the span are faults and left out.
     pub(super) fn points(
         &mut self,
         span: [f64; 2],
@@ -42,7 +63,7 @@ impl Assembler<'_, '_> {
         reads: &[Read],
         breaks: &[(f64, Range<usize>)],
         wanted: &[Wanted],
-    ) -> Option<Vec<f64>> {
+    ) -> Vec<f64> {
         let length = span[1] - span[0];
         // Points that differ by rounding are one point.
         let small = 1e-13 * length.max(span[0].abs()).max(span[1].abs());
@@ -67,10 +88,21 @@ impl Assembler<'_, '_> {
                 self.lowerer.faults.add("outside", place, message, None);
             }
         }
+        for cover in std::mem::take(&mut self.lowerer.covers) {
+            let Cover { name, ends, places } = cover;
+            if ends[0] > span[0] + small {
+                let message = format!("`{name}` has no value from {} to {}", shown(span[0]), shown(ends[0]));
+                self.lowerer.faults.add("piece", places[0].clone(), message, Some(Cover::HINT.into()));
+            }
+            if ends[1] < span[1] - small {
+                let message = format!("`{name}` has no value from {} to {}", shown(ends[1]), shown(span[1]));
+                self.lowerer.faults.add("piece", places[1].clone(), message, Some(Cover::HINT.into()));
+            }
+        }
         let mut used: BTreeSet<u32> = BTreeSet::new();
         let mut own: Vec<NodeId> = equations.to_vec();
         for read in reads {
-            used.extend(read.node.iter().flat_map(|n| self.lowerer.graph.slots_of(*n)));
+            used.extend(self.lowerer.all_slots(&read.node.into_iter().collect::<Vec<_>>()));
             if let Some((_, point, _)) = &read.release {
                 match self.lowerer.number_of(*point) {
                     Some(x) if x > span[0] + small && x < span[1] - small => points.push(x),
@@ -84,27 +116,20 @@ impl Assembler<'_, '_> {
         for slot in used {
             let functional = self.lowerer.functionals[slot as usize].clone();
             own.push(functional.expression);
-            for node in &functional.points {
-                match self.lowerer.number_of(*node) {
-                    Some(x) if inside(x) => points.push(x),
-                    Some(x) => {
-                        let message = format!("this point, {}, lies outside the span", shown(x));
-                        self.lowerer.faults.add("outside", functional.place.clone(), message, None);
-                    }
-                    None => {}
-                }
-            }
+            let values = functional.points.iter().filter_map(|p| self.lowerer.number_of(*p));
+            points.extend(values.filter(|x| inside(*x)));
         }
         for functional in self.lowerer.functionals.clone() {
             own.push(functional.expression);
-            for node in &functional.points {
+            for (node, place) in functional.points.iter().zip(functional.point_places) {
                 if let Some(x) = self.lowerer.number_of(*node).filter(|x| !inside(*x)) {
                     let message = format!("this point, {}, lies outside the span", shown(x));
-                    self.lowerer.faults.add("outside", functional.place.clone(), message, None);
+                    self.lowerer.faults.add("outside", place, message, None);
                 }
             }
         }
         own.extend(wanted.iter().map(|w| w.node));
+        own.extend(self.drawn().into_iter().map(|d| d.node));
         for test in self.lowerer.graph.piece_tests(&own) {
             points.extend(self.sign_changes(test.gap, span));
         }
@@ -126,7 +151,7 @@ impl Assembler<'_, '_> {
             let message = format!("the sheet has {} breaks; at most {MOST_POINTS} are allowed", merged.len() - 2);
             self.lowerer.faults.add("too large", place, message, None);
         }
-        self.lowerer.faults.is_empty().then_some(merged)
+        merged
     }
 
     /// Where an expression of the coordinate and data changes sign inside the span.

@@ -9,7 +9,7 @@ use toml::de::{DeTable, DeValue};
 pub const MOST_BYTES: usize = 1_000_000;
 
 /// A text of the sheet and where each byte of it stands.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, Default, PartialEq)]
 pub(super) struct Located {
     pub text: String,
     /// Bytes of the sheet that hold it, quotes included.
