@@ -79,7 +79,7 @@ fn extreme(field: &Field, profile: &dyn Profile, from: f64, to: f64, near: Optio
     let probe = Probe::new(field, profile, chosen.element);
     let value = probe.estimate(chosen.s)?;
     let place = Estimate { value: chosen.x, error: place_error(&probe, &chosen) };
-    Ok(Extreme { place, value, side: side_of(field, &chosen), ties })
+    Ok(Extreme { place, value, side: side_of(field, profile, &chosen, size), ties })
 }
 
 /// Ends and inner extremes of one stretch.
@@ -127,15 +127,18 @@ fn place_error(probe: &Probe<'_>, chosen: &Candidate) -> f64 {
     last_place + if error.is_finite() { error.min(2.0 * half) } else { 2.0 * half }
 }
 
-fn side_of(field: &Field, chosen: &Candidate) -> Option<Side> {
+/// The side of a break from which an extreme is a limit; `None` where the profile is continuous.
+fn side_of(field: &Field, profile: &dyn Profile, chosen: &Candidate, size: f64) -> Option<Side> {
     let element = field.element(chosen.element);
     let [from, to] = field.mesh.span();
-    let break_between = |other: usize| field.mesh.elements.get(other).is_some_and(|o| o.piece != element.piece);
-    if chosen.x == element.right && chosen.x < to && break_between(chosen.element + 1) {
-        Some(Side::Left)
-    } else if chosen.x == element.left && chosen.x > from && break_between(chosen.element.wrapping_sub(1)) {
-        Some(Side::Right)
+    let (side, other, s) = if chosen.x == element.right && chosen.x < to {
+        (Side::Left, chosen.element + 1, -1.0)
+    } else if chosen.x == element.left && chosen.x > from {
+        (Side::Right, chosen.element.checked_sub(1)?, 1.0)
     } else {
-        None
-    }
+        return None;
+    };
+    let beyond = Probe::new(field, profile, other).value(s);
+    let own = Probe::new(field, profile, chosen.element).value(chosen.s);
+    ((beyond - own).abs() > 1e-9 * size).then_some(side)
 }

@@ -330,6 +330,9 @@ fn marks(field: &Field, profile: &dyn Profile, x_unit: &Unit, unit: &Unit) -> Ve
         };
         marks.push(Mark { x: x_unit.from_si(found.place.value), value: unit.from_si(found.value.value), label });
     }
+    // What is rounding beside the other one is zero.
+    let size = marks.iter().map(|m| m.value.abs()).fold(0.0, f64::max);
+    marks.iter_mut().filter(|m| m.value.abs() <= 1e-11 * size).for_each(|m| m.value = 0.0);
     // A constant needs no two marks.
     if let [a, b] = &marks[..]
         && (a.value - b.value).abs() <= 1e-12 * a.value.abs().max(b.value.abs())

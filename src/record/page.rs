@@ -151,8 +151,13 @@ fn drawing(outcome: &Outcome) -> Markup {
     // Labels that would cover each other go to different heights.
     let mut rows: Vec<f64> = Vec::new();
     let mut labelled: Vec<(&Feature, usize)> = Vec::new();
-    for feature in &outcome.features {
+    for (k, feature) in outcome.features.iter().enumerate() {
         let x = place(feature.x);
+        // Two lines of one condition at one point need one label.
+        if k > 0 && outcome.features[k - 1].label == feature.label && outcome.features[k - 1].x == feature.x {
+            labelled.push((feature, usize::MAX));
+            continue;
+        }
         let width = 7.0 * feature.label.chars().count().min(22) as f64 + 14.0;
         let row = rows.iter().position(|end| x - 0.5 * width > *end).unwrap_or(rows.len());
         let end = x + 0.5 * width;
@@ -170,7 +175,7 @@ fn drawing(outcome: &Outcome) -> Markup {
             @for (feature, row) in labelled {
                 @let x = place(feature.x);
                 (mark(feature.kind, x))
-                @if !many && !feature.label.is_empty() {
+                @if !many && row < usize::MAX && !feature.label.is_empty() {
                     text x=(x) y=(66 + 18 * row) text-anchor="middle" {
                         (feature.label.chars().take(22).collect::<String>())
                     }

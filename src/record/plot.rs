@@ -7,8 +7,12 @@ use plotters::coord::ranged1d::{KeyPointHint, NoDefaultFormatting, Ranged, Value
 use plotters::prelude::*;
 use plotters::style::text_anchor::{HPos, Pos, VPos};
 
-/// Size of a plot in user units of the SVG.
-const SIZE: (u32, u32) = (860, 360);
+/// Units of the drawing for one of the page: its coordinates are whole numbers, and a fine grid keeps lines smooth.
+const S: u32 = 4;
+/// The same with a sign.
+const Z: i32 = S as i32;
+/// Size of a plot.
+const SIZE: (u32, u32) = (860 * S, 340 * S);
 const INK: RGBColor = RGBColor(34, 40, 49);
 const GRID: RGBColor = RGBColor(222, 226, 230);
 const LINE: RGBColor = RGBColor(18, 87, 133);
@@ -92,6 +96,8 @@ fn drawn(draw: impl Fn(&Drawing<'_>) -> Outcoming<()>) -> Option<String> {
 struct Round {
     from: f64,
     to: f64,
+    /// Least distance of ticks.
+    least: f64,
 }
 
 impl Round {
@@ -100,7 +106,7 @@ impl Round {
         let rough = (self.to - self.from).abs() / most.max(1) as f64;
         let power = 10f64.powf(rough.log10().floor());
         let factor = [1.0, 2.0, 5.0, 10.0].into_iter().find(|f| f * power >= rough * 0.999).unwrap_or(10.0);
-        factor * power
+        (factor * power).max(self.least)
     }
 }
 
@@ -165,7 +171,7 @@ fn label(name: &str, unit: &str) -> String {
 }
 
 fn text(size: u32) -> TextStyle<'static> {
-    ("sans-serif", size).into_font().color(&INK)
+    ("sans-serif", size * S).into_font().color(&INK)
 }
 
 /// A quantity along the span with its extremes and what stands at the points.
@@ -179,38 +185,39 @@ fn along(area: &Drawing<'_>, curve: &Curve, outcome: &Outcome) -> Outcoming<()> 
     let (bottom, top) = padded(low, high);
     let (from, to) = outcome.span;
     let mut chart = ChartBuilder::on(area)
-        .margin(14)
-        .margin_right(26)
-        .x_label_area_size(62)
-        .y_label_area_size(86)
-        .build_cartesian_2d(Round { from, to }, Round { from: bottom, to: top })?;
+        .margin(14 * S)
+        .margin_right(26 * S)
+        .x_label_area_size(62 * S)
+        .y_label_area_size(86 * S)
+        .build_cartesian_2d(Round { from, to, least: 0.0 }, Round { from: bottom, to: top, least: 0.0 })?;
     chart
         .configure_mesh()
         .light_line_style(TRANSPARENT)
-        .bold_line_style(GRID)
-        .axis_style(INK)
+        .bold_line_style(GRID.stroke_width(S))
+        .axis_style(INK.stroke_width(S))
         .label_style(text(14))
         .axis_desc_style(text(15))
+        .set_all_tick_mark_size(5 * S)
         .x_desc(label(&outcome.coordinate, &outcome.coordinate_unit))
         .y_desc(label(&curve.name, &curve.unit))
         .draw()?;
     if bottom < 0.0 && top > 0.0 {
-        chart.draw_series([PathElement::new(vec![(from, 0.0), (to, 0.0)], INK.stroke_width(1))])?;
+        chart.draw_series([PathElement::new(vec![(from, 0.0), (to, 0.0)], INK.stroke_width(S))])?;
     }
     for feature in outcome.features.iter().filter(|f| f.x > from && f.x < to).take(200) {
         let line = vec![(feature.x, bottom), (feature.x, top)];
-        chart.draw_series([PathElement::new(line, GRID.mix(0.9).stroke_width(1))])?;
+        chart.draw_series([PathElement::new(line, GRID.mix(0.9).stroke_width(S))])?;
     }
     for piece in &curve.pieces {
-        chart.draw_series(LineSeries::new(piece.iter().copied(), LINE.stroke_width(2)))?;
+        chart.draw_series(LineSeries::new(piece.iter().copied(), LINE.stroke_width(2 * S)))?;
     }
     for mark in &curve.marks {
-        chart.draw_series([Circle::new((mark.x, mark.value), 4, MARK.filled())])?;
+        chart.draw_series([Circle::new((mark.x, mark.value), 4 * S, MARK.filled())])?;
         let right = mark.x > from + 0.72 * (to - from);
         let above = mark.value > 0.5 * (low + high);
         let pos = Pos::new(if right { HPos::Right } else { HPos::Left }, if above { VPos::Bottom } else { VPos::Top });
-        let shift = (if right { -8 } else { 8 }, if above { -6 } else { 6 });
-        let style = ("sans-serif", 14).into_font().color(&MARK).pos(pos);
+        let shift = (if right { -8 * Z } else { 8 * Z }, if above { -6 * Z } else { 6 * Z });
+        let style = ("sans-serif", 14 * S).into_font().color(&MARK).pos(pos);
         let words = format!("{} at {}", short(mark.value), short(mark.x));
         let element = EmptyElement::at((mark.x, mark.value)) + Text::new(words, shift, style);
         chart.draw_series([element])?;
@@ -228,19 +235,19 @@ fn features(area: &Drawing<'_>, outcome: &Outcome, range: (i32, i32), base: i32)
         let y = base;
         match feature.kind {
             FeatureKind::Condition => {
-                let shape = vec![(x - 5, y + 10), (x + 5, y + 10), (x + 5, y + 3), (x - 5, y + 3)];
+                let shape = [(-5, 10), (5, 10), (5, 3), (-5, 3)].map(|(a, b)| (x + a * Z, y + b * Z)).to_vec();
                 area.draw(&Polygon::new(shape, INK.filled()))?;
             }
             FeatureKind::Jump => {
-                area.draw(&PathElement::new(vec![(x, y - 22), (x, y)], MARK.stroke_width(2)))?;
-                area.draw(&Polygon::new(vec![(x - 4, y - 7), (x + 4, y - 7), (x, y)], MARK.filled()))?;
+                area.draw(&PathElement::new(vec![(x, y - 22 * Z), (x, y)], MARK.stroke_width(2 * S)))?;
+                area.draw(&Polygon::new(vec![(x - 4 * Z, y - 7 * Z), (x + 4 * Z, y - 7 * Z), (x, y)], MARK.filled()))?;
             }
             FeatureKind::Release => {
-                area.draw(&Circle::new((x, y + 6), 5, WHITE.filled()))?;
-                area.draw(&Circle::new((x, y + 6), 5, INK.stroke_width(2)))?;
+                area.draw(&Circle::new((x, y + 6 * Z), 5 * S, WHITE.filled()))?;
+                area.draw(&Circle::new((x, y + 6 * Z), 5 * S, INK.stroke_width(2 * S)))?;
             }
             FeatureKind::Break => {
-                area.draw(&PathElement::new(vec![(x, y), (x, y + 9)], SOFT.stroke_width(2)))?;
+                area.draw(&PathElement::new(vec![(x, y), (x, y + 9 * Z)], SOFT.stroke_width(2 * S)))?;
             }
         }
     }
@@ -265,25 +272,26 @@ fn residual(area: &Drawing<'_>, curve: &Curve, outcome: &Outcome) -> Outcoming<(
     let (low, high) = decades(curve.pieces.iter().flatten().map(|p| p.1));
     let (from, to) = outcome.span;
     let mut chart = ChartBuilder::on(area)
-        .margin(14)
-        .margin_right(26)
-        .x_label_area_size(56)
-        .y_label_area_size(86)
-        .build_cartesian_2d(Round { from, to }, low..high)?;
+        .margin(14 * S)
+        .margin_right(26 * S)
+        .x_label_area_size(56 * S)
+        .y_label_area_size(86 * S)
+        .build_cartesian_2d(Round { from, to, least: 0.0 }, Round { from: low, to: high, least: 1.0 })?;
     chart
         .configure_mesh()
         .light_line_style(TRANSPARENT)
-        .bold_line_style(GRID)
-        .axis_style(INK)
+        .bold_line_style(GRID.stroke_width(S))
+        .axis_style(INK.stroke_width(S))
         .label_style(text(14))
         .axis_desc_style(text(15))
+        .set_all_tick_mark_size(5 * S)
         .x_desc(label(&outcome.coordinate, &outcome.coordinate_unit))
         .y_desc("residual, relative")
         .y_label_formatter(&|v| format!("1e{v:.0}"))
         .draw()?;
     for piece in &curve.pieces {
         let points = piece.iter().map(|(x, r)| (*x, r.max(1e-300).log10().max(low)));
-        chart.draw_series(LineSeries::new(points, LINE.stroke_width(1)))?;
+        chart.draw_series(LineSeries::new(points, LINE.stroke_width(S)))?;
     }
     Ok(())
 }
@@ -293,20 +301,24 @@ fn decay(area: &Drawing<'_>, outcome: &Outcome) -> Outcoming<()> {
     let (low, high) = decades(all());
     let total: usize = outcome.mesh.iter().map(|row| row.nodes + 1).sum();
     let mut chart = ChartBuilder::on(area)
-        .margin(14)
-        .margin_right(26)
-        .x_label_area_size(56)
-        .y_label_area_size(86)
-        .build_cartesian_2d(Round { from: 0.0, to: total.max(2) as f64 }, low..high)?;
+        .margin(14 * S)
+        .margin_right(26 * S)
+        .x_label_area_size(56 * S)
+        .y_label_area_size(86 * S)
+        .build_cartesian_2d(
+            Round { from: 0.0, to: total.max(2) as f64, least: 1.0 },
+            Round { from: low, to: high, least: 1.0 },
+        )?;
     chart
         .configure_mesh()
         .disable_x_mesh()
         .light_line_style(TRANSPARENT)
-        .bold_line_style(GRID)
-        .axis_style(INK)
+        .bold_line_style(GRID.stroke_width(S))
+        .axis_style(INK.stroke_width(S))
         .label_style(text(14))
         .axis_desc_style(text(15))
         .x_labels(0)
+        .set_all_tick_mark_size(5 * S)
         .x_desc("degree, element after element")
         .y_desc("coefficient, relative")
         .y_label_formatter(&|v| format!("1e{v:.0}"))
@@ -314,17 +326,17 @@ fn decay(area: &Drawing<'_>, outcome: &Outcome) -> Outcoming<()> {
     let mut start = 0;
     for row in &outcome.mesh {
         let edge = start as f64;
-        chart.draw_series([PathElement::new(vec![(edge, low), (edge, high)], GRID.stroke_width(1))])?;
+        chart.draw_series([PathElement::new(vec![(edge, low), (edge, high)], GRID.stroke_width(S))])?;
         for (u, coefficients) in row.decay.iter().enumerate() {
             let colour = SERIES[u % SERIES.len()];
             let at = |(k, c): (usize, &f64)| (edge + 0.5 + k as f64, c.max(1e-300).log10().max(low));
-            chart.draw_series(LineSeries::new(coefficients.iter().enumerate().map(at), colour.stroke_width(1)))?;
+            chart.draw_series(LineSeries::new(coefficients.iter().enumerate().map(at), colour.stroke_width(S)))?;
         }
         start += row.nodes + 1;
     }
     for (u, name) in outcome.decay_names.iter().enumerate().take(12) {
-        let style = ("sans-serif", 14).into_font().color(&SERIES[u % SERIES.len()]);
-        let place = (110 + 110 * (u as i32 % 6), 14 + 16 * (u as i32 / 6));
+        let style = ("sans-serif", 14 * S).into_font().color(&SERIES[u % SERIES.len()]);
+        let place = (Z * (110 + 110 * (u as i32 % 6)), Z * (14 + 16 * (u as i32 / 6)));
         area.draw(&Text::new(label(name, "1"), place, style))?;
     }
     Ok(())
