@@ -1,5 +1,6 @@
 //! Sums, products, powers, derivatives, choices: nodes and dimensions.
 
+use super::absolute::Absolute;
 use super::lower::{Lowerer, Typed};
 use super::source::Located;
 use crate::formula::graph::NodeId;
@@ -37,6 +38,64 @@ impl Lowerer<'_> {
         }
     }
 
+    /// Refuses a difference of temperatures set against an absolute one.
+    pub(super) fn balanced(&mut self, at: &Located, a: (&Expression, Typed), b: (&Expression, Typed)) -> Option<()> {
+        let temperature = a.1.dimension.or(b.1.dimension) == Some(Dimension::TEMPERATURE);
+        if !temperature || a.1.absolute.minus(b.1.absolute).balances() {
+            return Some(());
+        }
+        let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
+        let (left, right) = (text(a.0), text(b.0));
+        let span = a.0.span.start..b.0.span.end;
+        if a.1.dimension.is_none() || b.1.dimension.is_none() {
+            let other = if a.1.dimension.is_none() { right } else { left };
+            let message = format!("`{other}` is an absolute temperature: 0 would be 0 K");
+            return self.fault("temperature difference", at, &span, message, "write 0 degC, or the value in K");
+        }
+        let (p, q) = (a.1.absolute.describe(), b.1.absolute.describe());
+        let message = format!("`{left}` is {p} but `{right}` is {q}");
+        let hint = "a value in degC is an absolute temperature; write a difference in K";
+        self.fault("temperature difference", at, &span, message, hint)
+    }
+
+    /// A temperature as a factor: refuses sums such as T + 5 degC, and warns where a datum in degC is taken as absolute.
+    fn factor_temperature(&mut self, at: &Located, (e, typed): (&Expression, Typed)) {
+        if typed.dimension == Some(Dimension::TEMPERATURE)
+            && self.single_temperature(at, (e, typed)).is_some()
+            && typed.absolute.is_temperature()
+            && let Some(value) = self.number_of(typed.node)
+        {
+            let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
+            if matches!(e.kind, Kind::Number { .. }) {
+                let message = format!("`{text}` is an absolute temperature, not a difference");
+                let hint = format!("a difference is written in K; if {} K is meant, write that", super::short(value));
+                self.fault::<()>("temperature difference", at, &e.span, message, &hint);
+                return;
+            }
+            let warning = format!(
+                "`{text}` counts as an absolute temperature in a product, {} K; if a difference is meant, write it in K",
+                super::short(value)
+            );
+            self.warn(warning);
+        }
+    }
+
+    /// Refuses a sum of absolute temperatures as a factor or base.
+    fn single_temperature(&mut self, at: &Located, (e, typed): (&Expression, Typed)) -> Option<()> {
+        if typed.dimension != Some(Dimension::TEMPERATURE) || !typed.absolute.adds_up() {
+            return Some(());
+        }
+        let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
+        let message = format!("`{text}` adds up absolute temperatures");
+        let hint = "a value in degC is an absolute temperature; write a difference in K";
+        self.fault("temperature difference", at, &e.span, message, hint)
+    }
+
+    /// The value of an expression that is a number without a unit.
+    fn pure_number(&self, typed: Typed) -> Option<f64> {
+        typed.dimension.is_none_or(Dimension::is_none).then(|| self.number_of(typed.node))?
+    }
+
     pub(super) fn binary(
         &mut self,
         at: &Located,
@@ -57,17 +116,21 @@ impl Lowerer<'_> {
                 } else {
                     self.graph.add(left.node, right.node)
                 };
-                let absolute = if minus { left.absolute - right.absolute } else { left.absolute + right.absolute };
+                let absolute =
+                    if minus { left.absolute.minus(right.absolute) } else { left.absolute.plus(right.absolute) };
                 Some(Typed { node, dimension, absolute })
             }
             Operator::Multiply => {
                 let node = graph.multiply(left.node, right.node);
                 let dimension = self.product(at, e, left.dimension, right.dimension, false)?;
-                let absolute = match (self.number_of(left.node), self.number_of(right.node)) {
-                    (Some(c), _) if left.absolute == 0.0 => c * right.absolute,
-                    (_, Some(c)) if right.absolute == 0.0 => c * left.absolute,
-                    _ if left.absolute == 0.0 && right.absolute == 0.0 => 0.0,
-                    _ => f64::NAN,
+                let absolute = match (self.pure_number(left), self.pure_number(right)) {
+                    (Some(c), _) => right.absolute.times(c),
+                    (_, Some(c)) => left.absolute.times(c),
+                    _ => {
+                        self.factor_temperature(at, (a, left));
+                        self.factor_temperature(at, (b, right));
+                        left.absolute.in_product().plus(right.absolute.in_product())
+                    }
                 };
                 Some(Typed { node, dimension, absolute })
             }
@@ -78,10 +141,13 @@ impl Lowerer<'_> {
                 }
                 let node = self.graph.divide(left.node, right.node);
                 let dimension = self.product(at, e, left.dimension, right.dimension, true)?;
-                let absolute = match self.number_of(right.node) {
-                    Some(c) => left.absolute / c,
-                    None if left.absolute == 0.0 => 0.0,
-                    None => f64::NAN,
+                let absolute = match self.pure_number(right) {
+                    Some(c) => left.absolute.times(c.recip()),
+                    None => {
+                        self.factor_temperature(at, (a, left));
+                        self.factor_temperature(at, (b, right));
+                        left.absolute.in_product()
+                    }
                 };
                 Some(Typed { node, dimension, absolute })
             }
@@ -113,17 +179,18 @@ impl Lowerer<'_> {
         exponent: (&Expression, Typed),
     ) -> Option<Typed> {
         self.expect(at, exponent.0, exponent.1, Some(Dimension::default()))?;
+        self.single_temperature(at, base);
         let node = self.graph.power(base.1.node, exponent.1.node);
         let pure = base.1.dimension.is_none_or(Dimension::is_none);
         if pure {
-            return Some(Typed { node, dimension: Some(Dimension::default()), absolute: 0.0 });
+            return Some(Typed { node, dimension: Some(Dimension::default()), absolute: Absolute::NONE });
         }
         let Some(n) = self.number_of(exponent.1.node) else {
             let message = "a power of a quantity with a unit needs a constant exponent";
             return self.fault("dimension", at, &exponent.0.span, message, "divide by a reference value first");
         };
         match base.1.dimension.map(|d| d.powf(n)) {
-            Some(Ok(dimension)) => Some(Typed { node, dimension: Some(dimension), absolute: 0.0 }),
+            Some(Ok(dimension)) => Some(Typed { node, dimension: Some(dimension), absolute: Absolute::NONE }),
             _ => self.fault("dimension", at, &e.span, "this power of a unit cannot be kept as a simple fraction", ""),
         }
     }
@@ -139,11 +206,11 @@ impl Lowerer<'_> {
             node = if self.scalars { self.graph.total(node) } else { self.graph.derivative(node) };
             dimension = match (dimension, self.coordinate_dimension) {
                 (Some(d), Some(x)) => Some(d.div(x).ok()?),
-                (d, None) => d,
-                (None, _) => None,
+                // Where either is at fault nothing can be said.
+                _ => None,
             };
         }
-        Some(Typed { node, dimension, absolute: if order == 0 { a.absolute } else { 0.0 } })
+        Some(Typed { node, dimension, absolute: if order == 0 { a.absolute } else { Absolute::NONE } })
     }
 
     pub(super) fn choose(&mut self, at: &Located, test: &Test, then: NodeId, otherwise: NodeId) -> Option<NodeId> {
@@ -153,6 +220,7 @@ impl Lowerer<'_> {
                 let (left, right) = (left?, right?);
                 let whole = Expression { kind: Kind::Name(String::new()), span: a.span.start..b.span.end };
                 self.same(at, &whole, (a, left), (b, right))?;
+                self.balanced(at, (a, left), (b, right))?;
                 let (gap, strict) = match comparison {
                     Comparison::Less => (self.graph.subtract(left.node, right.node), true),
                     Comparison::LessEqual => (self.graph.subtract(left.node, right.node), false),

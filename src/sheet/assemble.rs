@@ -24,6 +24,9 @@ pub(super) fn assemble(text: &str) -> Result<Sheet, Vec<Fault>> {
     }
     let source = source::read(text, &mut faults);
     let sheet = Assembler::new(&source, &mut faults).run();
+    if sheet.is_none() && faults.is_empty() {
+        faults.add("not understood", 0..0, "the sheet is not understood, and it is not known why", None);
+    }
     match sheet {
         Some(sheet) if faults.is_empty() => Ok(sheet),
         _ => Err(faults.finish(text)),
@@ -112,6 +115,9 @@ impl<'s, 'f> Assembler<'s, 'f> {
             let index = (list.len() - 1) as u16;
             let meaning = if entry.value.constant { Meaning::Constant(index) } else { Meaning::Function(index) };
             add(&mut self.lowerer, &entry.name, &entry.name_span, meaning);
+        }
+        for (name, span) in &source.faulty {
+            add(&mut self.lowerer, name, span, Meaning::Faulty);
         }
         for entry in &source.given {
             let meaning = match &entry.value {
@@ -304,7 +310,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
                         self.lowerer.fault::<()>("dimension", at, &span, message, &hint);
                         continue;
                     }
-                    if unit.is_absolute() && (typed.absolute - 1.0).abs() > 1e-12 {
+                    if unit.is_absolute() && !typed.absolute.is_temperature() {
                         let message = format!("this is no absolute temperature: it cannot be printed in {}", unit.text);
                         let hint = "a difference is printed in K; an unknown to be printed in degC is declared in degC";
                         self.lowerer.fault::<()>("temperature difference", at, &span, message, hint);

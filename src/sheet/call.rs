@@ -1,6 +1,6 @@
 //! Calls: functions, values at points, numbers asked of the solution.
 
-use super::fault::nearest;
+use super::absolute::Absolute;
 use super::functional::{Functional, Kind as Asked};
 use super::lower::{Lowerer, Typed};
 use super::source::Located;
@@ -112,7 +112,7 @@ impl Lowerer<'_> {
                     Some(Ok(dimension)) => Some(dimension),
                     None => None,
                 };
-                Some(Typed { node: self.graph.unary(Unary::Sqrt, a.1.node), dimension, absolute: 0.0 })
+                Some(Typed { node: self.graph.unary(Unary::Sqrt, a.1.node), dimension, absolute: Absolute::NONE })
             }
             ("abs", _) => {
                 let [a] = self.arguments(at, e, name, arguments)?;
@@ -140,7 +140,8 @@ impl Lowerer<'_> {
                 let dimension = self.same(at, e, a, b)?;
                 let function = if name == "min" { Binary::Min } else { Binary::Max };
                 let node = self.graph.binary(function, a.1.node, b.1.node);
-                let absolute = if a.1.absolute == b.1.absolute { a.1.absolute } else { f64::NAN };
+                self.balanced(at, a, b)?;
+                let absolute = a.1.absolute.either(b.1.absolute);
                 Some(Typed { node, dimension, absolute })
             }
             ("min" | "max" | "argmin" | "argmax" | "integral" | "mean" | "norm" | "root" | "at" | "jump", _) => {
@@ -151,11 +152,7 @@ impl Lowerer<'_> {
                 self.fault("not yet", at, name_span, "`regular`: singular ends are not part of this version", "")
             }
             ("fold", _) => self.fault("not yet", at, name_span, "`fold`: paths are not part of this version", ""),
-            _ => {
-                let known = self.meanings.keys().map(String::as_str).chain(FUNCTIONS.iter().copied());
-                let hint = nearest(name, known).map(|k| format!("did you mean `{k}`?")).unwrap_or_default();
-                self.fault("unknown name", at, name_span, format!("`{name}` is not defined"), &hint)
-            }
+            _ => self.undefined(at, name, name_span),
         }
     }
 
@@ -348,7 +345,11 @@ impl Lowerer<'_> {
         at: &Located,
     ) -> Typed {
         let keeps = matches!(kind, Asked::Value | Asked::Maximum | Asked::Minimum | Asked::Mean);
-        let absolute = if keeps { expression.absolute } else { 0.0 };
+        let absolute = match kind {
+            Asked::Integral => expression.absolute.in_product(),
+            _ if keeps => expression.absolute,
+            _ => Absolute::NONE,
+        };
         let text = at.text.get(text).unwrap_or("").to_owned();
         let (points, point_places) = points.into_iter().unzip();
         let functional = Functional {

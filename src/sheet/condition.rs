@@ -50,8 +50,14 @@ impl Lowerer<'_> {
     /// Reads one condition.
     pub fn condition(&mut self, name: &str, at: &Located) -> Option<Read> {
         let read = |node, release| Read { name: name.to_owned(), at: at.clone(), node, release };
-        if !at.text.contains('=')
-            && let Ok(Expression { kind: Kind::Call { name: function, arguments, .. }, span }) = syntax::parse(&at.text)
+        let alone = if at.text.contains('=') { None } else { syntax::parse(&at.text).ok() };
+        if let Some(whole) = &alone
+            && matches!(&whole.kind, Kind::Call { name, .. } if name == "regular")
+        {
+            self.lower(at, whole);
+            return None;
+        }
+        if let Some(Expression { kind: Kind::Call { name: function, arguments, .. }, span }) = alone
             && function == "release"
         {
             let [what, point] = &arguments[..] else {
@@ -98,15 +104,15 @@ impl Lowerer<'_> {
                 let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
                 let (left, right) = (text(a.0), text(b.0));
                 let message = format!("`{left}` is {} but `{right}` is {}", p.describe(), q.describe());
-                self.fault(
-                    "dimension",
-                    at,
-                    &(a.0.span.start..b.0.span.end),
-                    message,
-                    "both sides must measure the same",
-                )
+                let bare = |e: &Expression| matches!(e.kind, Kind::Number { unit: None, .. });
+                let hint = match (bare(a.0), bare(b.0)) {
+                    (true, _) => format!("give `{left}` a unit"),
+                    (_, true) => format!("give `{right}` a unit"),
+                    _ => "both sides must measure the same".to_owned(),
+                };
+                self.fault("dimension", at, &(a.0.span.start..b.0.span.end), message, &hint)
             }
-            _ => Some(()),
+            _ => self.balanced(at, a, b),
         }
     }
 
@@ -218,7 +224,7 @@ impl Lowerer<'_> {
                 let right = side_at(self, expression, point, Some(Side::Right));
                 left.and_then(|l| right.map(|r| self.graph.subtract(r, l)))
             }
-            Asked::Integral => {
+            Asked::Integral | Asked::Mean => {
                 if self.graph.depends_on(expression).slots {
                     let message = "an integral of a condition cannot hold values at points";
                     return Err((message.into(), Some("take them out of the integral: integral(y) - y(L)*L")));
@@ -235,10 +241,24 @@ impl Lowerer<'_> {
                 let sum = from.and_then(|f| to.map(|t| self.graph.subtract(t, f)));
                 // From right to left the integral counts negative.
                 let backwards = matches!(values[..], [from, to] if to < from);
-                sum.map(|s| if backwards { self.graph.negate(s) } else { s })
+                let sum = sum.map(|s| if backwards { self.graph.negate(s) } else { s });
+                match functional.kind {
+                    Asked::Mean => {
+                        let length = match functional.points[..] {
+                            [from, to] => self.graph.subtract(to, from),
+                            _ => self.graph.number(points[points.len() - 1] - points[0]),
+                        };
+                        if self.number_of(length) == Some(0.0) {
+                            return Err(("the stretch of this mean has no length".into(), None));
+                        }
+                        sum.map(|s| self.graph.divide(s, length))
+                    }
+                    _ => sum,
+                }
             }
             _ => {
-                let message = "a condition may hold values at points, jumps and integrals, not extremes or places";
+                let message =
+                    "a condition may hold values at points, jumps, integrals and means, not extremes or places";
                 return Err((message.into(), None));
             }
         };

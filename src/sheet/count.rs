@@ -2,7 +2,6 @@
 
 use super::assemble::Assembler;
 use super::condition::{Read, Running};
-use super::functional::Kind as Asked;
 use super::short;
 use crate::formula::graph::NodeId;
 use crate::model::Release;
@@ -55,7 +54,7 @@ impl Assembler<'_, '_> {
                 .flat_map(|s| self.lowerer.functionals[*s as usize].points.clone())
                 .filter_map(|p| self.lowerer.number_of(p))
                 .collect();
-            let integral = slots.iter().any(|s| self.lowerer.functionals[*s as usize].kind == Asked::Integral);
+            let integral = slots.iter().any(|s| self.lowerer.functionals[*s as usize].runs());
             let small = 1e-12 * (points[points.len() - 1] - points[0]);
             let all = |x: f64| !places.is_empty() && !integral && places.iter().all(|p| (p - x).abs() <= small);
             if all(points[0]) {
@@ -126,7 +125,7 @@ impl Assembler<'_, '_> {
     pub(super) fn running(&mut self, reads: &[Read], given: usize) -> Vec<(usize, Running)> {
         let nodes: Vec<NodeId> = reads.iter().filter_map(|r| r.node).collect();
         let slots = self.lowerer.all_slots(&nodes);
-        let integrals = slots.into_iter().filter(|s| self.lowerer.functionals[*s as usize].kind == Asked::Integral);
+        let integrals = slots.into_iter().filter(|s| self.lowerer.functionals[*s as usize].runs());
         integrals
             .enumerate()
             .map(|(k, slot)| {

@@ -19,6 +19,9 @@ pub struct Fault {
     pub span: Range<usize>,
 }
 
+/// Code of faults of the file's structure.
+pub(super) const NOT_TOML: &str = "toml";
+
 /// Faults gathered in one reading.
 #[derive(Debug, Default)]
 pub(super) struct Faults {
@@ -46,6 +49,10 @@ impl Faults {
 
     /// All faults in the order of the sheet, with lines and columns.
     pub fn finish(mut self, sheet: &str) -> Vec<Fault> {
+        // Where a line is no TOML, what was made of it is guesswork.
+        let line = |fault: &Fault| line_and_column(sheet, fault.span.start).0;
+        let broken: Vec<usize> = self.list.iter().filter(|f| f.code == NOT_TOML).map(line).collect();
+        self.list.retain(|f| f.code == NOT_TOML || !broken.contains(&line(f)));
         self.list.sort_by_key(|f| f.span.start);
         for fault in &mut self.list {
             (fault.line, fault.column) = line_and_column(sheet, fault.span.start);
@@ -73,7 +80,12 @@ pub(super) fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) 
     if let Some(same) = known.iter().find(|k| k.eq_ignore_ascii_case(name)) {
         return Some(same);
     }
-    let best = known.into_iter().map(|k| (strsim::osa_distance(name, k), k)).min_by_key(|(d, k)| (*d, k.len()))?;
-    let near = name.chars().count() > 1 && best.0 <= name.chars().count().div_ceil(3);
-    near.then_some(best.1)
+    let best = known.into_iter().map(|k| (strsim::osa_distance(name, k), k)).min_by_key(|(d, k)| (*d, k.len(), *k))?;
+    let most = match name.chars().count() {
+        0 | 1 => 0,
+        2..=4 => 1,
+        5..=8 => 2,
+        _ => 3,
+    };
+    (best.0 <= most).then_some(best.1)
 }

@@ -49,6 +49,13 @@ pub(super) struct Functional {
     pub reported: bool,
 }
 
+impl Functional {
+    /// Whether a condition on it needs an integral that runs along.
+    pub fn runs(&self) -> bool {
+        matches!(self.kind, Kind::Integral | Kind::Mean)
+    }
+}
+
 /// A formula of numbers asked, ready to be evaluated on fields.
 pub(super) struct Reckoner {
     formula: Tape,
@@ -66,6 +73,9 @@ struct Part {
     along: Along,
     points: Vec<Tape>,
 }
+
+/// Part of its size by which a number is varied to see how a formula answers.
+const SMALL: f64 = 1e-6;
 
 /// Where extremes were found on the first field: the others must answer for the same ones.
 pub(super) type Memory = RefCell<HashMap<usize, f64>>;
@@ -148,9 +158,10 @@ impl Reckoner {
                     }
                 }
             };
-            slots[part.index].error = size;
+            // A small part of the size, so that the formula stays near where it is.
+            slots[part.index].error = SMALL * size;
         }
-        let spread = scalar(&self.formula, &slots, field).error;
+        let spread = scalar(&self.formula, &slots, field).error / SMALL;
         Ok(if spread.is_finite() { own.max(spread) } else { own })
     }
 
@@ -193,9 +204,15 @@ impl Part {
     }
 
     fn evaluate(&self, field: &Field, slots: &[Rounded], span: [f64; 2], memory: &Memory) -> Result<Estimate> {
-        let ends = self.ends(field, slots, span)?;
+        let mut ends = self.ends(field, slots, span)?;
         let mut along = self.along.clone();
         along.fill(slots);
+        // Only an integral counts its direction.
+        if let ([from, to], true) = (&mut ends[..], self.kind != Kind::Integral)
+            && from > to
+        {
+            std::mem::swap(from, to);
+        }
         let near = || memory.borrow().get(&self.index).copied();
         let keep = |extreme: &Extreme| {
             memory.borrow_mut().entry(self.index).or_insert(extreme.place.value);
@@ -219,6 +236,9 @@ impl Part {
             Kind::Mean => {
                 let sum = quantity::integral(field, &along, ends[0], ends[1])?;
                 let length = ends[1] - ends[0];
+                if length == 0.0 {
+                    return Err(Error::Unsupported("the stretch of this mean has no length".into()));
+                }
                 Ok(Estimate { value: sum.value / length, error: sum.error / length.abs() })
             }
             Kind::Norm => quantity::norm(field, &along, ends[0], ends[1]),

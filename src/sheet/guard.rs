@@ -40,11 +40,10 @@ fn determinant(matrix: &[Vec<f64>], [rows, columns]: &[Vec<f64>; 2]) -> f64 {
         if own == 0.0 {
             break;
         }
-        for r in k + 1..m.len() {
-            let factor = m[r][k] / own;
-            for c in k..m.len() {
-                m[r][c] -= factor * m[k][c];
-            }
+        let (above, below) = m.split_at_mut(k + 1);
+        for row in below {
+            let factor = row[k] / own;
+            row.iter_mut().zip(&above[k]).for_each(|(r, a)| *r -= factor * a);
         }
     }
     product

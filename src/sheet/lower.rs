@@ -4,6 +4,7 @@
 //! ([`super::carry`]). Conditions and reports are lowered afterwards, once more from the syntax: wherever a part of
 //! them is a carried flux, or a multiple of it, the flux stands in; what is left is expanded.
 
+use super::absolute::Absolute;
 use super::call::FUNCTIONS;
 use super::fault::{Faults, nearest};
 use super::functional::Functional;
@@ -21,9 +22,8 @@ pub(super) struct Typed {
     pub node: NodeId,
     /// `None` for a literal 0, which fits every dimension.
     pub dimension: Option<Dimension>,
-    /// How many times an absolute temperature is in it: 1 for a temperature, 0 for a difference; not a number
-    /// where that cannot be said.
-    pub absolute: f64,
+    /// How many times an absolute temperature is in it.
+    pub absolute: Absolute,
 }
 
 /// A formula of the sheet.
@@ -76,6 +76,14 @@ pub(super) struct Carried {
     pub written: NodeId,
     /// The carried unknown.
     pub unknown: u16,
+}
+
+fn unknown_count(unit: &Unit) -> Absolute {
+    match unit.dimension {
+        _ if unit.is_absolute() => Absolute::CELSIUS,
+        Dimension::TEMPERATURE => Absolute::KELVIN,
+        _ => Absolute::NONE,
+    }
 }
 
 #[derive(Debug, Clone, Copy)]
@@ -148,8 +156,15 @@ impl<'f> Lowerer<'f> {
         None
     }
 
+    /// Notes a warning once.
+    pub fn warn(&mut self, warning: String) {
+        if !self.warnings.contains(&warning) {
+            self.warnings.push(warning);
+        }
+    }
+
     pub(super) fn plain(&self, node: NodeId, dimension: Dimension) -> Option<Typed> {
-        Some(Typed { node, dimension: Some(dimension), absolute: 0.0 })
+        Some(Typed { node, dimension: Some(dimension), absolute: Absolute::NONE })
     }
 
     /// The value of a node that depends on nothing.
@@ -205,7 +220,7 @@ impl<'f> Lowerer<'f> {
             Kind::Name(name) => self.name(at, name, &e.span),
             Kind::Negate(a) => {
                 let a = self.lower(at, a)?;
-                Some(Typed { node: self.graph.negate(a.node), absolute: -a.absolute, ..a })
+                Some(Typed { node: self.graph.negate(a.node), absolute: a.absolute.times(-1.0), ..a })
             }
             Kind::Binary(operator, a, b) => self.binary(at, e, *operator, a, b),
             Kind::Prime(a, order) => {
@@ -217,7 +232,8 @@ impl<'f> Lowerer<'f> {
                 let (then, otherwise) = (then?, otherwise?);
                 let dimension = self.same(at, e, (a, then), (b, otherwise))?;
                 let node = self.choose(at, test, then.node, otherwise.node)?;
-                let absolute = if then.absolute == otherwise.absolute { then.absolute } else { f64::NAN };
+                self.balanced(at, (a, then), (b, otherwise))?;
+                let absolute = then.absolute.either(otherwise.absolute);
                 Some(Typed { node, dimension, absolute })
             }
             Kind::Call { name, name_span, primes, arguments } => self.call(at, e, name, name_span, *primes, arguments),
@@ -231,19 +247,22 @@ impl<'f> Lowerer<'f> {
         let Some(unit) = unit else {
             let node = self.graph.number(value);
             let dimension = (value != 0.0).then(Dimension::default);
-            return Some(Typed { node, dimension, absolute: 0.0 });
+            return Some(Typed { node, dimension, absolute: Absolute::NONE });
         };
         for symbol in unit.text.split(|c: char| !c.is_alphabetic()).filter(|s| !s.is_empty()) {
             if self.meanings.contains_key(symbol) {
                 let text = at.text.get(e.span.clone()).unwrap_or("");
                 let warning = format!("`{text}`: {symbol} is read as the unit, not as the name `{symbol}`");
-                if !self.warnings.contains(&warning) {
-                    self.warnings.push(warning);
-                }
+                self.warn(warning);
             }
         }
         let node = self.graph.quantity(value, unit);
-        Some(Typed { node, dimension: Some(unit.dimension), absolute: f64::from(u8::from(unit.is_absolute())) })
+        let absolute = match unit.dimension {
+            _ if unit.is_absolute() => Absolute::CELSIUS,
+            Dimension::TEMPERATURE => Absolute::DATUM,
+            _ => Absolute::NONE,
+        };
+        Some(Typed { node, dimension: Some(unit.dimension), absolute })
     }
 
     /// What a declared name stands for, `None` if it is at fault.
@@ -262,28 +281,43 @@ impl<'f> Lowerer<'f> {
             if name == "inf" {
                 return self.fault("not yet", at, span, "`inf`: infinite spans are not part of this version", "");
             }
-            let known = self.meanings.keys().map(String::as_str).chain(FUNCTIONS.iter().copied());
-            let hint = nearest(name, known).map(|k| format!("did you mean `{k}`?")).unwrap_or_default();
-            return self.fault("unknown name", at, span, format!("`{name}` is not defined"), &hint);
+            return self.undefined(at, name, span);
         };
         match meaning {
             Meaning::Faulty => None,
             Meaning::Coordinate => {
                 let node = self.graph.coordinate();
-                Some(Typed { node, dimension: Some(self.coordinate_dimension?), absolute: 0.0 })
+                // Of a coordinate that is a temperature it is not known how its values are meant.
+                let temperature = self.coordinate_dimension == Some(Dimension::TEMPERATURE);
+                let absolute = if temperature { Absolute::UNCLEAR } else { Absolute::NONE };
+                Some(Typed { node, dimension: self.coordinate_dimension, absolute })
             }
             Meaning::Function(index) => {
                 let unit = &self.functions[usize::from(index)].unit;
-                let (dimension, absolute) = (unit.dimension, f64::from(u8::from(unit.is_absolute())));
+                let (dimension, absolute) = (unit.dimension, unknown_count(unit));
                 Some(Typed { node: self.graph.jet(index, 0), dimension: Some(dimension), absolute })
             }
             Meaning::Constant(index) => {
                 let unit = &self.constants[usize::from(index)].unit;
-                let (dimension, absolute) = (unit.dimension, f64::from(u8::from(unit.is_absolute())));
+                let (dimension, absolute) = (unit.dimension, unknown_count(unit));
                 Some(Typed { node: self.graph.constant(index), dimension: Some(dimension), absolute })
             }
             meaning @ (Meaning::Formula(_) | Meaning::Pieces(..)) => self.defined(at, name, span, &meaning),
         }
+    }
+
+    /// Notes a name that is not defined, once however often it is used.
+    pub(super) fn undefined<T>(&mut self, at: &Located, name: &str, span: &Span) -> Option<T> {
+        let sound = self.meanings.iter().filter(|(_, meaning)| !matches!(meaning, Meaning::Faulty));
+        let known = sound.map(|(name, _)| name.as_str()).chain(FUNCTIONS.iter().copied());
+        let near = nearest(name, known).map(|k| format!("did you mean `{k}`?"));
+        let unit = || {
+            let unit = Unit::parse(name, false).ok()?;
+            Some(format!("as a unit it belongs behind a number: `12 kN {0}` or `12 [kN*{0}]`", unit.text))
+        };
+        let hint = near.or_else(unit).unwrap_or_default();
+        self.meanings.insert(name.to_owned(), Meaning::Faulty);
+        self.fault("unknown name", at, span, format!("`{name}` is not defined"), &hint)
     }
 
     fn defined(&mut self, at: &Located, name: &str, span: &Span, meaning: &Meaning) -> Option<Typed> {

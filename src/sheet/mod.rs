@@ -5,6 +5,7 @@
 //! counts (`assemble`), and at last the model that the engine solves (`model`). [`Sheet::evaluate`] makes the
 //! asked numbers from a solution.
 
+mod absolute;
 mod along;
 mod arithmetic;
 mod assemble;
@@ -231,7 +232,9 @@ impl Sheet {
                     at(*x)
                 )
             }
-            Error::NotFinite { what, .. } => format!("{what} is not finite"),
+            Error::NotFinite { what, .. } => {
+                format!("{what} is not finite: look for a division by zero, a root or logarithm of a negative number")
+            }
             Error::Unresolved { elements, x } => {
                 format!("{elements} elements do not resolve the solution near {}", at(*x))
             }

@@ -76,10 +76,7 @@ impl Lowerer<'_> {
                 (d, own) => d.or(own),
             });
             first = first.or(Some((formula, value)));
-            if absolute.is_some_and(|a| a != value.absolute) {
-                absolute = Some(f64::NAN);
-            }
-            absolute = absolute.or(Some(value.absolute));
+            absolute = Some(absolute.map_or(value.absolute, |a| a.either(value.absolute)));
             node = Some(match node {
                 // The last piece of a gapless list holds everywhere: its limits are checked, not tested.
                 None => value.node,

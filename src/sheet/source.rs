@@ -1,6 +1,6 @@
 //! The sheet's file as sections of located texts: TOML and nothing else; no formula is read here.
 
-use super::fault::{Faults, nearest};
+use super::fault::{Faults, NOT_TOML, nearest};
 use std::ops::Range;
 use toml::Spanned;
 use toml::de::{DeTable, DeValue};
@@ -124,6 +124,8 @@ pub(super) struct Source {
     pub conditions: Vec<Entry<Vec<Located>>>,
     pub report: Vec<Entry<Located>>,
     pub relative: Option<(f64, Range<usize>)>,
+    /// Names whose entry is at fault: they are declared all the same.
+    pub faulty: Vec<(String, Range<usize>)>,
 }
 
 const SECTIONS: [&str; 8] = ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];
@@ -147,7 +149,7 @@ pub(super) fn read(sheet: &str, faults: &mut Faults) -> Source {
     let (table, errors) = Table::parse_recoverable(sheet);
     for error in errors {
         let span = error.span().unwrap_or(0..0);
-        faults.add("toml", span, format!("not TOML: {}", error.message()), Some(TOML_HINT.into()));
+        faults.add(NOT_TOML, span, format!("not TOML: {}", error.message()), Some(TOML_HINT.into()));
     }
     let mut reader = Reader { sheet, faults };
     for (key, value) in table.get_ref() {
@@ -155,7 +157,7 @@ pub(super) fn read(sheet: &str, faults: &mut Faults) -> Source {
     }
     for (name, missing) in [
         ("span", source.coordinate.is_none()),
-        ("unknowns", source.unknowns.is_empty()),
+        ("unknowns", source.unknowns.is_empty() && source.faulty.is_empty()),
         ("equations", source.equations.is_empty()),
         ("report", source.report.is_empty()),
     ] {
@@ -202,9 +204,15 @@ impl Reader<'_, '_> {
         match key {
             "title" => source.title = self.text(value).map(|l| l.text).unwrap_or_default(),
             "note" => source.note = self.text(value).map(|l| l.text),
-            "given" => self.each(value, |r, entry, value| source.given.extend(r.given(entry, value))),
+            "given" => self.each(value, |r, entry, value| match r.given(entry.clone(), value) {
+                Some(given) => source.given.push(given),
+                None => source.faulty.push(entry),
+            }),
             "span" => self.each(value, |r, entry, value| r.span(source, entry, value)),
-            "unknowns" => self.each(value, |r, entry, value| source.unknowns.extend(r.unknown(entry, value))),
+            "unknowns" => self.each(value, |r, entry, value| match r.unknown(entry.clone(), value) {
+                Some(unknown) => source.unknowns.push(unknown),
+                None => source.faulty.push(entry),
+            }),
             "equations" => self.each(value, |r, entry, value| source.equations.extend(r.formula(entry, value))),
             "report" => self.each(value, |r, entry, value| source.report.extend(r.formula(entry, value))),
             "conditions" => self.each(value, |r, (name, name_span), value| {
@@ -244,6 +252,7 @@ impl Reader<'_, '_> {
             DeValue::Boolean(_) => "true or false",
             DeValue::Datetime(_) => "a date",
             DeValue::Array(_) => "a list",
+            DeValue::Table(table) if table.is_empty() => "an empty table",
             DeValue::Table(_) => "a table",
         };
         self.faults.add("wrong kind", value.span(), format!("{what} cannot stand here"), Some(hint.into()));
@@ -281,6 +290,10 @@ impl Reader<'_, '_> {
             table.iter().find(|(k, _)| matches!(k.as_ref().as_ref(), "against" | "points" | "file" | "through"))
         {
             self.faults.add("not yet", key.span(), "measured data are not part of this version", None);
+            return None;
+        }
+        if table.is_empty() {
+            self.wrong(value, "write \"value\", or pieces: { \"0 m .. 1.4 m\" = \"value\", else = \"value\" }");
             return None;
         }
         let (mut pieces, mut otherwise) = (Vec::new(), None);
@@ -338,7 +351,10 @@ impl Reader<'_, '_> {
                 None
             }
         };
-        let Some(ends) = ends else { return };
+        let Some(ends) = ends else {
+            source.faulty.push((name, name_span));
+            return;
+        };
         if source.coordinate.is_some() {
             self.faults.add("unknown key", name_span, format!("`{name}`: a sheet has one coordinate"), None);
             return;
@@ -358,6 +374,7 @@ impl Reader<'_, '_> {
             match (key.as_ref().as_ref(), value.get_ref()) {
                 ("unit", _) => unit = self.text(value),
                 ("constant", DeValue::Boolean(b)) => constant = *b,
+                ("constant", _) => self.wrong(value, "write constant = true"),
                 ("guess", _) => guess = self.text(value),
                 ("above", _) => above = self.text(value),
                 ("below", _) => below = self.text(value),

@@ -476,6 +476,11 @@ impl<'a> Parser<'a> {
             Token::Number { .. } if number_before => {
                 error(span, "two numbers in a row", Some("an operator is missing; digits are not grouped"))
             }
+            Token::Open if matches!(before, Some((Token::Prime, _))) => error(
+                span,
+                "a value at a point is taken of a name",
+                Some("give the expression a name, or write at(expression, point)"),
+            ),
             Token::Number { .. } | Token::Open => error(
                 span.clone(),
                 format!("an operator is missing before `{found}`"),

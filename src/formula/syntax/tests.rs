@@ -114,6 +114,7 @@ fn faults_have_place_message_and_hint() {
         ("x y", 2..3, "an operator is missing before `y`", PRODUCT),
         ("2 (x)", 2..3, "an operator is missing before `(`", PRODUCT),
         ("(a)(b)", 3..4, "an operator is missing before `(`", PRODUCT),
+        ("(a)'(b)", 4..5, "a value at a point is taken of a name", Some("give the expression a name, or write at(expression, point)")),
         ("x 2", 2..3, "an operator is missing before `2`", PRODUCT),
         ("40 kn", 3..5, "an operator is missing before `kn`", Some("`kn` is not a unit: did you mean kN?")),
         ("5 m x", 4..5, "an operator is missing before `x`", PRODUCT),
