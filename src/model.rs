@@ -200,6 +200,15 @@ pub trait Model: Sync {
         let _ = (x, jets, constants);
         true
     }
+    /// Jets at x to start a nonlinear problem from; they need not meet the conditions.
+    fn guess(&self, x: f64, piece: usize) -> Option<Vec<f64>> {
+        let _ = (x, piece);
+        None
+    }
+    /// Unknown constants to start from.
+    fn guessed_constants(&self) -> Option<Vec<f64>> {
+        None
+    }
     /// Name of an unknown function, for messages.
     fn unknown_name(&self, unknown: usize) -> String {
         format!("u{}", unknown + 1)

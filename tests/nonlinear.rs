@@ -167,3 +167,26 @@ fn no_solution_is_said() {
         other => panic!("expected a verdict, got {:?}", other.map(|s| s.condition)),
     }
 }
+
+/// Of the two solutions of y'' + exp(y) = 0 the guess and the limits of the sheet choose (largest values: closed form ln cosh,
+/// 0.1405392144 and 4.0914672462).
+#[test]
+fn a_guess_chooses_and_limits_hold() {
+    let largest = |unknown: &str| {
+        let text = format!(
+            "[span]\nx = [\"0\", \"1\"]\n[unknowns]\ny = {{ unit = \"1\"{unknown} }}\n[equations]\ne = \"y'' + exp(y) = 0\"\n\
+             [conditions]\na = \"y(0) = 0\"\nb = \"y(1) = 0\"\n[report]\nm = \"max(y)\"\n"
+        );
+        let sheet = spanwise::sheet::read(&text).unwrap_or_else(|f| panic!("{f:#?}"));
+        let solution = sheet.solve(None)?;
+        Ok::<f64, Error>(sheet.evaluate(&solution)[0].printed().expect("a value").value)
+    };
+    let near = |found: Result<f64, Error>, value: f64| {
+        let found = found.expect("solved");
+        assert!((found - value).abs() < 1e-12, "{found}");
+    };
+    near(largest(""), 0.140_539_214_400_471_8);
+    near(largest(", guess = \"16*x*(1 - x)\""), 4.091_467_246_189_260);
+    near(largest(", below = \"3\""), 0.140_539_214_400_471_8);
+    assert!(matches!(largest(", above = \"1\""), Err(Error::NoSolution { .. })));
+}

@@ -19,5 +19,5 @@ pub(crate) mod pass;
 pub(crate) mod tables;
 
 pub(crate) use nudge::Perturbation;
-pub(crate) use pass::{Pass, solve, transfer};
+pub(crate) use pass::{Pass, from_nodes, solve, transfer};
 pub(crate) use tables::Library;

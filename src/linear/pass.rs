@@ -97,32 +97,42 @@ pub(crate) fn transfer(field: &Field, mesh: &Mesh, library: &mut Library) -> Res
         return Ok(field.clone());
     }
     let layout = &field.layout;
-    let mut series = Vec::with_capacity(mesh.elements.len());
     let mut hint = 0;
+    let mut nodes = Vec::with_capacity(mesh.elements.len());
     for element in &mesh.elements {
         let tables = library.get(element.nodes)?;
-        let mut values = vec![Vec::with_capacity(tables.n); layout.unknowns()];
-        let mut state = Vec::with_capacity(layout.states());
-        for (node, s) in tables.nodes.iter().enumerate() {
+        let mut jets = Vec::with_capacity(tables.n);
+        for s in &tables.nodes {
             let x = element.coordinate(*s);
             hint = field.locate_in(x, element.piece, hint);
-            let jets = field.jets(hint, field.element(hint).reference(x), layout.orders());
-            for (i, &m) in layout.orders().iter().enumerate() {
-                values[i].push(jets[layout.jet(i, m)]);
-                if node == 0 {
-                    state.extend((0..m).map(|k| jets[layout.jet(i, k)]));
-                }
-            }
+            jets.push(field.jets(hint, field.element(hint).reference(x), layout.orders()));
         }
+        nodes.push(jets);
+    }
+    from_nodes(layout, mesh, &nodes, field.constants.clone(), library)
+}
+
+/// A field from jets at the nodes of each element: the highest derivatives of all nodes, the states of the first.
+pub(crate) fn from_nodes(
+    layout: &Layout,
+    mesh: &Mesh,
+    nodes: &[Vec<Vec<f64>>],
+    constants: Vec<f64>,
+    library: &mut Library,
+) -> Result<Field> {
+    let mut series = Vec::with_capacity(mesh.elements.len());
+    for (element, nodes) in mesh.elements.iter().zip(nodes) {
+        let tables = library.get(element.nodes)?;
         let mut jets = Vec::with_capacity(layout.jets());
-        let mut first = 0;
-        for (values, &m) in values.iter().zip(layout.orders()) {
-            jets.extend(integrate_up(tables.modal(values), &state[first..first + m], 0.5 * element.length()));
-            first += m;
+        for (i, &m) in layout.orders().iter().enumerate() {
+            let values: Vec<f64> = nodes.iter().map(|jets| jets[layout.jet(i, m)]).collect();
+            let first = layout.jet(i, 0);
+            let state = &nodes[0][first..first + m];
+            jets.extend(integrate_up(tables.modal(&values), state, 0.5 * element.length()));
         }
         series.push(jets);
     }
-    Ok(Field::from_series(mesh.clone(), layout, field.constants.clone(), series))
+    Ok(Field::from_series(mesh.clone(), layout, constants, series))
 }
 
 /// What is kept of an element for the back-substitution.

@@ -417,6 +417,11 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let layout = Layout::new(&orders, self.lowerer.constants.len());
         let linear = self.linear(&nodes, &placed);
         let statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
+        let [limits, constant_limits] = self.limits();
+        let guess = self.guess(&fluxes, &layout, &points);
+        if !self.lowerer.faults.is_empty() {
+            return None;
+        }
         let graph = &mut self.lowerer.graph;
         let model = SheetModel {
             equations: Equations::new(graph, &nodes, &layout, &points),
@@ -431,8 +436,9 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 .chain(running.iter().map(|_| "an integral".into()))
                 .collect(),
             equation_names,
-            limits: Vec::new(),
-            constant_limits: Vec::new(),
+            limits,
+            constant_limits,
+            guess,
             layout,
             points: points.clone(),
         };

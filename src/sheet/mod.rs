@@ -24,6 +24,7 @@ mod piece;
 mod points;
 mod reduce;
 mod source;
+mod start;
 mod statement;
 
 pub use fault::Fault;

@@ -1,5 +1,6 @@
 //! The sheet's problem as the engine sees it.
 
+use super::start::Guess;
 use crate::error::Result;
 use crate::formula::graph::{Graph, NodeId, Variable};
 use crate::formula::number::Rounded;
@@ -164,6 +165,8 @@ pub struct SheetModel {
     pub(super) limits: Vec<(usize, f64, f64)>,
     /// The same for unknown constants.
     pub(super) constant_limits: Vec<(usize, f64, f64)>,
+    /// Where to start a nonlinear problem.
+    pub(super) guess: Option<Guess>,
 }
 
 impl std::fmt::Debug for SheetModel {
@@ -233,6 +236,14 @@ impl Model for SheetModel {
         let inside = |value: f64, low: f64, high: f64| value > low && value < high;
         self.limits.iter().all(|(u, low, high)| inside(jets[self.layout.jet(*u, 0)], *low, *high))
             && self.constant_limits.iter().all(|(c, low, high)| inside(constants[*c], *low, *high))
+    }
+
+    fn guess(&self, x: f64, piece: usize) -> Option<Vec<f64>> {
+        self.guess.as_ref().map(|g| g.jets(x, piece))
+    }
+
+    fn guessed_constants(&self) -> Option<Vec<f64>> {
+        self.guess.as_ref().map(|g| g.constants.clone())
     }
 
     fn unknown_name(&self, unknown: usize) -> String {

@@ -53,6 +53,11 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
     let base = solver.solve(&mesh, Some(&other_rows), &Perturbation::NONE)?.field;
     let between = solver.solve(&mesh.enriched(ENRICH / 2), Some(&base), &Perturbation::NONE)?.field;
     let answer = solver.solve(&mesh.enriched(ENRICH), Some(&base), &Perturbation::NONE)?;
+    if !admissible(model, &answer.field) {
+        return Err(Error::NoSolution {
+            tried: "the one solution of this linear problem leaves the limits given".into(),
+        });
+    }
     let mut nudged = Vec::new();
     for pattern in 0..Perturbation::PATTERNS {
         let nudge = Perturbation::nudge(pattern);
@@ -93,6 +98,16 @@ fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
         return Err(Error::Argument { what: "unknowns", value: "none".into(), range: "one or more" });
     }
     Ok(())
+}
+
+/// Whether a field lies within the limits of its model, seen at seven points of each element.
+pub(super) fn admissible(model: &dyn Model, field: &Field) -> bool {
+    let inside = |e: usize, s: f64| {
+        let jets = field.jets(e, s, field.layout.orders());
+        model.admissible(field.element(e).coordinate(s), &jets, &field.constants)
+    };
+    let points = [-0.99, -0.7, -0.3, 0.0, 0.3, 0.7, 0.99];
+    (0..field.mesh.elements.len()).all(|e| points.iter().all(|s| inside(e, *s)))
 }
 
 /// How small the last coefficients must be for a given accuracy.

@@ -1,12 +1,12 @@
 //! Nonlinear boundary-value problems: start, mesh and iteration together, homotopy when they find no way.
 
-use super::boundary::{ENRICH, PASSES, Solver, wanted_tail};
+use super::boundary::{ENRICH, PASSES, Solver, admissible, wanted_tail};
 use super::{Settings, Solution};
 use crate::adapt::{exponents, refine, seed};
 use crate::error::{Error, Result};
 use crate::evidence::bars::Companions;
 use crate::field::Field;
-use crate::linear::{Library, Perturbation, transfer};
+use crate::linear::{Library, Perturbation, from_nodes, transfer};
 use crate::mesh::Mesh;
 use crate::model::{Batch, Condition, ConditionValue, Layout, Linearised, Model, Release};
 use crate::newton::{Iteration, Linearisation, Stepper, newton};
@@ -45,6 +45,7 @@ fn starts(model: &dyn Model, settings: &Settings<'_>) -> Result<Vec<Field>> {
     let mesh = Mesh::uniform(model.points(), 1, 16);
     let mut library = depth(layout);
     let mut starts = Vec::new();
+    starts.extend(guessed(model, &mut library)?);
     for level in [0.0, 1.0] {
         let flat = constant(model, &mesh, level, &mut library)?;
         let linear = Linearisation::new(model, &flat, &flat);
@@ -63,6 +64,27 @@ fn starts(model: &dyn Model, settings: &Settings<'_>) -> Result<Vec<Field>> {
         });
     }
     Ok(starts)
+}
+
+/// The field that the model guesses.
+fn guessed(model: &dyn Model, library: &mut Library) -> Result<Option<Field>> {
+    let layout = model.layout();
+    let mesh = Mesh::uniform(model.points(), 4, 16);
+    if model.guess(model.points()[0], 0).is_none() {
+        return Ok(None);
+    }
+    let mut values = Vec::with_capacity(mesh.elements.len());
+    for element in &mesh.elements {
+        let tables = library.get(element.nodes)?;
+        let at = |s: &f64| model.guess(element.coordinate(*s), element.piece).unwrap_or_default();
+        let jets: Vec<Vec<f64>> = tables.nodes.iter().map(at).collect();
+        if jets.iter().flatten().any(|v| !v.is_finite()) || jets.iter().any(|j| j.len() != layout.jets()) {
+            return Err(Error::NotFinite { what: "the guess".into(), x: element.left });
+        }
+        values.push(jets);
+    }
+    let constants = model.guessed_constants().unwrap_or_else(|| vec![0.0; layout.constants()]);
+    Ok(Some(from_nodes(layout, &mesh, &values, constants, library)?))
 }
 
 fn depth(layout: &Layout) -> Library {
@@ -224,12 +246,7 @@ impl Stepper for Steps<'_, '_> {
     }
 
     fn admissible(&self, field: &Field) -> bool {
-        let orders = field.layout.orders();
-        let at = |e: usize, s: f64| {
-            let jets = field.jets(e, s, orders);
-            self.run.model.admissible(field.element(e).coordinate(s), &jets, &field.constants)
-        };
-        (0..field.mesh.elements.len()).all(|e| [-1.0, -0.7, -0.3, 0.0, 0.3, 0.7, 1.0].iter().all(|s| at(e, *s)))
+        admissible(self.run.model, field)
     }
 }
 
