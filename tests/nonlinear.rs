@@ -186,7 +186,7 @@ fn a_guess_chooses_and_limits_hold() {
         assert!((found - value).abs() < 1e-12, "{found}");
     };
     near(largest(""), 0.140_539_214_400_471_8);
-    near(largest(", guess = \"16*x*(1 - x)\""), 4.091_467_246_189_260);
+    near(largest(", guess = \"16*x*(1 - x)\""), 4.091_467_246_189_26);
     near(largest(", below = \"3\""), 0.140_539_214_400_471_8);
     assert!(matches!(largest(", above = \"1\""), Err(Error::NoSolution { .. })));
 }
