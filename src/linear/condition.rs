@@ -1,7 +1,7 @@
 //! A condition in terms of states.
 
+use super::element::check_finite;
 use super::nudge::Perturbation;
-use super::pass::check_finite;
 use crate::error::{Error, Result};
 use crate::model::{Batch, ConditionValue, Linearised, Model, Place, Side};
 use nalgebra::{DMatrix, DVector};

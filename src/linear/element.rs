@@ -3,7 +3,7 @@
 use super::tables::Tables;
 use crate::error::{Error, Result};
 use crate::mesh::Element;
-use crate::model::{Layout, Linearised};
+use crate::model::{Layout, Linearised, Model};
 use crate::tolerance;
 use faer::dyn_stack::{MemBuffer, MemStack};
 use faer::linalg::lu::partial_pivoting::factor::{lu_in_place, lu_in_place_scratch};
@@ -255,4 +255,19 @@ fn unscale_columns(layout: &Layout, half: f64, sizes: Sizes<'_>, rows: &mut [f64
             }
         }
     }
+}
+
+/// Refuses residuals and derivatives that are not finite, naming the equation and the place.
+pub(super) fn check_finite(model: &dyn Model, x: &[f64], equations: &Linearised) -> Result<()> {
+    let n = x.len();
+    let layout = model.layout();
+    for (array, per_row) in
+        [(&equations.residual, 1), (&equations.jets, layout.jets()), (&equations.constants, layout.constants())]
+    {
+        if let Some(index) = array.iter().position(|v| !v.is_finite()) {
+            let what = model.equation_name(index / (n * per_row));
+            return Err(Error::NotFinite { what, x: x[index % n] });
+        }
+    }
+    Ok(())
 }

@@ -1,6 +1,6 @@
 //! One linear solve on one mesh.
 
-use super::element::{Condensed, Sizes, Workspace, condense};
+use super::element::{Condensed, Sizes, Workspace, check_finite, condense};
 use super::frame::Frame;
 use super::nudge::Perturbation;
 use super::tables::Library;
@@ -161,21 +161,6 @@ fn ratios(layout: &Layout, n: usize, equations: &Linearised) -> Vec<f64> {
         }
     }
     ratios
-}
-
-/// Refuses residuals and derivatives that are not finite, naming the equation and the place.
-pub(super) fn check_finite(model: &dyn Model, x: &[f64], equations: &Linearised) -> Result<()> {
-    let n = x.len();
-    let layout = model.layout();
-    for (array, per_row) in
-        [(&equations.residual, 1), (&equations.jets, layout.jets()), (&equations.constants, layout.constants())]
-    {
-        if let Some(index) = array.iter().position(|v| !v.is_finite()) {
-            let what = model.equation_name(index / (n * per_row));
-            return Err(Error::NotFinite { what, x: x[index % n] });
-        }
-    }
-    Ok(())
 }
 
 /// From states and responses to the polynomial on each element.

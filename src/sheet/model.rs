@@ -1,6 +1,5 @@
 //! The sheet's problem as the engine sees it.
 
-use super::start::Guess;
 use crate::error::Result;
 use crate::formula::graph::{Graph, NodeId, Variable};
 use crate::formula::number::Rounded;
@@ -147,6 +146,27 @@ impl Tie {
         for (constant, value) in self.constants.iter().zip(&values[1 + self.reads.len()..]) {
             out.constants[*constant] = bound(value);
         }
+    }
+}
+
+/// A start for a nonlinear problem.
+pub(super) struct Guess {
+    /// All jets in the order of the layout.
+    pub tape: Tape,
+    /// Outcomes of the tests on data, for each piece.
+    pub tests: Vec<Vec<bool>>,
+    /// Unknown constants.
+    pub constants: Vec<f64>,
+}
+
+impl Guess {
+    /// The jets at a point.
+    pub fn jets(&self, x: f64, piece: usize) -> Vec<f64> {
+        let mut jets = vec![0.0; self.tape.outputs()];
+        let tests = &self.tests[piece];
+        let inputs = ScalarInputs { x, jets: &[], constants: &[], slots: &[], tests };
+        self.tape.run_scalar(&mut Vec::new(), &inputs, &mut jets);
+        jets
     }
 }
 

@@ -2,33 +2,13 @@
 
 use super::assemble::Assembler;
 use super::carry::Flux;
+use super::model::Guess;
 use super::source::Located;
 use crate::formula::graph::{Graph, NodeId};
-use crate::formula::tape::{ScalarInputs, Tape};
+use crate::formula::tape::Tape;
 use crate::model::Layout;
 use crate::unit::Dimension;
 use std::collections::HashMap;
-
-/// A start for a nonlinear problem.
-pub(super) struct Guess {
-    /// All jets in the order of the layout.
-    tape: Tape,
-    /// Outcomes of the tests on data, for each piece.
-    tests: Vec<Vec<bool>>,
-    /// Unknown constants.
-    pub constants: Vec<f64>,
-}
-
-impl Guess {
-    /// The jets at a point.
-    pub fn jets(&self, x: f64, piece: usize) -> Vec<f64> {
-        let mut jets = vec![0.0; self.tape.outputs()];
-        let tests = &self.tests[piece];
-        let inputs = ScalarInputs { x, jets: &[], constants: &[], slots: &[], tests };
-        self.tape.run_scalar(&mut Vec::new(), &inputs, &mut jets);
-        jets
-    }
-}
 
 /// Lower and upper bounds of unknown functions or constants: index, both limits exclusive.
 pub(super) type Limits = Vec<(usize, f64, f64)>;

@@ -1,21 +1,15 @@
 //! Two-point and multi-point boundary-value problems.
 
 use super::nonlinear::nonlinear;
-use super::{Progress, Settings, Solution};
+use super::solver::{ENRICH, PASSES, Solver, admissible, wanted_tail};
+use super::{Settings, Solution};
 use crate::adapt::{exponents, refine, seed};
 use crate::error::{Error, Result};
 use crate::evidence::bars::Companions;
-use crate::evidence::singular;
 use crate::field::Field;
-use crate::linear::{self, Library, Pass, Perturbation};
+use crate::linear::{Library, Perturbation};
 use crate::mesh::Mesh;
 use crate::model::Model;
-use crate::tolerance;
-
-/// Most passes of the mesh adaptation.
-pub(super) const PASSES: usize = 40;
-/// How many nodes the answer has more than the mesh it was adapted on.
-pub(super) const ENRICH: usize = 4;
 
 /// Solves a boundary-value problem: seeds a mesh, adapts it, and solves once more with more nodes
 /// and twice with changed coefficients for the error bars.
@@ -98,52 +92,4 @@ fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
         return Err(Error::Argument { what: "unknowns", value: "none".into(), range: "one or more" });
     }
     Ok(())
-}
-
-/// Whether a field lies within the limits of its model, seen at seven points of each element.
-pub(super) fn admissible(model: &dyn Model, field: &Field) -> bool {
-    let inside = |e: usize, s: f64| {
-        let jets = field.jets(e, s, field.layout.orders());
-        model.admissible(field.element(e).coordinate(s), &jets, &field.constants)
-    };
-    let points = [-0.99, -0.7, -0.3, 0.0, 0.3, 0.7, 0.99];
-    (0..field.mesh.elements.len()).all(|e| points.iter().all(|s| inside(e, *s)))
-}
-
-/// How small the last coefficients must be for a given accuracy.
-pub(super) fn wanted_tail(relative: f64) -> f64 {
-    (tolerance::TAIL_SHARE * relative).max(tolerance::FINEST_TAIL)
-}
-
-/// One problem being solved, pass after pass.
-pub(super) struct Solver<'a> {
-    pub model: &'a dyn Model,
-    pub settings: &'a Settings<'a>,
-    pub scale: Vec<f64>,
-    pub library: Library,
-    pub pass: usize,
-}
-
-impl Solver<'_> {
-    /// One linear solve. A system that looks singular is solved once more with more nodes before it is called so:
-    /// on a coarse mesh a regular problem may look singular.
-    pub fn solve(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
-        let first = self.solve_once(mesh, before, nudge)?;
-        if first.free.is_empty() {
-            return Ok(first);
-        }
-        let second = self.solve_once(&mesh.enriched(2 * ENRICH), before, nudge)?;
-        if second.free.is_empty() {
-            return Ok(second);
-        }
-        Err(Error::Singular(singular::explain(self.model, &second.free, &second.contradictions)))
-    }
-
-    pub fn solve_once(&mut self, mesh: &Mesh, before: Option<&Field>, nudge: &Perturbation) -> Result<Pass> {
-        self.pass += 1;
-        let (pass, elements) = (self.pass, mesh.elements.len());
-        let watch = self.settings.watch;
-        let mut tick = |done: usize| watch.is_none_or(|w| w(Progress { pass, elements, done }));
-        linear::solve(self.model, mesh, &mut self.library, &self.scale, before, nudge, &mut tick)
-    }
 }

@@ -2,6 +2,7 @@
 
 mod boundary;
 mod nonlinear;
+mod solver;
 
 pub use boundary::{boundary, on_mesh};
 

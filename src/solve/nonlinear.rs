@@ -1,6 +1,6 @@
 //! Nonlinear boundary-value problems: start, mesh and iteration together, homotopy when they find no way.
 
-use super::boundary::{ENRICH, PASSES, Solver, admissible, wanted_tail};
+use super::solver::{ENRICH, PASSES, Solver, admissible, wanted_tail};
 use super::{Settings, Solution};
 use crate::adapt::{exponents, refine, seed};
 use crate::error::{Error, Result};
