@@ -8,7 +8,7 @@ use super::model::{Equations, SheetModel, Tie};
 use super::reduce::Reduction;
 use super::source::{self, Given, Located, MOST_BYTES, Source};
 use super::{Item, Sheet, Wanted};
-use crate::formula::graph::NodeId;
+use crate::formula::graph::{Node, NodeId};
 use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::{Condition, Layout};
 use crate::unit::Unit;
@@ -322,6 +322,9 @@ impl<'s, 'f> Assembler<'s, 'f> {
                     self.usual_unit(&tree).filter(|u| u.dimension == dimension).unwrap_or_else(|| Unit::si(dimension))
                 }
             };
+            if let Node::Slot(slot) = self.lowerer.graph.node(typed.node) {
+                self.lowerer.functionals[slot as usize].unit.get_or_insert_with(|| unit.clone());
+            }
             let end = tree.span.end.min(at.text.len());
             let formula = at.text.get(..end).unwrap_or(&at.text).trim().to_owned();
             wanted.push(Wanted { label: entry.name.clone(), formula, node: typed.node, unit });
@@ -385,6 +388,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let owners = self.owners(&equations, &nodes, &orders)?;
         self.lowerer.reduction = Reduction::new(&mut self.lowerer.graph, &nodes, &orders, &owners);
         let reads = reads?;
+        if reads.iter().any(|read| !self.inside(read, &points)) {
+            // Refused already; what such a condition ties cannot be counted.
+            return None;
+        }
         let releases = self.releases(&reads, &orders, &points)?;
         self.check_count(&reads, &orders, releases.len(), &points);
         let order: usize = orders.iter().map(|m| usize::from(*m)).sum();

@@ -186,7 +186,8 @@ impl Lowerer<'_> {
             return Some(());
         }
         let hint = "make it an unknown constant (constant = true) and give its value in a condition";
-        self.fault("nonlocal", at, span, format!("{what} cannot stand in an equation"), hint)
+        let message = format!("{what} cannot stand here: it is known only from the solution");
+        self.fault("nonlocal", at, span, message, hint)
     }
 
     /// `name''(point)`
@@ -361,6 +362,7 @@ impl Lowerer<'_> {
             place,
             text,
             dimension: expression.dimension,
+            unit: None,
             reported: self.reporting,
         };
         let same = |f: &Functional| {

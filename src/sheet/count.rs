@@ -2,11 +2,25 @@
 
 use super::assemble::Assembler;
 use super::condition::{Read, Running};
+use super::points::SAME_POINT;
 use super::short;
 use crate::formula::graph::NodeId;
 use crate::model::Release;
 
 impl Assembler<'_, '_> {
+    /// Whether all points of a condition are points of the model.
+    pub(super) fn inside(&self, read: &Read, points: &[f64]) -> bool {
+        let (first, last) = (points[0], points[points.len() - 1]);
+        let small = SAME_POINT * (last - first).max(first.abs()).max(last.abs());
+        let slots = self.lowerer.all_slots(&read.node.into_iter().collect::<Vec<_>>());
+        let named = slots.iter().flat_map(|s| &self.lowerer.functionals[*s as usize].points);
+        let values =
+            |nodes: Vec<NodeId>| nodes.into_iter().filter_map(|p| self.lowerer.number_of(p)).collect::<Vec<_>>();
+        let placed = values(named.copied().collect()).iter().all(|x| *x >= first - small && *x <= last + small);
+        let released = read.release.iter().map(|(_, point, _)| *point).collect();
+        placed && values(released).iter().all(|x| *x > first + small && *x < last - small)
+    }
+
     /// Continuities given up; `None` if some cannot be.
     pub(super) fn releases(&mut self, reads: &[Read], orders: &[u8], points: &[f64]) -> Option<Vec<Release>> {
         let before = self.lowerer.faults.len();

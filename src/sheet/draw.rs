@@ -41,7 +41,9 @@ impl Assembler<'_, '_> {
             let new = !drawn.iter().any(|d| d.node == functional.expression || d.name == functional.text);
             if along && functional.reported && new && depends.jets && !depends.slots {
                 let (name, node) = (functional.text.clone(), functional.expression);
-                drawn.push(Drawn { name, node, unit: Unit::si(functional.dimension.unwrap_or_default()) });
+                let asked = functional.unit.clone().filter(|u| Some(u.dimension) == functional.dimension);
+                let unit = asked.unwrap_or_else(|| Unit::si(functional.dimension.unwrap_or_default()));
+                drawn.push(Drawn { name, node, unit });
             }
         }
         drawn

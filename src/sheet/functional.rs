@@ -8,7 +8,7 @@ use crate::formula::number::Rounded;
 use crate::formula::tape::{ScalarInputs, Tape};
 use crate::model::{Profile, Side};
 use crate::quantity::{self, Estimate, Extreme};
-use crate::unit::Dimension;
+use crate::unit::{Dimension, Unit};
 use std::cell::RefCell;
 use std::collections::{BTreeSet, HashMap};
 use std::ops::Range;
@@ -45,6 +45,8 @@ pub(super) struct Functional {
     pub text: String,
     /// What the expression measures.
     pub dimension: Option<Dimension>,
+    /// Unit in which the report asks for it, where it asks for nothing else in the line.
+    pub unit: Option<Unit>,
     /// Whether it stands in the report itself.
     pub reported: bool,
 }

@@ -91,17 +91,15 @@ impl Assembler<'_, '_> {
             }
             false
         }
-        for e in 0..nodes.len() {
-            if !assign(e, &has, &mut owner, &mut vec![false; orders.len()]) {
-                let place = self.written_for(equations, nodes, e);
-                let missing = owner.iter().position(Option::is_none).and_then(|u| self.lowerer.functions.get(u));
-                let name = missing.map_or("an unknown".into(), |u| format!("`{}`", u.name));
-                let message = format!("the equations do not determine the highest derivative of {name}");
-                self.lowerer.faults.add("equation count", place, message, Some(HIDDEN.into()));
-                return None;
-            }
-        }
-        Some(owner)
+        let idle: Vec<usize> =
+            (0..nodes.len()).filter(|e| !assign(*e, &has, &mut owner, &mut vec![false; orders.len()])).collect();
+        let Some(first) = idle.first() else { return Some(owner) };
+        let place = self.written_for(equations, nodes, *first);
+        let missing = owner.iter().position(Option::is_none).and_then(|u| self.lowerer.functions.get(u));
+        let name = missing.map_or("an unknown".into(), |u| format!("`{}`", u.name));
+        let message = format!("the equations do not determine the highest derivative of {name}");
+        self.lowerer.faults.add("equation count", place, message, Some(HIDDEN.into()));
+        None
     }
 
     /// Place of an equation of the sheet; for the definition of a flux that of the equation that first holds it.

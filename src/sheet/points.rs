@@ -13,6 +13,9 @@ use std::ops::Range;
 /// Most points (ends and breaks) of a sheet.
 const MOST_POINTS: usize = 20_000;
 
+/// Points nearer than this part of the span are one point.
+pub(super) const SAME_POINT: f64 = 1e-13;
+
 impl Assembler<'_, '_> {
     /// What `smooth` insists on must be an unknown or a derivative of one.
     pub(super) fn check_smooth(&mut self) {
@@ -65,8 +68,7 @@ impl Assembler<'_, '_> {
         wanted: &[Wanted],
     ) -> Vec<f64> {
         let length = span[1] - span[0];
-        // Points that differ by rounding are one point.
-        let small = 1e-13 * length.max(span[0].abs()).max(span[1].abs());
+        let small = SAME_POINT * length.max(span[0].abs()).max(span[1].abs());
         let inside = |x: f64| x >= span[0] - small && x <= span[1] + small;
         let unit = self.coordinate_unit();
         let shown = |x: f64| format!("{} {}", short(unit.from_si(x)), unit.text);
