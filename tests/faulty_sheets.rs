@@ -83,7 +83,7 @@ L = "0.3 m / z""#, 4, 14, "division by zero", r#"division by zero: `z` is 0"#),
     // toml nan
     (r#"k = "0.8 W/(m K)""#, r#"k = nan"#, 4, 5, "not finite", r#"nan is not a number to calculate with"#),
     // value in equation
-    (r#"(k*T')' = 0"#, r#"(k*T')' = h*(T(0 m) - Ta)/L"#, 13, 28, "nonlocal", r#"a value at a point cannot stand in an equation"#),
+    (r#"(k*T')' = 0"#, r#"(k*T')' = h*(T(0 m) - Ta)/L"#, 13, 28, "nonlocal", r#"a value at a point cannot stand here: it is known only from the solution"#),
     // inf
     (r#"x = ["0 m", "L"]"#, r#"x = ["0 m", "inf"]"#, 9, 14, "not yet", r#"`inf`: infinite spans are not part of this version"#),
     // eigen

@@ -314,7 +314,7 @@ fn pieces() {
         &q(r#""0 s .. 1 m" = "1 kN/m", "1 m .. y(0 m)" = "2 kN/m", else = "2 kN/m""#),
         &[
             (5, 8, "`0 s` is s (time) but m (length) is needed here"),
-            (5, 39, "a value at a point cannot stand here: it is known only from the solution"),
+            (5, 40, "a value at a point cannot stand here: it is known only from the solution"),
         ],
     );
 }

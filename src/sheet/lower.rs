@@ -330,6 +330,8 @@ impl<'f> Lowerer<'f> {
                 let message = format!("{} is defined by way of itself: {} -> `{name}`", circle[0], circle.join(" -> "));
                 return self.fault("cyclic names", at, span, message, "");
             }
+            // What was at fault in the equations is not tried again.
+            None if matches!(self.states[0].get(name), Some(State::Done(None))) => return None,
             None => {}
         }
         if self.stack.len() >= 200 {
