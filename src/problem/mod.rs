@@ -52,6 +52,7 @@ pub struct Problem {
     equations: Vec<(String, Equation)>,
     conditions: Vec<Tied>,
     releases: Vec<(f64, usize, usize)>,
+    limits: Vec<(usize, f64, f64)>,
 }
 
 impl Problem {
@@ -64,6 +65,7 @@ impl Problem {
             equations: Vec::new(),
             conditions: Vec::new(),
             releases: Vec::new(),
+            limits: Vec::new(),
         }
     }
 
@@ -77,6 +79,11 @@ impl Problem {
     pub fn constant(&mut self, name: &str) -> usize {
         self.constants.push(name.into());
         self.constants.len() - 1
+    }
+
+    /// Refuses solutions, and steps towards one, with an unknown function outside ]low, high\[.
+    pub fn limit(&mut self, unknown: usize, low: f64, high: f64) {
+        self.limits.push((unknown, low, high));
     }
 
     /// Declares a place where data step or kink.
@@ -132,12 +139,13 @@ struct Ready {
     conditions: Vec<Condition>,
     ties: Vec<Tie>,
     releases: Vec<Release>,
+    limits: Vec<(usize, f64, f64)>,
     linear: bool,
 }
 
 impl Ready {
     fn new(problem: Problem) -> Result<Self> {
-        let Problem { mut points, unknowns, constants, equations, conditions, releases } = problem;
+        let Problem { mut points, unknowns, constants, equations, conditions, releases, limits } = problem;
         let (from, to) = (points[0], points[1]);
         let inside = |x: f64| x.is_finite() && from <= x && x <= to;
         if let Some(x) = points.iter().find(|x| !inside(**x)) {
@@ -159,8 +167,16 @@ impl Ready {
             ties: Vec::new(),
             releases: Vec::new(),
             points: Vec::new(),
+            limits,
             linear: false,
         };
+        if let Some((unknown, _, _)) = ready.limits.iter().find(|l| l.0 >= orders.len()) {
+            return Err(Error::Argument {
+                what: "limited unknown",
+                value: unknown.to_string(),
+                range: "one that exists",
+            });
+        }
         for (x, unknown, order) in releases {
             let exists = unknown < orders.len() && order < orders[unknown] && from < x && x < to;
             if !exists {
@@ -296,6 +312,14 @@ impl Model for Ready {
 
     fn releases(&self) -> &[Release] {
         &self.releases
+    }
+
+    fn admissible(&self, _x: f64, jets: &[f64], _constants: &[f64]) -> bool {
+        let inside = |(u, low, high): &(usize, f64, f64)| {
+            let value = jets[self.layout.jet(*u, 0)];
+            value > *low && value < *high
+        };
+        self.limits.iter().all(inside)
     }
 
     fn unknown_name(&self, unknown: usize) -> String {

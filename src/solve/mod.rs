@@ -3,6 +3,7 @@
 mod boundary;
 mod nonlinear;
 mod solver;
+mod viscosity;
 
 pub use boundary::{boundary, on_mesh};
 

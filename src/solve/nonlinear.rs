@@ -1,6 +1,7 @@
 //! Nonlinear boundary-value problems: start, mesh and iteration together, homotopy when they find no way.
 
 use super::solver::{ENRICH, PASSES, Solver, admissible, wanted_tail};
+use super::viscosity::Viscous;
 use super::{Settings, Solution};
 use crate::adapt::{exponents, refine, seed};
 use crate::error::{Error, Result};
@@ -13,25 +14,39 @@ use crate::newton::{Iteration, Linearisation, Stepper, newton};
 
 /// Most steps of one iteration.
 const STEPS: usize = 40;
-/// Most points of the homotopy.
+/// Most points of a homotopy.
 const HOMOTOPY: usize = 300;
+/// Most element solves of one attempt: some seconds.
+const BUDGET: usize = 200_000;
 
 /// Solves a nonlinear problem.
 pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> {
     let starts = starts(model, settings)?;
     let mut reasons = Vec::new();
+    let mut note = |error: Error| match error {
+        Error::Interrupted => Err(Error::Interrupted),
+        Error::NoSolution { tried } => {
+            reasons.push(tried);
+            Ok(())
+        }
+        other => {
+            reasons.push(other.to_string());
+            Ok(())
+        }
+    };
     for start in &starts {
         match follow(model, settings, start) {
             Ok(solution) => return Ok(solution),
-            Err(Error::Interrupted) => return Err(Error::Interrupted),
-            Err(error) => reasons.push(error.to_string()),
+            Err(error) => note(error)?,
         }
     }
-    for start in &starts {
-        match homotopy(model, settings, start) {
-            Ok(near) => return follow(model, settings, &near),
-            Err(Error::Interrupted) => return Err(Error::Interrupted),
-            Err(error) => reasons.push(error.to_string()),
+    for way in [thinning, homotopy] {
+        let mut budget = BUDGET;
+        for start in &starts {
+            match way(model, settings, start, &mut budget).and_then(|near| follow(model, settings, &near)) {
+                Ok(solution) => return Ok(solution),
+                Err(error) => note(error)?,
+            }
         }
     }
     reasons.dedup();
@@ -114,7 +129,7 @@ fn constant(model: &dyn Model, mesh: &Mesh, level: f64, library: &mut Library) -
 
 /// Newton's iteration and mesh adaptation in turn, from a start to the answer with its companions.
 fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<Solution> {
-    let mut run = Run::new(model, settings, start)?;
+    let mut run = Run::new(model, settings, start, BUDGET)?;
     let resolved = run.converge(start, wanted_tail(settings.relative), 1e-13)?;
     let passes = run.passes;
     let about = run.field.clone();
@@ -143,16 +158,18 @@ struct Run<'a> {
     field: Field,
     library: Library,
     passes: usize,
+    /// Element solves that are left.
+    budget: usize,
 }
 
 impl<'a> Run<'a> {
-    fn new(model: &'a dyn Model, settings: &'a Settings<'a>, start: &Field) -> Result<Self> {
+    fn new(model: &'a dyn Model, settings: &'a Settings<'a>, start: &Field, budget: usize) -> Result<Self> {
         let linear = Linearisation::new(model, start, start);
         let scale = exponents::scales(&linear)?;
         let mesh = seed::seed(&linear, &scale, settings.most_elements)?;
         let mut library = depth(model.layout());
         let field = transfer(start, &mesh, &mut library)?;
-        Ok(Self { model, settings, scale, field, library, passes: 0 })
+        Ok(Self { model, settings, scale, field, library, passes: 0, budget })
     }
 
     /// Iterates and refines until the coefficients of the iterate have fallen to `tail` and the steps to `step`; whether
@@ -222,6 +239,11 @@ struct Steps<'r, 'a> {
 
 impl Stepper for Steps<'_, '_> {
     fn solve(&mut self, jacobian: &Field, residual: &Field) -> Result<Field> {
+        let elements = self.mesh.elements.len();
+        let Some(left) = self.run.budget.checked_sub(elements) else {
+            return Err(Error::Unresolved { elements, x: self.mesh.elements[0].left });
+        };
+        self.run.budget = left;
         let linear = Linearisation::new(self.run.model, jacobian, residual);
         let library = std::mem::replace(&mut self.run.library, Library::new(0));
         let mut solver = Solver {
@@ -250,18 +272,67 @@ impl Stepper for Steps<'_, '_> {
     }
 }
 
-/// Follows F(u) = (1 - t) F(u0) from t = 0, where u0 solves it, to t = 1. Coarse meshes will do on the way.
-fn homotopy(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<Field> {
+/// One point of a way: the field there, from that of the point before. Coarse meshes will do.
+fn point(model: &dyn Model, settings: &Settings<'_>, before: &Field, budget: &mut usize) -> Result<Field> {
+    let mut run = Run::new(model, settings, before, *budget / 4)?;
+    let outcome = run.converge(before, 1e-5, 1e-6);
+    *budget -= (*budget / 4 - run.budget).min(*budget);
+    outcome?;
+    Ok(run.field)
+}
+
+/// Gives the highest derivatives more weight at first and takes it away step by step.
+fn thinning(model: &dyn Model, settings: &Settings<'_>, start: &Field, budget: &mut usize) -> Result<Field> {
+    let mut viscous = Viscous::new(model, start)?;
+    if !viscous.useful() {
+        return Err(Error::NoSolution { tried: "no equation has a thin highest derivative".into() });
+    }
+    let mut field = point(&viscous, settings, start, budget)?;
+    let (mut share, mut factor) = (1.0f64, 0.2f64);
+    for _ in 0..HOMOTOPY {
+        // Once the weight is lost in the rest the last step is to none at all.
+        viscous.share = if share * factor < 1e-12 { 0.0 } else { share * factor };
+        match point(&viscous, settings, &field, budget) {
+            Ok(found) => {
+                field = found;
+                share = viscous.share;
+                if share == 0.0
+                    || follow_step(model, settings, &field, budget).is_some_and(|f| {
+                        field = f;
+                        true
+                    })
+                {
+                    return Ok(field);
+                }
+                factor = (factor * factor).max(0.04);
+            }
+            Err(Error::Interrupted) => return Err(Error::Interrupted),
+            Err(_) => factor = factor.sqrt(),
+        }
+        if factor > 0.97 || *budget < 100 {
+            break;
+        }
+    }
+    Err(Error::NoSolution { tried: format!("thinning of the highest derivatives: got to a share of {share:.1e}") })
+}
+
+/// Whether the problem itself can be solved from here at once.
+fn follow_step(model: &dyn Model, settings: &Settings<'_>, near: &Field, budget: &mut usize) -> Option<Field> {
+    let mut small = (*budget / 20).max(400).min(*budget);
+    let before = small;
+    let found = point(model, settings, near, &mut small).ok();
+    *budget -= before - small;
+    found
+}
+
+/// Follows F(u) = (1 - t) F(u0) from t = 0, where u0 solves it, to t = 1.
+fn homotopy(model: &dyn Model, settings: &Settings<'_>, start: &Field, budget: &mut usize) -> Result<Field> {
     let (mut t, mut step) = (0.0f64, 0.25f64);
     let mut field = start.clone();
     for _ in 0..HOMOTOPY {
         let next = (t + step).min(1.0);
         let between = Homotopy { model, start, share: 1.0 - next };
-        let found = Run::new(&between, settings, &field).and_then(|mut run| {
-            run.converge(&field, 1e-5, 1e-6)?;
-            Ok(run.field)
-        });
-        match found {
+        match point(&between, settings, &field, budget) {
             Ok(found) => {
                 (t, field) = (next, found);
                 if t >= 1.0 {
@@ -270,12 +341,10 @@ fn homotopy(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result
                 step *= 2.0;
             }
             Err(Error::Interrupted) => return Err(Error::Interrupted),
-            Err(_) => {
-                step *= 0.25;
-                if step < 1e-4 {
-                    break;
-                }
-            }
+            Err(_) => step *= 0.25,
+        }
+        if step < 1e-4 || *budget < 100 {
+            break;
         }
     }
     Err(Error::NoSolution { tried: format!("homotopy: got {:.1} % of the way", 100.0 * t) })
