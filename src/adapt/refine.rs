@@ -187,3 +187,62 @@ pub(crate) fn next(mesh: &Mesh, indicators: &[Indicator]) -> Option<Mesh> {
     }
     Some(Mesh { elements })
 }
+
+#[cfg(test)]
+mod tests {
+    use super::{Action, Indicator, judge, next};
+    use crate::mesh::Mesh;
+
+    fn indicator(tail: f64, action: Action) -> Indicator {
+        Indicator { tail, action }
+    }
+
+    #[test]
+    fn a_resolved_mesh_is_left_alone() {
+        let mesh = Mesh::uniform(&[0.0, 1.0], 3, 16);
+        let good = [Action::Keep, Action::Spare, Action::Spare].map(|a| indicator(0.0, a));
+        assert_eq!(next(&mesh, &good), None);
+    }
+
+    #[test]
+    fn elements_are_split_raised_and_joined_within_their_piece() {
+        let mesh = Mesh::uniform(&[0.0, 1.0, 2.0], 3, 16);
+        let plan = [
+            indicator(1e-6, Action::Split),
+            indicator(0.0, Action::Spare),
+            indicator(0.0, Action::Spare),
+            indicator(0.0, Action::Spare),
+            indicator(1e-9, Action::Raise(22)),
+            indicator(0.0, Action::Keep),
+        ];
+        let refined = next(&mesh, &plan).expect("something is to be done");
+        let nodes: Vec<usize> = refined.elements.iter().map(|e| e.nodes).collect();
+        // Split in two, two joined, and a spare one beyond the break stays by itself.
+        assert_eq!(nodes, [16, 16, 16, 16, 22, 16]);
+        let pieces: Vec<usize> = refined.elements.iter().map(|e| e.piece).collect();
+        assert_eq!(pieces, [0, 0, 0, 1, 1, 1]);
+        assert_eq!((refined.elements[2].left, refined.elements[2].right), (1.0 / 3.0, 1.0));
+        assert!(refined.elements.windows(2).all(|e| e[0].right == e[1].left));
+    }
+
+    #[test]
+    fn far_from_converged_only_the_worst_are_marked() {
+        let mesh = Mesh::uniform(&[0.0, 1.0], 2, 16);
+        let plan = [indicator(0.9, Action::Split), indicator(0.01, Action::Split)];
+        assert_eq!(next(&mesh, &plan).expect("something is to be done").elements.len(), 3);
+    }
+
+    #[test]
+    fn decay_decides_between_more_nodes_and_shorter_elements() {
+        let series = |rate: f64| (0..16).map(|k| (-rate * f64::from(k)).exp()).collect::<Vec<f64>>();
+        let action = |rate: f64| {
+            let series = series(rate);
+            judge(&series, 1.0, series[15], 1e-14, 16)
+        };
+        assert!(matches!(action(1.6), Action::Raise(n) if n > 16 && n <= 32));
+        assert_eq!(action(0.3), Action::Split);
+        // Even functions: every other coefficient vanishes, the decay is the same.
+        let even: Vec<f64> = series(1.6).iter().enumerate().map(|(k, c)| if k % 2 == 0 { *c } else { 0.0 }).collect();
+        assert!(matches!(judge(&even, 1.0, even[14], 1e-14, 16), Action::Raise(_)));
+    }
+}
