@@ -12,6 +12,7 @@ use crate::evidence::bars::{self, Companions};
 use crate::field::Field;
 use crate::model::{Profile, Side};
 use crate::quantity::{self, Estimate, Extreme};
+use nalgebra::DVector;
 use std::cell::Cell;
 
 /// Called now and then during a solve; returning false stops it with `Error::Interrupted`.
@@ -91,6 +92,32 @@ impl Solution {
             let error = field.noise(element, &tops)[unknown + order];
             Ok(Estimate { value: field.value(unknown, order, x, side), error })
         })
+    }
+
+    /// u_i^(k) at many places, and the bars; at a break from the left.
+    ///
+    /// # Errors
+    /// `NotFinite`.
+    ///
+    /// # Example
+    /// ```
+    /// use nalgebra::DVector;
+    /// use spanwise::{model::Side, problem::Problem};
+    ///
+    /// let mut p = Problem::new(0.0, 1.0);
+    /// let y = p.unknown("y", 1);
+    /// p.equation("growth", move |at| at.d(y, 1) - at.d(y, 0));
+    /// p.condition("start", &[(0.0, Side::Right)], move |v| v[0].d(y, 0) - 1.0);
+    /// let solution = p.solve(&Default::default())?;
+    /// let x = DVector::from_column_slice(&[0.25, 0.5, 1.0]);
+    /// let (values, bars) = solution.sample(y, 0, &x)?;
+    /// assert!((values - x.map(f64::exp)).abs().iter().zip(&bars).all(|(e, b)| e <= b));
+    /// # Ok::<(), spanwise::error::Error>(())
+    /// ```
+    pub fn sample(&self, unknown: usize, order: usize, x: &DVector<f64>) -> Result<(DVector<f64>, DVector<f64>)> {
+        let at = x.iter().map(|x| self.value(unknown, order, *x, Side::Left)).collect::<Result<Vec<_>>>()?;
+        let pick = |f: fn(&Estimate) -> f64| DVector::from_iterator(at.len(), at.iter().map(f));
+        Ok((pick(|e| e.value), pick(|e| e.error)))
     }
 
     /// Value of a profile at x with its bar; at a break from the side given.
