@@ -549,3 +549,24 @@ fn sheets_beyond_measure() {
     let chain = with(BASE, &[("q = \"1 kN/m\"\n", &format!("q = \"1 kN/m\"\n{chain}k300 = 1\n"))]);
     expect(&chain, &[(205, 9, "names are defined by way of more than 200 others")]);
 }
+
+#[test]
+fn many_faults_are_listed_to_a_limit() {
+    let many: String = (0..30_000).map(|i| format!("a{i} = \"zz{i}\"\n")).collect();
+    let found = faults(&with(BASE, &[("[span]", &format!("{many}[span]"))]));
+    assert_eq!(found.len(), 201);
+    assert_eq!(found[200].2, "29800 more faults are not listed");
+    let long = with(BASE, &[("q = \"1 kN/m\"", &format!("q = \"{}\"", "a".repeat(99_999)))]);
+    assert_eq!(faults(&long).len(), 1);
+    let unknowns: String = (0..300).map(|i| format!("u{i} = \"m\"\n")).collect();
+    let equations: String = (0..300).map(|i| format!("e{i} = \"u{i}' = 0\"\n")).collect();
+    let crowd = with(
+        BASE,
+        &[("y = \"mm\"\n", &format!("y = \"mm\"\n{unknowns}")), ("[conditions]", &format!("{equations}[conditions]"))],
+    );
+    expect(&crowd, &[(209, 1, "the sheet has 301 unknowns; at most 200 are allowed")]);
+    let stretches: String =
+        (0..5000).map(|i| format!("\"{i} mm .. {} mm\" = \"{} kN/m\", ", i + 1, i % 7 + 1)).collect();
+    let pieces = with(BASE, &[("q = \"1 kN/m\"", &format!("q = {{ {stretches} }}")), ("\"3 m\"", "\"5 m\"")]);
+    expect(&pieces, &[(7, 1, "the sheet has 4999 breaks; at most 4000 are allowed")]);
+}

@@ -707,3 +707,27 @@ fn what_is_drawn() {
     assert_eq!(curves, ["y [mm]", "M [N m]", "V [kN]", "M^2 [kN^2 m^2]"]);
     assert_eq!(sheet.statement.carried, ["y", "M"]);
 }
+
+#[test]
+fn a_datum_that_only_bends_has_one_value_at_its_kink() {
+    let text = r#"
+        [given]
+        h = "0.7 m"
+        p = "if(x < h, 2 Pa/m*(h - x), 0) + 3 Pa"
+        [span]
+        x = ["0 m", "1 m"]
+        [unknowns]
+        u = "Pa"
+        [equations]
+        e = "u' = p/(1 m)"
+        [conditions]
+        c = "u(h) = 2*p(h)"
+        [report]
+        start = "u(0 m)"
+        end = "u(1 m)"
+    "#;
+    check(text, 1, &[1], &[6.0 - 3.0 * 0.7 - 0.49, 6.0 + 3.0 * 0.3]);
+    let stepping = text.replace("2 Pa/m*(h - x)", "2 Pa");
+    let faults = sheet::read(&stepping).expect_err("two values");
+    assert_eq!(faults[0].message, "`p` has two values at this point");
+}

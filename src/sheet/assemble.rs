@@ -12,7 +12,11 @@ use crate::formula::graph::{Node, NodeId};
 use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::{Condition, Layout};
 use crate::unit::Unit;
+use std::collections::HashSet;
 use std::ops::Range;
+
+/// Most unknowns of a sheet: the work grows with the cube of their number.
+const MOST_UNKNOWNS: usize = 200;
 
 /// Reads a sheet.
 pub(super) fn assemble(text: &str) -> Result<Sheet, Vec<Fault>> {
@@ -79,7 +83,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
     /// Gives every name its meaning.
     fn declare(&mut self) {
         let source = self.source;
-        let mut declared: Vec<(String, Range<usize>)> = Vec::new();
+        let mut declared: HashSet<String> = HashSet::new();
         let coordinate = source.coordinate.as_ref().map(|c| (c.name.clone(), c.name_span.clone()));
         let mut add = |lowerer: &mut Lowerer<'_>, name: &str, span: &Range<usize>, meaning: Meaning| {
             let Some(spelled) = syntax::name(name) else {
@@ -87,19 +91,27 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 lowerer.faults.add("name", span.clone(), format!("`{name}` cannot be a name"), Some(hint.into()));
                 return;
             };
-            if declared.iter().any(|d| d.0 == spelled) {
+            if declared.contains(&spelled) {
                 let message = format!("`{name}` is declared twice");
                 lowerer.faults.add("name", span.clone(), message, Some("every name may stand for one thing".into()));
                 return;
             }
             lowerer.meanings.insert(spelled.clone(), meaning);
-            declared.push((spelled, span.clone()));
+            declared.insert(spelled);
         };
         if let Some((name, span)) = coordinate {
             self.lowerer.coordinate.clone_from(&name);
             add(&mut self.lowerer, &name, &span, Meaning::Coordinate);
         }
-        for entry in &source.unknowns {
+        if let Some(first) = source.unknowns.get(MOST_UNKNOWNS) {
+            let message =
+                format!("the sheet has {} unknowns; at most {MOST_UNKNOWNS} are allowed", source.unknowns.len());
+            self.lowerer.faults.add("too large", first.name_span.clone(), message, None);
+        }
+        for entry in source.unknowns.iter().skip(MOST_UNKNOWNS) {
+            add(&mut self.lowerer, &entry.name, &entry.name_span, Meaning::Faulty);
+        }
+        for entry in source.unknowns.iter().take(MOST_UNKNOWNS) {
             let unit = match Unit::parse(&entry.value.unit.text, true) {
                 Ok(unit) => unit,
                 Err(error) => {
@@ -422,7 +434,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         }
         let orders: Vec<usize> = orders.iter().map(|m| usize::from(*m)).collect();
         let layout = Layout::new(&orders, self.lowerer.constants.len());
-        let linear = self.linear(&nodes, &placed);
+        let linear = self.linear(&nodes, &placed, [points[0], points[points.len() - 1]]);
         let statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
         let [limits, constant_limits] = self.limits();
         let guess = self.guess(&fluxes, &layout, &points);

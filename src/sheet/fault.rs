@@ -19,6 +19,12 @@ pub struct Fault {
     pub span: Range<usize>,
 }
 
+/// Faults beyond this number are only counted.
+const MOST_FAULTS: usize = 200;
+
+/// Longest name for which a likely one is looked for.
+const LONGEST_NAME: usize = 40;
+
 /// Code of faults of the file's structure.
 pub(super) const NOT_TOML: &str = "toml";
 
@@ -26,11 +32,17 @@ pub(super) const NOT_TOML: &str = "toml";
 #[derive(Debug, Default)]
 pub(super) struct Faults {
     list: Vec<Fault>,
+    /// Number of those not listed.
+    more: usize,
 }
 
 impl Faults {
     /// Notes a fault; one that repeats an earlier one at the same place is dropped.
     pub fn add(&mut self, code: &'static str, span: Range<usize>, message: impl Into<String>, hint: Option<String>) {
+        if self.is_full() {
+            self.more += 1;
+            return;
+        }
         let message = message.into();
         if !self.list.iter().any(|f| f.span == span && f.message == message) {
             self.list.push(Fault { code, message, hint, line: 0, column: 0, span });
@@ -39,7 +51,12 @@ impl Faults {
 
     /// Number of faults so far.
     pub fn len(&self) -> usize {
-        self.list.len()
+        self.list.len() + self.more
+    }
+
+    /// Whether further ones are only counted.
+    pub fn is_full(&self) -> bool {
+        self.list.len() >= MOST_FAULTS
     }
 
     /// Whether there are none.
@@ -54,6 +71,11 @@ impl Faults {
         let broken: Vec<usize> = self.list.iter().filter(|f| f.code == NOT_TOML).map(line).collect();
         self.list.retain(|f| f.code == NOT_TOML || !broken.contains(&line(f)));
         self.list.sort_by_key(|f| f.span.start);
+        if self.more > 0 {
+            let message = format!("{} more faults are not listed", self.more);
+            let span = sheet.len()..sheet.len();
+            self.list.push(Fault { code: "too many faults", message, hint: None, line: 0, column: 0, span });
+        }
         for fault in &mut self.list {
             (fault.line, fault.column) = line_and_column(sheet, fault.span.start);
         }
@@ -75,7 +97,10 @@ pub(super) fn line_and_column(text: &str, byte: usize) -> (usize, usize) {
 
 /// The name among `known` that `name` was likely meant to be.
 pub(super) fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
-    let known: Vec<&str> = known.into_iter().collect();
+    if name.len() > LONGEST_NAME {
+        return None;
+    }
+    let known: Vec<&str> = known.into_iter().filter(|k| k.len() <= LONGEST_NAME).collect();
     // A capital for a small letter is the nearest miss of all.
     if let Some(same) = known.iter().find(|k| k.eq_ignore_ascii_case(name)) {
         return Some(same);

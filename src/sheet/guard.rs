@@ -43,6 +43,9 @@ fn determinant(matrix: &[Vec<f64>], [rows, columns]: &[Vec<f64>; 2]) -> f64 {
         let (above, below) = m.split_at_mut(k + 1);
         for row in below {
             let factor = row[k] / own;
+            if factor == 0.0 {
+                continue;
+            }
             row.iter_mut().zip(&above[k]).for_each(|(r, a)| *r -= factor * a);
         }
     }
@@ -260,7 +263,7 @@ impl Assembler<'_, '_> {
     }
 
     /// Linear by the derivatives: free of unknowns, or the same at several states.
-    pub(super) fn linear(&mut self, equations: &[NodeId], placed: &[Placed]) -> bool {
+    pub(super) fn linear(&mut self, equations: &[NodeId], placed: &[Placed], [from, to]: [f64; 2]) -> bool {
         let graph = &mut self.lowerer.graph;
         let all: Vec<NodeId> = equations.iter().copied().chain(placed.iter().map(|p| p.formula)).collect();
         all.into_iter().all(|node| {
@@ -274,17 +277,23 @@ impl Assembler<'_, '_> {
                 graph.jets_of(node).into_iter().map(|(unknown, order)| Variable::Jet { unknown, order }).collect();
             variables.extend(graph.constants_of(node).into_iter().map(Variable::Constant));
             variables.extend(graph.slots_of(node).into_iter().map(Variable::Slot));
+            let last = |k: Option<u32>| k.map_or(0, |k| k as usize + 1);
+            let constants = graph.constants_of(node).last().map(|c| u32::from(*c));
+            let count = last(constants).max(last(graph.slots_of(node).last().copied()));
             variables.into_iter().all(|variable| {
                 let slope = graph.partial(node, variable);
-                let at = |seed: f64| {
+                let at = |part: f64, seed: f64| {
                     let state = move |k: f64| (seed * (k + 1.385) * 7.3).sin() + 1.7;
-                    let many: Vec<f64> = (0..64).map(|k| state(f64::from(k) + 0.5)).collect();
+                    let many: Vec<f64> = (0..count).map(|k| state(k as f64 + 0.5)).collect();
                     let jets = move |u: u16, k: u8| state(f64::from(u) * 3.1 + f64::from(k));
-                    let inputs = Inputs { jets: &jets, constants: &many, slots: &many, ..Inputs::at(0.385) };
+                    let x = from + part * (to - from);
+                    let inputs = Inputs { jets: &jets, constants: &many, slots: &many, ..Inputs::at(x) };
                     graph.evaluate::<f64>(slope, &inputs)
                 };
-                let values = [at(0.9), at(1.7), at(2.6)];
-                values.iter().all(|v| (v - values[0]).abs() <= 1e-11 * values[0].abs().max(v.abs()))
+                [0.0385, 0.385, 0.871].into_iter().all(|part| {
+                    let values = [0.9, 1.7, 2.6].map(|seed| at(part, seed));
+                    values.iter().all(|v| (v - values[0]).abs() <= 1e-11 * values[0].abs().max(v.abs()))
+                })
             })
         })
     }

@@ -13,7 +13,7 @@ use super::source::Located;
 use crate::formula::graph::{Graph, NodeId};
 use crate::formula::syntax::{Expression, Kind, Span};
 use crate::unit::{Dimension, Unit};
-use std::collections::HashMap;
+use std::collections::{HashMap, HashSet};
 use std::ops::Range;
 
 /// A lowered expression.
@@ -115,6 +115,8 @@ pub(super) struct Lowerer<'f> {
     pub limits: Vec<(NodeId, Range<usize>)>,
     /// Stretches covered by data by pieces: they must reach over the whole span.
     pub covers: Vec<Cover>,
+    /// Names that were read as units somewhere.
+    likened: HashSet<String>,
     states: [HashMap<String, State>; 2],
     stack: Vec<String>,
 }
@@ -137,6 +139,7 @@ impl<'f> Lowerer<'f> {
             reporting: false,
             limits: Vec::new(),
             covers: Vec::new(),
+            likened: HashSet::new(),
             states: [HashMap::new(), HashMap::new()],
             stack: Vec::new(),
         }
@@ -250,7 +253,8 @@ impl<'f> Lowerer<'f> {
             return Some(Typed { node, dimension, absolute: Absolute::NONE });
         };
         for symbol in unit.text.split(|c: char| !c.is_alphabetic()).filter(|s| !s.is_empty()) {
-            if self.meanings.contains_key(symbol) {
+            // Once for each name, however many values are written in that unit.
+            if self.meanings.contains_key(symbol) && self.likened.insert(symbol.to_owned()) {
                 let text = at.text.get(e.span.clone()).unwrap_or("");
                 let warning = format!("`{text}`: {symbol} is read as the unit, not as the name `{symbol}`");
                 self.warn(warning);
@@ -308,6 +312,9 @@ impl<'f> Lowerer<'f> {
 
     /// Notes a name that is not defined, once however often it is used.
     pub(super) fn undefined<T>(&mut self, at: &Located, name: &str, span: &Span) -> Option<T> {
+        if self.faults.is_full() {
+            return self.fault("unknown name", at, span, format!("`{name}` is not defined"), "");
+        }
         let sound = self.meanings.iter().filter(|(_, meaning)| !matches!(meaning, Meaning::Faulty));
         let known = sound.map(|(name, _)| name.as_str()).chain(FUNCTIONS.iter().copied());
         let near = nearest(name, known).map(|k| format!("did you mean `{k}`?"));
