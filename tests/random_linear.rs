@@ -144,3 +144,49 @@ fn a_mirrored_problem_has_the_mirrored_solution() {
         assert!((a.value - b.value).abs() <= a.error + b.error, "{x}: {a:?} {b:?}");
     }
 }
+
+/// eps u'' + a u' - b u = f with layers of any thickness at one or both ends, against the two exponentials.
+#[test]
+fn layers_of_any_thickness() {
+    let mut tally = Tally::default();
+    let mut random = Random(77);
+    for case in 0..200 {
+        let eps = 10f64.powf(random.between(-8.0, 0.0));
+        let a = if random.next() < 0.3 { 0.0 } else { random.between(-2.0, 2.0) };
+        let (b, f) = (random.between(0.1, 3.0), random.between(-2.0, 2.0));
+        let ends = [random.between(-1.0, 1.0), random.between(-1.0, 1.0)];
+        let mut p = Problem::new(0.0, 1.0);
+        let y = p.unknown("u", 2);
+        p.equation("balance", move |at| at.d(y, 2) * eps + at.d(y, 1) * a - at.d(y, 0) * b - f);
+        p.condition("left", &[(0.0, Side::Right)], move |v| v[0].d(y, 0) - ends[0]);
+        p.condition("right", &[(1.0, Side::Left)], move |v| v[0].d(y, 0) - ends[1]);
+        let solution = p.solve(&Settings::default()).unwrap_or_else(|e| panic!("case {case}: {e}"));
+        // Roots of eps r^2 + a r - b without cancellation: one negative, one positive.
+        let root = (a * a + 4.0 * eps * b).sqrt();
+        let q = -0.5 * (a + a.signum() * root);
+        let pair = if a == 0.0 { [-(b / eps).sqrt(), (b / eps).sqrt()] } else { [q / eps, -b / q] };
+        let (low, high) = (pair[0].min(pair[1]), pair[0].max(pair[1]));
+        // u = -f/b + A exp(low x) + B exp(high (x - 1))
+        let (at_left, at_right) = (ends[0] + f / b, ends[1] + f / b);
+        let (el, eh) = (low.exp(), (-high).exp());
+        let det = 1.0 - el * eh;
+        let (ca, cb) = ((at_left - eh * at_right) / det, (at_right - el * at_left) / det);
+        let size = (f / b).abs() + ca.abs() + cb.abs();
+        let thin = 1.0 / high.max(-low);
+        for x in [0.0, 0.7 * thin, 3.0 * thin, 0.31, 0.77, 1.0 - 3.0 * thin, 1.0 - 0.7 * thin, 1.0] {
+            if !(0.0..=1.0).contains(&x) {
+                continue;
+            }
+            let exact = -f / b + ca * (low * x).exp() + cb * (high * (x - 1.0)).exp();
+            // Near the far end 1 - x is known to the last place of 1 only, which the layer magnifies.
+            let known = f64::EPSILON * (1.0 + (high * cb * (high * (x - 1.0)).exp()).abs() / size * x);
+            let got = solution.value(y, 0, x, Side::Left).expect("finite");
+            tally.add(
+                format!("case {case}, eps {eps:e}, a {a} at {x}"),
+                (got.value - exact).abs() / size,
+                got.error / size + known,
+            );
+        }
+    }
+    tally.check(1e-10, 200.0);
+}
