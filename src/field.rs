@@ -93,12 +93,17 @@ impl Field {
         jets
     }
 
-    /// Size of the rounding error to be expected in each of the jets of [`Field::jets`]: a small multiple of
-    /// the unit roundoff times the sum of the sizes of the coefficients.
+    /// Size of the error to be expected in each of the jets of [`Field::jets`] from their evaluation and representation: a
+    /// small multiple of the unit roundoff times the sum of the sizes of the coefficients, and the last coefficients, beyond
+    /// which the series is cut (in stiff regions they also tell of what rounding does between the nodes).
     pub fn noise(&self, element: usize, tops: &[usize]) -> Vec<f64> {
         let mut noise = Vec::with_capacity(tops.iter().map(|t| t + 1).sum());
         self.for_jets(element, tops, |series| {
-            noise.push(crate::tolerance::EVALUATION * series.iter().map(|c| c.abs()).sum::<f64>());
+            let sum: f64 = series.iter().map(|c| c.abs()).sum();
+            let last: f64 = series.iter().rev().take(4).map(|c| c.abs()).sum();
+            // A constant or a straight line is all there is, not a series that is cut.
+            let cut = if series.len() > 8 { last } else { 0.0 };
+            noise.push(crate::tolerance::EVALUATION * sum + cut);
         });
         noise
     }
