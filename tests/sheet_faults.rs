@@ -373,6 +373,8 @@ fn stepped_data_outside_a_flux() {
     // Part of the factor outside, part inside.
     let partly = stepped("B*((1 + x/L)*y'')'' = q");
     expect(&partly, &[(11, 12, "`B` steps at 1 m but stands outside the derivative: write (B*((1 + x/L)*y''))'")]);
+    let divided = "`B` steps at 1 m but stands outside the derivative: write (y'''/B)'";
+    expect(&stepped("y''''/B = q/(1 [N^2*m^4])"), &[(11, 18, divided)]);
     // Ends of pieces at which the value does not change are no steps.
     expect(&stepped("B*y'''' = q").replace("20 kN m^2", "10 kN m^2"), &[]);
     expect(

@@ -168,6 +168,9 @@ fn layers_of_a_pipe() {
     let (a, b, c) = (2f64.ln() / (turn * 15.0), 2.5f64.ln() / (turn * 0.04), 1.0 / (turn * 0.05 * 10.0));
     let loss = 100.0 / (a + b + c);
     check(sheet, 2, &[1, 1], &[loss, 120.0 - loss * a, 20.0 + loss * c, loss * (a + b)]);
+    let statement = &read(sheet).statement;
+    assert_eq!(statement.carried, ["T", "r*k*T'"]);
+    assert_eq!(statement.equations[0].remark, "carries r*k*T'");
 }
 
 #[test]

@@ -11,6 +11,9 @@ use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::Release;
 use crate::unit::Unit;
 
+/// Longest text that serves as the name of a flux, in characters.
+const LONGEST_FLUX: usize = 24;
+
 impl Assembler<'_, '_> {
     #[allow(clippy::too_many_arguments)]
     pub(super) fn statement(
@@ -27,7 +30,7 @@ impl Assembler<'_, '_> {
         let functions = self.lowerer.functions.len();
         let mut carried: Vec<String> = self.lowerer.functions.iter().map(|f| f.name.clone()).collect();
         for flux in fluxes {
-            let name = self.flux_name(flux, &carried);
+            let name = self.flux_name(equations, flux, &carried);
             carried.push(name);
         }
         let mut unknowns: Vec<Line> = Vec::new();
@@ -89,8 +92,8 @@ impl Assembler<'_, '_> {
         }
     }
 
-    /// The user's own name for a flux, or one of ours.
-    pub(super) fn flux_name(&mut self, flux: &Flux, taken: &[String]) -> String {
+    /// The user's own name for a flux, what stands inside the derivative, or a number of ours.
+    pub(super) fn flux_name(&mut self, equations: &[Carrying], flux: &Flux, taken: &[String]) -> String {
         let jet = self.lowerer.graph.jet(flux.unknown, 0);
         for entry in &self.source.given {
             let Some(name) = syntax::name(&entry.name) else { continue };
@@ -102,6 +105,9 @@ impl Assembler<'_, '_> {
                 _ => {}
             }
         }
+        if let Some(text) = self.flux_text(equations, flux).filter(|t| !taken.contains(t)) {
+            return text;
+        }
         let mut k = 1;
         loop {
             let name = format!("flux {k}");
@@ -110,6 +116,36 @@ impl Assembler<'_, '_> {
             }
             k += 1;
         }
+    }
+
+    /// What was written inside the derivative that became a flux, if it stands there as a whole and is short.
+    fn flux_text(&mut self, equations: &[Carrying], flux: &Flux) -> Option<String> {
+        fn insides<'e>(e: &'e Expression, found: &mut Vec<&'e Expression>) {
+            match &e.kind {
+                Kind::Prime(a, _) => {
+                    found.push(a);
+                    insides(a, found);
+                }
+                Kind::Negate(a) => insides(a, found),
+                Kind::Binary(_, a, b) | Kind::If(_, a, b) => [a, b].into_iter().for_each(|e| insides(e, found)),
+                Kind::Call { .. } | Kind::Number { .. } | Kind::Name(_) => {}
+            }
+        }
+        // As the equations were read: with all derivatives kept.
+        let scalars = std::mem::replace(&mut self.lowerer.scalars, false);
+        let text = equations.iter().find_map(|equation| {
+            let mut found = Vec::new();
+            equation.tree.iter().for_each(|tree| insides(tree, &mut found));
+            found.into_iter().find_map(|e| {
+                let typed = self.lowerer.lower(&equation.at, e)?;
+                let same = self.lowerer.graph.ratio(typed.node, flux.written) == Some(1.0);
+                let text = equation.at.text.get(e.span.clone())?.trim();
+                let text = text.strip_prefix('(').and_then(|t| t.strip_suffix(')')).unwrap_or(text);
+                (same && text.chars().count() <= LONGEST_FLUX).then(|| text.to_owned())
+            })
+        });
+        self.lowerer.scalars = scalars;
+        text
     }
 
     pub(super) fn data(&mut self) -> Vec<Datum> {

@@ -192,7 +192,7 @@ impl Assembler<'_, '_> {
             if order > 1 && jets.contains(&(unknown, order)) {
                 let factor = self.lowerer.graph.partial(equation.main, Variable::Jet { unknown, order });
                 if let Some(k) = (1..points.len() - 1).find(|k| self.steps(factor, points, *k)) {
-                    return self.stepped(equation, &smooth, &smooth, points, k);
+                    return self.stepped(equation, factor, [&smooth, &smooth], points, k);
                 }
             }
             // A factor outside a flux: it may step only if the flux holds its reciprocal, as in (1/A)*(A*k*T')'.
@@ -203,16 +203,16 @@ impl Assembler<'_, '_> {
                 let own = self.lowerer.graph.jets_of(flux.defined).into_iter().filter(|(u, _)| *u == unknown);
                 let Some(inner) = own.map(|(_, k)| k).max().filter(|_| top > 0) else { continue };
                 let outside = Variable::Jet { unknown: flux.unknown, order: top };
-                let outside = self.lowerer.graph.partial(equation.main, outside);
+                let whole = self.lowerer.graph.partial(equation.main, outside);
                 let inside = self.lowerer.graph.partial(flux.defined, Variable::Jet { unknown, order: inner });
                 let (_, inside) = self.lowerer.graph.factors(inside);
-                let (_, outside) = self.lowerer.graph.factors(outside);
+                let (_, outside) = self.lowerer.graph.factors(whole);
                 for (factor, exponent) in outside {
                     let undone = inside.iter().any(|(f, e)| *f == factor && e * exponent < 0);
                     let step = (1..points.len() - 1).find(|k| self.steps(factor, points, *k));
                     if let Some(k) = step.filter(|_| !undone) {
                         let text = differentiated(equation).unwrap_or_else(|| smooth.clone());
-                        return self.stepped(equation, &text, &smooth, points, k);
+                        return self.stepped(equation, whole, [&text, &smooth], points, k);
                     }
                 }
             }
@@ -229,12 +229,18 @@ impl Assembler<'_, '_> {
         (left - right).abs() > 1e-12 * left.abs().max(right.abs())
     }
 
-    fn stepped(&mut self, equation: &Carrying, inner: &str, smooth: &str, points: &[f64], k: usize) {
+    /// Notes that a part of a factor steps outside of what is differentiated, `inner`, and how to insist.
+    fn stepped(&mut self, equation: &Carrying, factor: NodeId, [inner, smooth]: [&str; 2], points: &[f64], k: usize) {
         let unit = self.coordinate_unit();
         let place = format!("{} {}", short(unit.from_si(points[k])), unit.text);
         let (name, span) =
             self.stepping_name(equation, points, k).unwrap_or(("a factor".into(), 0..equation.at.text.len()));
-        let message = format!("`{name}` steps at {place} but stands outside the derivative: write ({name}*{inner})'");
+        let node = self.lowerer.named(&name).map(|t| t.node);
+        let (_, factors) = self.lowerer.graph.factors(factor);
+        let divides = factors.iter().any(|(f, exponent)| Some(*f) == node && *exponent < 0);
+        let (inner, name) = (inner.trim(), name.as_str());
+        let within = if divides { format!("{inner}/{name}") } else { format!("{name}*{inner}") };
+        let message = format!("`{name}` steps at {place} but stands outside the derivative: write ({within})'");
         let hint = format!("if {smooth} itself is continuous there, say so in [span]: smooth = [\"{smooth}\"]");
         let at = equation.at.clone();
         self.lowerer.fault::<()>("stepped datum", &at, &span, message, &hint);

@@ -1,9 +1,11 @@
 //! The calculation sheet: from a file to a located, checked model in SI units.
 //!
 //! [`read`] takes the text through these stages, noting all faults on the way: sections and located texts
-//! (`source`), syntax and names (`lower`), fluxes (`carry`), conditions (`condition`), points, orders and
-//! counts (`assemble`), and at last the model that the engine solves (`model`). [`Sheet::evaluate`] makes the
-//! asked numbers from a solution.
+//! (`source`), syntax and names (`lower`, with `arithmetic`, `call`, `piece` and `absolute` for dimensions and
+//! temperatures), fluxes (`carry`), conditions (`condition`), all of it led by `assemble`, which checks in passing:
+//! `points` cuts the span, `guard` and `count` refuse what would go wrong without a sign, `reduce` puts in for
+//! derivatives above the order. At last stands the model that the engine solves (`model`), what people are told about
+//! it (`describe`, `draw`), and [`Sheet::evaluate`], which makes the asked numbers from a solution (`functional`).
 
 mod absolute;
 mod along;
