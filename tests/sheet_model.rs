@@ -734,3 +734,40 @@ fn a_datum_that_only_bends_has_one_value_at_its_kink() {
     let faults = sheet::read(&stepping).expect_err("two values");
     assert_eq!(faults[0].message, "`p` has two values at this point");
 }
+
+#[test]
+fn an_equation_may_be_turned_around_and_scaled() {
+    // What is carried and asked must not hang on how an equation is written.
+    for entry in std::fs::read_dir("examples/sheets").expect("a folder of sheets").flatten() {
+        let (path, text) = (entry.path(), std::fs::read_to_string(entry.path()).expect("a sheet"));
+        let plain = read(&text);
+        if !plain.statement.linear {
+            continue;
+        }
+        let numbers = |sheet: &Sheet| {
+            let solution = sheet.solve(None).unwrap_or_else(|e| panic!("{path:?}: {}", sheet.reason(&e)));
+            let values = sheet.evaluate(&solution).into_iter().map(|a| a.printed().expect("a number"));
+            values.collect::<Vec<_>>()
+        };
+        let expected = numbers(&plain);
+        let ways: [fn(&str, &str) -> String; 3] = [
+            |left, right| format!("-2.385*({left}) = -2.385*({right})"),
+            |left, right| format!("0 = ({right}) - ({left})"),
+            |left, right| format!("({left} + {right})/2 = {right}"),
+        ];
+        for way in ways {
+            let mut altered = text.clone();
+            for equation in &plain.statement.equations {
+                let (left, right) = equation.text.split_once('=').expect("an equation");
+                let written = format!("\"{}\"", equation.text);
+                assert_eq!(altered.matches(&written).count(), 1, "{path:?} {written}");
+                altered = altered.replace(&written, &format!("\"{}\"", way(left.trim(), right.trim())));
+            }
+            let sheet = read(&altered);
+            assert_eq!(sheet.statement.order, plain.statement.order, "{altered}");
+            for (a, b) in numbers(&sheet).iter().zip(&expected) {
+                assert!((a.value - b.value).abs() <= a.error + b.error, "{a:?} {b:?}\n{altered}");
+            }
+        }
+    }
+}
