@@ -42,6 +42,14 @@ pub enum Error {
         /// Where.
         x: f64,
     },
+    /// No smooth solution at a singular end of the span.
+    #[error(
+        "no smooth solution at the singular end x = {x}: a condition there contradicts what the equation itself forces"
+    )]
+    SingularEnd {
+        /// Where.
+        x: f64,
+    },
     /// No solution was found.
     #[error("no solution found: {tried}")]
     NoSolution {

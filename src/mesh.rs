@@ -1,5 +1,14 @@
 //! Elements along the span and the breaks between them.
 
+/// Side of a point from which a value is taken.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, PartialOrd, Ord)]
+pub enum Side {
+    /// Limit from the left, `a-`.
+    Left,
+    /// Limit from the right, `a+`.
+    Right,
+}
+
 /// One element: its interval, its number of nodes, and the piece of the model it lies in.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Element {
@@ -11,6 +20,8 @@ pub struct Element {
     pub nodes: usize,
     /// Piece of the model: between two neighbouring points.
     pub piece: usize,
+    /// The end at which the equations are singular, if any: the element then has Gauss nodes, all inside.
+    pub open: Option<Side>,
 }
 
 impl Element {
@@ -36,7 +47,11 @@ impl Element {
     /// The two halves.
     pub fn halves(&self) -> [Element; 2] {
         let middle = 0.5 * (self.left + self.right);
-        [Element { right: middle, ..*self }, Element { left: middle, ..*self }]
+        let at = |side| self.open.filter(|open| *open == side);
+        [
+            Element { right: middle, open: at(Side::Left), ..*self },
+            Element { left: middle, open: at(Side::Right), ..*self },
+        ]
     }
 }
 
@@ -63,7 +78,13 @@ impl Mesh {
             let at = |k: usize| {
                 if k == per_piece { ends[1] } else { ends[0] + (ends[1] - ends[0]) * k as f64 / per_piece as f64 }
             };
-            elements.extend((0..per_piece).map(|k| Element { left: at(k), right: at(k + 1), nodes, piece }));
+            elements.extend((0..per_piece).map(|k| Element {
+                left: at(k),
+                right: at(k + 1),
+                nodes,
+                piece,
+                open: None,
+            }));
         }
         Self { elements }
     }

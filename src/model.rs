@@ -5,6 +5,7 @@
 //! closures of [`crate::problem`] both enter through the trait [`Model`].
 
 use crate::error::Result;
+pub use crate::mesh::Side;
 
 /// Where the derivatives of the unknowns lie in flat arrays.
 ///
@@ -65,15 +66,6 @@ impl Layout {
         debug_assert!(order < self.orders[unknown]);
         self.states[unknown] + order
     }
-}
-
-/// Side of a point from which a value is taken.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, PartialOrd, Ord)]
-pub enum Side {
-    /// Limit from the left, `a-`.
-    Left,
-    /// Limit from the right, `a+`.
-    Right,
 }
 
 /// One of the points of a model (an end or a break) with a side.

@@ -299,3 +299,57 @@ fn singular_points_are_refused() {
         }
     }
 }
+
+/// Regular singular ends have Gauss nodes: Bessel's equation r u'' + u' + r u = 0 with u'(0) = 0, u(2.385) = J0(2.385);
+/// a reacting sphere D (c'' + 2 c'/r) = k c, closed form sinh(m r)/r.
+#[test]
+fn singular_ends_of_discs_and_spheres() {
+    // J0(x) by its power series, exact to rounding for such x.
+    let j0 = |x: f64| (1..40).rev().fold(1.0, |sum, k| 1.0 - sum * x * x / (4.0 * f64::from(k * k)));
+    let mut p = Problem::new(0.0, 2.385);
+    let u = p.unknown("u", 2);
+    p.equation("Bessel", move |at| at.d(u, 2) * at.x() + at.d(u, 1) + at.d(u, 0) * at.x());
+    p.condition("centre", &[(0.0, Side::Right)], move |v| v[0].d(u, 1));
+    p.condition("rim", &[(2.385, Side::Left)], move |v| v[0].d(u, 0) - j0(2.385));
+    let solution = p.solve(&Settings::default()).expect("regular");
+    for x in [0.0, 0.5, 1.7] {
+        let got = solution.value(u, 0, x, Side::Right).expect("finite");
+        assert!(
+            (got.value - j0(x)).abs() <= got.error + 4.0 * f64::EPSILON && got.error < 1e-11,
+            "{x}: {got:?} {}",
+            j0(x)
+        );
+    }
+    for m in [0.5, 5.0, 60.0] {
+        let mut p = Problem::new(0.0, 1.0);
+        let c = p.unknown("c", 2);
+        p.equation("uptake", move |at| at.d(c, 2) + at.d(c, 1) * (2.0 / at.x()) - at.d(c, 0) * (m * m));
+        p.condition("centre", &[(0.0, Side::Right)], move |v| v[0].d(c, 1));
+        p.condition("surface", &[(1.0, Side::Left)], move |v| v[0].d(c, 0) - 1.0);
+        let solution = p.solve(&Settings::default()).expect("regular");
+        let exact = |r: f64| if r == 0.0 { m / f64::sinh(m) } else { (m * r).sinh() / (r * f64::sinh(m)) };
+        for r in [0.0, 0.3, 0.9] {
+            let got = solution.value(c, 0, r, Side::Right).expect("finite");
+            let known = 4.0 * f64::EPSILON * exact(r);
+            assert!(
+                (got.value - exact(r)).abs() <= got.error + known && got.error < 1e-11,
+                "m {m} at {r}: {got:?} {}",
+                exact(r)
+            );
+        }
+    }
+}
+
+/// What contradicts the regularity that the equation forces at a singular end is refused, not smoothed over.
+#[test]
+fn wrong_conditions_at_a_singular_end_are_refused() {
+    for (order, value) in [(0, 5.0), (1, 3.0)] {
+        let mut p = Problem::new(0.0, 1.0);
+        let c = p.unknown("c", 2);
+        p.equation("uptake", move |at| at.d(c, 2) + at.d(c, 1) * (2.0 / at.x()) - at.d(c, 0) * 25.0);
+        p.condition("centre", &[(0.0, Side::Right)], move |v| v[0].d(c, order) - value);
+        p.condition("surface", &[(1.0, Side::Left)], move |v| v[0].d(c, 0) - 1.0);
+        let outcome = p.solve(&Settings::default());
+        assert!(matches!(outcome, Err(Error::SingularEnd { x: 0.0 })), "{:?}", outcome.map(|s| s.condition));
+    }
+}

@@ -69,9 +69,9 @@ pub(crate) fn scales(model: &dyn Model) -> Result<Vec<f64>> {
     Ok(scale.into_iter().map(|s| s / first).collect())
 }
 
-/// Refuses a linear model whose matrix of leading coefficients becomes singular at an end of a piece or changes the sign
-/// of its determinant within one: collocation there would admit false solutions.
-pub(crate) fn check_leading(model: &dyn Model, scale: &[f64]) -> Result<()> {
+/// Whether a linear model is singular at the ends of its span: leading coefficients that vanish, or anything that is not
+/// finite. Refuses one that is singular inside, where collocation would admit false solutions.
+pub(crate) fn singular_ends(model: &dyn Model, scale: &[f64]) -> Result<[bool; 2]> {
     let layout = model.layout();
     let (d, jets) = (layout.unknowns(), layout.jets());
     let points = model.points();
@@ -85,10 +85,18 @@ pub(crate) fn check_leading(model: &dyn Model, scale: &[f64]) -> Result<()> {
         Ok(DMatrix::from_fn(d, d, entry).determinant())
     };
     let count = if points.len() > 100 { 2 } else { 32 };
+    let mut open = [false; 2];
     for piece in 0..points.len() - 1 {
         let (a, b) = (points[piece], points[piece + 1]);
         let at = |k: usize| if k == count { b } else { a + (b - a) * k as f64 / count as f64 };
-        let values = (0..=count).map(|k| determinant(piece, at(k))).collect::<Result<Vec<f64>>>()?;
+        let is_end = |k: usize| [k == 0 && piece == 0, k == count && piece + 2 == points.len()];
+        let mut values = Vec::with_capacity(count + 1);
+        for k in 0..=count {
+            match determinant(piece, at(k)) {
+                Err(Error::NotFinite { .. }) if is_end(k).contains(&true) => values.push(0.0),
+                other => values.push(other?),
+            }
+        }
         let largest = values.iter().fold(0.0f64, |s, v| s.max(v.abs()));
         if largest == 0.0 {
             return Err(Error::Singular(
@@ -98,9 +106,39 @@ pub(crate) fn check_leading(model: &dyn Model, scale: &[f64]) -> Result<()> {
         for k in 0..=count {
             let vanishes = values[k].abs() <= 1e-15 * largest;
             let changes = k > 0 && values[k - 1] * values[k] < 0.0;
-            if vanishes || changes {
-                return Err(Error::SingularPoint { x: at(k) });
+            match is_end(k) {
+                [true, _] if vanishes => open[0] = true,
+                [_, true] if vanishes => open[1] = true,
+                _ if vanishes || changes => return Err(Error::SingularPoint { x: at(k) }),
+                _ => {}
             }
+        }
+    }
+    for (end, side) in
+        [(points[0], 1.0), (points[points.len() - 1], -1.0)].into_iter().zip(open).filter(|(_, o)| *o).map(|(e, _)| e)
+    {
+        refuse_vanishing_rows(model, end, side)?;
+    }
+    Ok(open)
+}
+
+/// In a system, an equation whose own highest derivatives fade out towards a singular end is most likely a flux carried
+/// through it, and that admits false solutions.
+fn refuse_vanishing_rows(model: &dyn Model, end: f64, side: f64) -> Result<()> {
+    let layout = model.layout();
+    let (d, jets) = (layout.unknowns(), layout.jets());
+    let points = model.points();
+    let length = points[points.len() - 1] - points[0];
+    let piece = if side > 0.0 { 0 } else { points.len() - 2 };
+    let row = |x: f64, e: usize| -> Result<f64> {
+        let equations = sample(model, piece, x)?;
+        let top = |i: usize| equations.jets[e * jets + layout.jet(i, layout.orders()[i])].abs();
+        Ok((0..d).map(top).fold(0.0, f64::max))
+    };
+    let middle = 0.5 * (points[piece] + points[piece + 1]);
+    for e in 0..d {
+        if d > 1 && row(end + side * 1e-9 * length, e)? < 1e-3 * row(middle, e)? {
+            return Err(Error::SingularPoint { x: end });
         }
     }
     Ok(())

@@ -170,6 +170,7 @@ pub(crate) fn next(mesh: &Mesh, indicators: &[Indicator]) -> Option<Mesh> {
                 if join.is_some() {
                     if let Some(before) = elements.last_mut() {
                         before.right = element.right;
+                        before.open = before.open.or(element.open);
                         before.nodes = before.nodes.max(element.nodes);
                     }
                     spare = false;

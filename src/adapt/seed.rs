@@ -7,7 +7,7 @@
 
 use super::exponents::exponents;
 use crate::error::Result;
-use crate::mesh::{Element, Mesh};
+use crate::mesh::{Element, Mesh, Side};
 use crate::model::Model;
 use num_complex::Complex64;
 
@@ -55,18 +55,25 @@ impl Rates {
 }
 
 /// Seeds a mesh for a model whose unknowns have the sizes `scale`.
-pub(crate) fn seed(model: &dyn Model, scale: &[f64], most: usize) -> Result<Mesh> {
+pub(crate) fn seed(model: &dyn Model, scale: &[f64], open: [bool; 2], most: usize) -> Result<Mesh> {
     let points = model.points();
     let mut elements = Vec::new();
     for piece in 0..points.len() - 1 {
-        let edges = piece_edges(model, scale, piece, most)?;
-        elements.extend(edges.windows(2).map(|e| Element { left: e[0], right: e[1], nodes: NODES, piece }));
+        let ends = [open[0] && piece == 0, open[1] && piece + 2 == points.len()];
+        let edges = piece_edges(model, scale, piece, ends, most)?;
+        elements.extend(edges.windows(2).map(|e| Element { left: e[0], right: e[1], nodes: NODES, piece, open: None }));
+    }
+    if let (true, Some(first)) = (open[0], elements.first_mut()) {
+        first.open = Some(Side::Left);
+    }
+    if let (true, Some(last)) = (open[1], elements.last_mut()) {
+        last.open = Some(Side::Right);
     }
     Ok(Mesh { elements })
 }
 
 /// Element ends within one piece, both ends of the piece included.
-fn piece_edges(model: &dyn Model, scale: &[f64], piece: usize, most: usize) -> Result<Vec<f64>> {
+fn piece_edges(model: &dyn Model, scale: &[f64], piece: usize, open: [bool; 2], most: usize) -> Result<Vec<f64>> {
     let (a, b) = (model.points()[piece], model.points()[piece + 1]);
     let length = b - a;
     let rates_at =
@@ -75,6 +82,10 @@ fn piece_edges(model: &dyn Model, scale: &[f64], piece: usize, most: usize) -> R
     let first = if model.points().len() > 100 { 2 } else { 16 };
     let mut samples = Vec::new();
     for k in 0..=first {
+        // At a singular end there are no exponents.
+        if (k == 0 && open[0]) || (k == first && open[1]) {
+            continue;
+        }
         let x = if k == first { b } else { a + length * k as f64 / first as f64 };
         samples.extend(rates_at(x)?);
     }
@@ -94,8 +105,12 @@ fn piece_edges(model: &dyn Model, scale: &[f64], piece: usize, most: usize) -> R
     }
     samples.sort_by(|p, q| p.x.total_cmp(&q.x));
     if let (Some(left), Some(right)) = (samples.first(), samples.last()) {
-        ladder(left.decay, length, |step| edges.push(a + step));
-        ladder(right.growth, length, |step| edges.push(b - step));
+        if !open[0] {
+            ladder(left.decay, length, |step| edges.push(a + step));
+        }
+        if !open[1] {
+            ladder(right.growth, length, |step| edges.push(b - step));
+        }
     }
     tidy(&mut edges, length);
     oscillations(&mut edges, &samples, most);

@@ -173,7 +173,7 @@ fn fill_ends(layout: &Layout, tables: &Tables, inner: usize, tall: &mut [f64], r
             let state = layout.state(unknown, k);
             let row = inner + state;
             for l in 0..n {
-                tall[(unknown * n + l) * rows + row] = tables.integrals[m - k - 1][l * n + n - 1];
+                tall[(unknown * n + l) * rows + row] = tables.ends[m - k - 1][l];
             }
             right[(states + state) * rows + row] = 1.0;
             for l in k..m {

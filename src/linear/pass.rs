@@ -47,7 +47,7 @@ pub(crate) fn solve(
         if index % 64 == 0 && !tick(index) {
             return Err(Error::Interrupted);
         }
-        let tables = library.get(element.nodes)?;
+        let tables = library.get(element)?;
         let x: Vec<f64> = tables.nodes.iter().map(|s| element.coordinate(*s)).collect();
         equations.reset(layout, x.len());
         let jets = &zeros[..layout.jets() * x.len()];
@@ -57,7 +57,7 @@ pub(crate) fn solve(
         perturbation.apply(model, &batch, &mut equations);
         let local = Sizes { common: scale, local: &sizes[index] };
         let Condensed { rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
-        responses.push(Response { values: response, ratios: ratios(layout, x.len(), &equations) });
+        responses.push(Response { values: response, ratios: ratios(layout, element, x.len(), &equations) });
         frame.push(&rows);
         let at_break = mesh.elements.get(index + 1).is_some_and(|next| next.piece != element.piece);
         if at_break {
@@ -100,7 +100,7 @@ pub(crate) fn transfer(field: &Field, mesh: &Mesh, library: &mut Library) -> Res
     let mut hint = 0;
     let mut nodes = Vec::with_capacity(mesh.elements.len());
     for element in &mesh.elements {
-        let tables = library.get(element.nodes)?;
+        let tables = library.get(element)?;
         let mut jets = Vec::with_capacity(tables.n);
         for s in &tables.nodes {
             let x = element.coordinate(*s);
@@ -122,7 +122,7 @@ pub(crate) fn from_nodes(
 ) -> Result<Field> {
     let mut series = Vec::with_capacity(mesh.elements.len());
     for (element, nodes) in mesh.elements.iter().zip(nodes) {
-        let tables = library.get(element.nodes)?;
+        let tables = library.get(element)?;
         let mut jets = Vec::with_capacity(layout.jets());
         for (i, &m) in layout.orders().iter().enumerate() {
             let values: Vec<f64> = nodes.iter().map(|jets| jets[layout.jet(i, m)]).collect();
@@ -143,9 +143,13 @@ struct Response {
     ratios: Vec<f64>,
 }
 
-fn ratios(layout: &Layout, n: usize, equations: &Linearised) -> Vec<f64> {
+fn ratios(layout: &Layout, element: &Element, n: usize, equations: &Linearised) -> Vec<f64> {
     let (d, j, states) = (layout.unknowns(), layout.jets(), layout.states());
     let mut ratios = vec![0.0f64; d * states];
+    if element.open.is_some() {
+        // The last coefficient is visible at Gauss nodes.
+        return ratios;
+    }
     for node in [0, n / 2, n - 1] {
         let entry = |e: usize, jet: usize| equations.jets[(e * j + jet) * n + node];
         let leading = DMatrix::from_fn(d, d, |e, i| entry(e, layout.jet(i, layout.orders()[i])));
@@ -179,7 +183,7 @@ fn build_field(
     let mut series = Vec::with_capacity(mesh.elements.len());
     let shortest = mesh.elements.iter().map(Element::length).fold(f64::INFINITY, f64::min);
     for (index, element) in mesh.elements.iter().enumerate() {
-        let tables = library.get(element.nodes)?;
+        let tables = library.get(element)?;
         let (n, inner) = (tables.n, layout.unknowns() * tables.n);
         let [left, right] = &states[index];
         let known = left.iter().chain(right).chain(&constants).copied().chain([unit]);

@@ -150,9 +150,12 @@ impl Reckoner {
                 kind => {
                     let mut along = part.along.clone();
                     along.fill(&slots);
-                    let high = quantity::maximum(field, &along, from, to, None)?.value.value.abs();
-                    let low = quantity::minimum(field, &along, from, to, None)?.value.value.abs();
-                    let size = high.max(low);
+                    // At a singular end the expression may have no value: then its value here must do.
+                    let size = [quantity::maximum, quantity::minimum]
+                        .iter()
+                        .filter_map(|find| find(field, &along, from, to, None).ok())
+                        .map(|extreme| extreme.value.value.abs())
+                        .fold(slots[part.index].value.abs(), f64::max);
                     match kind {
                         Kind::Integral => size * (to - from),
                         Kind::Norm => size * (to - from).sqrt(),

@@ -10,6 +10,10 @@ use crate::formula::syntax::{Expression, Kind};
 use crate::model::{Batch, Linearised, Model};
 use std::ops::Range;
 
+/// What helps at a singular end.
+const EXPAND: &str = "at an end of the span write the derivative out, (D/r^2)*(r^2*c')' as D*(c'' + 2*c'/r), or begin the span \
+                      beside that point";
+
 const HIDDEN: &str = "an equation for each unknown is needed, or a hidden constraint must be differentiated";
 
 /// Determinants this small, in rows and columns scaled to 1, count as zero.
@@ -169,7 +173,7 @@ impl Assembler<'_, '_> {
                     short(unit.from_si(x)),
                     unit.text
                 );
-                self.lowerer.faults.add("not yet", place, message, Some("begin the span beside that point".into()));
+                self.lowerer.faults.add("not yet", place, message, Some(EXPAND.into()));
                 return None;
             }
         }

@@ -245,6 +245,11 @@ impl Sheet {
                 "the factor of the highest derivative vanishes at {}: singular points are not part of this version",
                 at(*x)
             ),
+            Error::SingularEnd { x } => format!(
+                "no smooth solution at the singular end {}: a condition there contradicts what the equation itself forces \
+                 (at the centre of a disc or sphere the first derivative is 0), or the data are not smooth there",
+                at(*x)
+            ),
             other => other.to_string(),
         }
     }

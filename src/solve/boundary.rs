@@ -24,8 +24,8 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
         return nonlinear(model, settings);
     }
     let scale = exponents::scales(model)?;
-    exponents::check_leading(model, &scale)?;
-    let mut mesh = seed::seed(model, &scale, settings.most_elements)?;
+    let open = exponents::singular_ends(model, &scale)?;
+    let mut mesh = seed::seed(model, &scale, open, settings.most_elements)?;
     let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
     let mut solver = Solver { model, settings, scale, library: Library::new(depth), pass: 0 };
     let wanted = wanted_tail(settings.relative);
@@ -41,6 +41,9 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
         }
         mesh = next;
         base = solver.solve(&mesh, Some(&base.field), &Perturbation::NONE)?;
+    }
+    if let (false, Some(end)) = (resolved, open.iter().position(|o| *o)) {
+        return Err(Error::SingularEnd { x: model.points()[if end == 0 { 0 } else { model.points().len() - 1 }] });
     }
     let passes = solver.pass;
     let other_rows = base.field;

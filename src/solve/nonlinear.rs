@@ -90,7 +90,7 @@ fn guessed(model: &dyn Model, library: &mut Library) -> Result<Option<Field>> {
     }
     let mut values = Vec::with_capacity(mesh.elements.len());
     for element in &mesh.elements {
-        let tables = library.get(element.nodes)?;
+        let tables = library.get(element)?;
         let at = |s: &f64| model.guess(element.coordinate(*s), element.piece).unwrap_or_default();
         let jets: Vec<Vec<f64>> = tables.nodes.iter().map(at).collect();
         if jets.iter().flatten().any(|v| !v.is_finite()) || jets.iter().any(|j| j.len() != layout.jets()) {
@@ -166,7 +166,7 @@ impl<'a> Run<'a> {
     fn new(model: &'a dyn Model, settings: &'a Settings<'a>, start: &Field, budget: usize) -> Result<Self> {
         let linear = Linearisation::new(model, start, start);
         let scale = exponents::scales(&linear)?;
-        let mesh = seed::seed(&linear, &scale, settings.most_elements)?;
+        let mesh = seed::seed(&linear, &scale, [false; 2], settings.most_elements)?;
         let mut library = depth(model.layout());
         let field = transfer(start, &mesh, &mut library)?;
         Ok(Self { model, settings, scale, field, library, passes: 0, budget })
