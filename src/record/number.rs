@@ -49,7 +49,7 @@ pub fn concise(value: f64, error: f64) -> String {
     }
     // Power of ten: the first digit of the value, or of the bar where that is larger, stands before the point.
     let places = (size - last).max(0) as usize;
-    let mantissa = scaled(value, last, places);
+    let mantissa = scaled(value, size, places);
     format!("{}({bar})e{size}", grouped(&mantissa))
 }
 
@@ -74,11 +74,8 @@ fn bar_digits(error: f64) -> (i32, u32) {
 
 /// The value as text rounded to the decade `last`.
 fn rounded(value: f64, last: i32) -> String {
-    if last <= 0 {
-        return fixed(value, (-last) as usize);
-    }
-    let unit = 10f64.powi(last);
-    format!("{:e}", (value / unit).round() * unit)
+    let size = if value == 0.0 { last } else { decade(value).max(last) };
+    format!("{}e{size}", scaled(value, size, (size - last).max(0) as usize))
 }
 
 fn fixed(value: f64, places: usize) -> String {
@@ -90,8 +87,15 @@ fn fixed(value: f64, places: usize) -> String {
     }
 }
 
-/// The value in units of 10^(last + places), with that many places.
-fn scaled(value: f64, last: i32, places: usize) -> String {
+/// The value in units of 10^size, with that many places: the digits of the exact value, correctly rounded.
+fn scaled(value: f64, size: i32, places: usize) -> String {
+    if value != 0.0 && decade(value) == size {
+        let text = format!("{value:.places$e}");
+        let (digits, power) = text.split_once('e').unwrap_or((&text, ""));
+        // Rounding may have reached the next decade.
+        return if power.parse() == Ok(size) { digits.to_owned() } else { digits.replacen('1', "10", 1) };
+    }
+    let last = size - places as i32;
     let units = if last < -290 { value * 1e300 / 10f64.powi(last + 300) } else { value / 10f64.powi(last) };
     let whole = format!("{:.0}", units.abs());
     let padded = format!("{whole:0>width$}", width = places + 1);
