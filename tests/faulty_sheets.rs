@@ -104,6 +104,23 @@ L = ["1 m"]
     (r#"k = "0.8 W/(m K)""#, r#"k = { against = "T", points = [] }"#, 4, 7, "not yet", r#"measured data are not part of this version"#),
     // comma
     (r#"0.8 W/(m K)"#, r#"0,8 W/(m K)"#, 4, 7, "syntax", r#"a comma cannot stand here"#),
+    // a small letter for a capital, a prime forgotten
+    (r#"T(L) - Ta"#, r#"T(l) - Ta"#, 16, 24, "unknown name", r#"`l` is not defined"#),
+    (r#"(k*T')' = 0"#, r#"(k*T')' = k*T"#, 13, 15, "dimension", r#"`(k*T')'` is W/m^3 (power per volume) but `k*T` is W/m (power per length)"#),
+    (r#"(k*T')' = 0"#, r#"k*T' = 0"#, 16, 1, "condition count", r#"1 condition is needed (order 1), 2 given: 1 at x = 0 m, 1 at x = 0.3 m"#),
+    // what is no state cannot jump
+    (r#"[report]"#, r#"step = "jump(T^2, 0.1 m) = 0"
+[report]"#, 17, 8, "release", r#"`T^2` is not one of the continuous quantities of this problem"#),
+    // later features
+    (r#"q(0 m) in W/m^2"#, r#"fold(1)"#, 18, 9, "not yet", r#"`fold`: paths are not part of this version"#),
+    // data that are infinite inside the span, whatever hides them
+    (r#"(k*T')' = 0"#, r#"(k*T')' = 1 W/m^2/(x - 0.1 m)"#, 13, 14, "division by zero", r#"division by zero at x = 0.1 m: the data are infinite there"#),
+    (r#"(k*T')' = 0"#, r#"(k*T')' = 1 W/m/(x - 0.1 m)^2"#, 13, 14, "division by zero", r#"division by zero at x = 0.1 m: the data are infinite there"#),
+    (r#"(k*T')' = 0"#, r#"(k*T')' = 1 W/m^3*tan(10 1/m*x)"#, 13, 14, "division by zero", r#"division by zero at x = 0.15708 m: the data are infinite there"#),
+    (r#"0.8 W/(m K)"#, r#"0.8 W/(m K)/(1 - 5 1/m*x)"#, 13, 14, "division by zero", r#"division by zero at x = 0.2 m: the data are infinite there"#),
+    // not a number by name; three limits of a piece
+    (r#"12 W/(m^2 K)"#, r#"nan"#, 5, 6, "not finite", r#"nan is not a number to calculate with"#),
+    (r#"k = "0.8 W/(m K)""#, r#"k = { "0 m .. 0.1 m .. L" = "1 W/(m K)", else = "2 W/(m K)" }"#, 4, 21, "piece", r#"a stretch has two limits"#),
 ];
 
 fn faults(text: &str) -> Vec<Fault> {
@@ -162,6 +179,34 @@ fn all_faults_come_in_one_pass_in_the_order_of_the_sheet() {
     for line in [5, 13, 16, 18] {
         assert!(lines.contains(&line), "no fault in line {line}: {found:?}");
     }
+}
+
+#[test]
+fn six_faults_are_six_faults() {
+    let text = WALL
+        .replace("12 W/(m^2 K)", "12 Wat/(m^2 K)")
+        .replace("-k*T'", "-kk*T'")
+        .replace("(k*T')' = 0", "(k*T')' = k")
+        .replace("T(0 m) = 20", "T(1 m) = 20")
+        .replace("[report]", "[report]\nfall = \"T(0 m) - T(L) in degC\"\nnone = \"sin(L)\"");
+    let found: Vec<(usize, &str)> = faults(&text).iter().map(|f| (f.line, f.code)).collect();
+    let expected = [
+        (5, "syntax"),
+        (7, "unknown name"),
+        (13, "dimension"),
+        (15, "outside"),
+        (18, "temperature difference"),
+        (19, "dimension"),
+    ];
+    assert_eq!(found, expected);
+}
+
+#[test]
+fn formulas_that_grow_without_end_are_refused_once() {
+    let chain: String = (1..40).map(|i| format!("a{i} = \"(a{0}*sin(a{0}))'*1 m\"\n", i - 1)).collect();
+    let text = altered("[span]", &format!("a0 = \"T/(1 K)\"\n{chain}[span]"));
+    let found: Vec<(&str, String)> = faults(&text).into_iter().map(|f| (f.code, f.message)).collect();
+    assert_eq!(found, [("too large", "the formulas of this sheet grow too large when expanded".to_owned())]);
 }
 
 #[test]

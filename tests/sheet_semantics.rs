@@ -174,3 +174,48 @@ fn two_values_need_a_side() {
     check(asked[1].printed().map(|e| (e.value, e.error)).expect("a value"), -flux);
     check(asked[2].printed().map(|e| (e.value, e.error)).expect("a value"), -flux / 3.0);
 }
+
+/// The one asked number, or why there is none.
+fn asked(report: &str) -> Result<(f64, f64), String> {
+    let sheet = read(&format!("{QUARTIC}a = \"{report}\"\n"));
+    let asked = sheet.evaluate(&sheet.solve(None).expect("regular")).remove(0);
+    asked.printed().map(|e| (e.value, e.error)).ok_or_else(|| asked.value.expect_err("no value"))
+}
+
+#[test]
+fn nothing_infinite_has_an_extreme_or_an_integral() {
+    // T' = 1 - 4 x^3 vanishes at x = 0.6299605, T'' only at 0.
+    let top = "x = 0.629961 m";
+    for (report, place) in [
+        ("max(1/(x - 0.1 m))", "x = 0.1 m"),
+        ("argmin(1/(x - 0.1 m))", "x = 0.1 m"),
+        ("max(1/(x - 0.1 m)^2)", "x = 0.1 m"),
+        ("integral(1/(x - 0.1 m))", "x = 0.1 m"),
+        ("mean(tan(2 1/m*x))", "x = 0.785398 m"),
+        ("max(T/T')", top),
+        ("norm(T''/T')", top),
+        ("integral(T''/T', 0.5 m, 0.9 m)", top),
+        ("integral(1/x)", "x = 0 m"),
+        ("norm(1/sqrt(x))", "x = 0 m"),
+    ] {
+        let reason = asked(report).expect_err(report);
+        assert!(reason.contains(&format!("is not finite at {place}:")), "{report}: {reason}");
+    }
+    // Divisors that vanish where the numerator does, elsewhere, or in a branch not taken do no harm.
+    check(asked("max(sin(1 1/m*x - 0.1)/(1 1/m*x - 0.1))").expect("a limit"), 1.0);
+    check(asked("max(1/(x - 0.1 m), 0.5 m, 0.9 m)").expect("away from it"), 2.5);
+    check(asked("max(if(x < 0.5 m, 1/(x - 0.6 m), 1/(x + 1 m)))").expect("not taken"), 2.0 / 3.0);
+    // (x - x^4)/x = 1 - x^3
+    check(asked("integral(T/x)").expect("a limit"), 0.75);
+    // A layer is steep, not infinite: 1/(1e-6 + y^2) with y = x - 0.3.
+    check(asked("max(1/(1e-6 + (1 1/m*x - 0.3)^2))").expect("finite"), 1e6);
+}
+
+#[test]
+fn data_with_a_finite_limit_may_divide_by_what_vanishes() {
+    // y'' = (x^2 - 0.09)/(x - 0.3) = x + 0.3
+    let text = "[span]\nx = [\"0\", \"1\"]\n[unknowns]\ny = \"1\"\n[equations]\ne = \"y'' = (x^2 - 0.09)/(x - 0.3)\"\n\
+                [conditions]\na = \"y(0) = 0\"\nb = \"y(1) = 0\"\n[report]\nm = \"y(0.5)\"\n";
+    let cubic = |x: f64| x.powi(3) / 6.0 + 0.15 * x * x;
+    check(numbers(text)[0], cubic(0.5) - 0.5 * cubic(1.0));
+}

@@ -76,6 +76,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let nodes: &[NodeId] = understood.as_ref().map_or(&[], |u| &u.0);
         // Each check runs as soon as what it needs is there: all faults in one pass.
         let points = span.map(|span| self.points(span, nodes, reads.as_deref().unwrap_or(&[]), &breaks, &wanted));
+        if self.lowerer.graph.is_full() {
+            // What was cut short says nothing about orders and counts.
+            return None;
+        }
         let ((equations, fluxes), (nodes, names), points) = (equations?, understood?, points?);
         self.build(equations, fluxes, nodes, names, reads, wanted, points)
     }
@@ -145,6 +149,11 @@ impl<'s, 'f> Assembler<'s, 'f> {
         for (key, value) in pieces {
             let (left, right) = key.text.split_once("..")?;
             let part = |from: usize, to: usize| Located::part(key, from..to);
+            if let Some(third) = right.find("..") {
+                let from = key.text.len() - right.len() + third;
+                let hint = "write one key for each stretch: \"0 m .. 1 m\" = \"value\"";
+                return self.lowerer.fault("piece", key, &(from..from + 2), "a stretch has two limits", hint);
+            }
             let from = self.lowerer.parse(&part(0, left.len()));
             let to = self.lowerer.parse(&part(key.text.len() - right.len(), key.text.len()));
             let value = self.lowerer.parse(value);
@@ -461,6 +470,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             layout,
             points: points.clone(),
         };
+        self.check_poles(&equations, &nodes, model.layout.unknowns(), &points);
         if linear {
             self.check_regular(&model, &equations, &nodes)?;
         }

@@ -100,8 +100,12 @@ impl Assembler<'_, '_> {
         if spread > 0 {
             sides.push(format!("{spread} over several points"));
         }
-        let message =
-            format!("{needed} conditions are needed ({}), {given} given: {}", parts.join(", "), sides.join(", "));
+        let message = format!(
+            "{needed} condition{} needed ({}), {given} given: {}",
+            if needed == 1 { " is" } else { "s are" },
+            parts.join(", "),
+            sides.join(", ")
+        );
         let place = self.source.conditions.last().map_or_else(
             || self.source.equations.last().map_or(0..0, |e| e.name_span.clone()),
             |c| c.name_span.clone(),

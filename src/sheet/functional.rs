@@ -1,6 +1,7 @@
 //! Numbers made from a solution: values at points, extremes, places, integrals.
 
 use super::along::Along;
+use super::pole;
 use crate::error::{Error, Result};
 use crate::field::Field;
 use crate::formula::graph::{Graph, NodeId};
@@ -27,6 +28,18 @@ pub(super) enum Kind {
     Norm,
     /// The n-th, from 1.
     Root(usize),
+}
+
+impl Kind {
+    /// Growth of a pole from which on there is no such number; `None` for what looks at points only.
+    fn bound(self) -> Option<f64> {
+        match self {
+            Kind::Maximum | Kind::PlaceOfMaximum | Kind::Minimum | Kind::PlaceOfMinimum => Some(pole::NO_EXTREME),
+            Kind::Integral | Kind::Mean => Some(pole::NO_INTEGRAL),
+            Kind::Norm => Some(pole::NO_NORM),
+            Kind::Value | Kind::Jump | Kind::Root(_) => None,
+        }
+    }
 }
 
 /// One number asked of an expression along the span; it fills the slot of its index.
@@ -73,6 +86,8 @@ struct Part {
     side: Option<Side>,
     text: String,
     along: Along,
+    /// What it divides by, where a whole stretch is asked.
+    divisors: Vec<Along>,
     points: Vec<Tape>,
 }
 
@@ -104,12 +119,15 @@ impl Reckoner {
         // Inner ones were lowered first: ascending order is an order of dependence.
         let parts = needed.into_iter().map(|index| {
             let f = &functionals[index];
+            let whole = graph.expand(f.expression);
+            let divisors = if f.kind.bound().is_some() { pole::divisors(graph, whole) } else { Vec::new() };
             Part {
                 index,
                 kind: f.kind,
                 side: f.side,
                 text: f.text.clone(),
                 along: Along::new(graph, f.expression, unknowns, points),
+                divisors: divisors.into_iter().map(|d| Along::new(graph, d, unknowns, points)).collect(),
                 points: f.points.iter().map(|p| Tape::compile(graph, &[*p])).collect(),
             }
         });
@@ -217,6 +235,16 @@ impl Part {
             && from > to
         {
             std::mem::swap(from, to);
+        }
+        if let (Some(bound), &[from, to]) = (self.kind.bound(), &ends[..]) {
+            let divisors = self.divisors.iter().cloned().map(|mut divisor| {
+                divisor.fill(slots);
+                divisor
+            });
+            let divisors: Vec<Along> = divisors.collect();
+            if let Some(x) = pole::pole(field, &along, &divisors, [from.min(to), from.max(to)], bound)? {
+                return Err(Error::NotFinite { what: format!("`{}`", self.text), x });
+            }
         }
         let near = || memory.borrow().get(&self.index).copied();
         let keep = |extreme: &Extreme| {

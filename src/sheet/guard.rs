@@ -110,7 +110,7 @@ impl Assembler<'_, '_> {
     }
 
     /// Place of an equation of the sheet; for the definition of a flux that of the equation that first holds it.
-    fn written_for(&self, equations: &[Carrying], nodes: &[NodeId], e: usize) -> Range<usize> {
+    pub(super) fn written_for(&self, equations: &[Carrying], nodes: &[NodeId], e: usize) -> Range<usize> {
         if let Some(own) = equations.get(e) {
             return own.at.span.clone();
         }

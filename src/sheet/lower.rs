@@ -117,6 +117,8 @@ pub(super) struct Lowerer<'f> {
     pub covers: Vec<Cover>,
     /// Names that were read as units somewhere.
     likened: HashSet<String>,
+    /// Whether the graph has been found full.
+    overfull: bool,
     states: [HashMap<String, State>; 2],
     stack: Vec<String>,
 }
@@ -140,6 +142,7 @@ impl<'f> Lowerer<'f> {
             limits: Vec::new(),
             covers: Vec::new(),
             likened: HashSet::new(),
+            overfull: false,
             states: [HashMap::new(), HashMap::new()],
             stack: Vec::new(),
         }
@@ -184,7 +187,13 @@ impl<'f> Lowerer<'f> {
     pub fn lower(&mut self, at: &Located, e: &Expression) -> Option<Typed> {
         let typed = self.lower_parts(at, e)?;
         if self.graph.is_full() {
-            return self.fault("too large", at, &e.span, "the formulas of this sheet grow too large when expanded", "");
+            let message = "the formulas of this sheet grow too large when expanded";
+            // Once: from here on everything does.
+            return if std::mem::replace(&mut self.overfull, true) {
+                None
+            } else {
+                self.fault("too large", at, &e.span, message, "")
+            };
         }
         if self.scalars && !self.carried.is_empty() && !matches!(e.kind, Kind::Name(_)) {
             return Some(self.recognise(at, e, typed));
@@ -284,6 +293,9 @@ impl<'f> Lowerer<'f> {
             }
             if name == "inf" {
                 return self.fault("not yet", at, span, "`inf`: infinite spans are not part of this version", "");
+            }
+            if name.eq_ignore_ascii_case("nan") {
+                return self.fault("not finite", at, span, "nan is not a number to calculate with", "");
             }
             return self.undefined(at, name, span);
         };

@@ -24,6 +24,7 @@ mod lower;
 mod model;
 mod piece;
 mod points;
+mod pole;
 mod reduce;
 mod source;
 mod start;
