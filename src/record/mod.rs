@@ -10,7 +10,11 @@ pub mod number;
 pub mod text;
 /// Results for programs.
 pub mod json;
-/// Curves along the span, residual, decay as SVG.
+/// Axes: ranges, round ticks, engineering powers, labels.
+pub(crate) mod axis;
+/// Drawing paper on top of plotters: lines, texts, the marks of the span.
+pub(crate) mod canvas;
+/// The span, curves along it, residual, decay as SVG.
 pub mod plot;
 /// The record as a page.
 pub mod page;

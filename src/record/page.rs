@@ -1,12 +1,14 @@
 //! The record as one page: self-contained, no script, for screen and paper.
 
+use super::axis::{few, pretty, typeset};
 use super::number::concise;
-use super::outcome::{Check, Entry, Feature, FeatureKind, Outcome, Quantity, Status};
+use super::outcome::{Check, Entry, Outcome, Quantity, Status};
 use super::plot::{self, Plot};
-use crate::sheet::short;
 use maud::{DOCTYPE, Markup, PreEscaped, html};
 
 const STYLE: &str = include_str!("page.css");
+/// Most rows of the table of values along the span, breaks apart.
+const MOST_STATIONS: usize = 24;
 
 /// The page; `plots` are set into it.
 pub fn render(outcome: &Outcome, plots: &[Plot], sha256: &str, version: &str) -> String {
@@ -27,13 +29,14 @@ pub fn render(outcome: &Outcome, plots: &[Plot], sha256: &str, version: &str) ->
                     @if !outcome.warnings.is_empty() {
                         section class="warnings" {
                             h2 { "Warnings" }
-                            ul { @for warning in &outcome.warnings { li { (warning) } } }
+                            ul { @for warning in &outcome.warnings { li { (worded(warning)) } } }
                         }
                     }
                     (results(outcome))
-                    (statement(outcome))
+                    (statement(outcome, plots))
                     (checks(outcome))
                     (pictures(plots))
+                    (stations(outcome))
                     (mesh(outcome))
                     (cautions())
                     section {
@@ -59,12 +62,12 @@ fn head(outcome: &Outcome, title: &str, sha256: &str, version: &str) -> Markup {
             h1 { (title) }
             @if let Some(note) = &outcome.note { p class="note" { (note) } }
             p class={ "status " (class) } { (words) }
-            @if let Some(reason) = &outcome.reason { p class="reason" { (reason) } }
+            @if let Some(reason) = &outcome.reason { p class="reason" { (worded(reason)) } }
             dl {
                 div { dt { "Sheet" } dd { (outcome.source) } }
                 div { dt { "Digest (SHA-256)" } dd class="digest" { (sha256) } }
                 div { dt { "Program" } dd { "spanwise " (version) } }
-                div { dt { "Accuracy asked" } dd { (format!("{:e}", outcome.relative)) ", relative" } }
+                div { dt { "Accuracy asked" } dd { (few(outcome.relative, 2)) ", relative" } }
                 div { dt { "Prepared" } dd class="blank" {} }
                 div { dt { "Checked" } dd class="blank" {} }
             }
@@ -72,19 +75,43 @@ fn head(outcome: &Outcome, title: &str, sha256: &str, version: &str) -> Markup {
     }
 }
 
-fn unit(text: &str) -> &str {
-    if text == "1" { "" } else { text }
+fn unit(text: &str) -> String {
+    if text == "1" { String::new() } else { pretty(text) }
+}
+
+/// A coordinate or a value that carries no bar.
+fn shown(value: f64) -> String {
+    few(value, 7)
+}
+
+/// A sentence: what stands between back quotes as code, powers of ten as print shows them.
+fn worded(text: &str) -> Markup {
+    let closed = text.matches('`').count().is_multiple_of(2);
+    html! {
+        @if closed {
+            @for (k, part) in text.split('`').enumerate() {
+                @if k % 2 == 1 { code { (part) } } @else { (typeset(part)) }
+            }
+        } @else {
+            (typeset(text))
+        }
+    }
 }
 
 fn results(outcome: &Outcome) -> Markup {
     html! {
-        section {
-            h2 { "Results" }
-            p { "The digits in brackets are the error bar, in units of the last digits shown." }
-            div class="wide" {
-                table class="results" {
-                    thead { tr { th { "Quantity" } th { "Value" } th { "Unit" } th { "Relative bar" } th { "Formula" } } }
-                    tbody { @for q in &outcome.quantities { (result(q)) } }
+        @if !outcome.quantities.is_empty() {
+            section {
+                h2 { "Results" }
+                p class="lead" {
+                    "The digits in brackets are the error bar, in units of the last digits shown: 1.234(5) stands for "
+                    "1.234 ± 0.005."
+                }
+                div class="wide" {
+                    table class="results" {
+                        thead { tr { th { "Quantity" } th { "Value" } th { "Unit" } th class="bar" { "Bar, relative" } } }
+                        tbody { @for q in &outcome.quantities { (result(q)) } }
+                    }
                 }
             }
         }
@@ -92,32 +119,39 @@ fn results(outcome: &Outcome) -> Markup {
 }
 
 fn result(q: &Quantity) -> Markup {
-    let relative = q.value.filter(|v| *v != 0.0).map(|v| format!("{:.1e}", q.error / v.abs()));
+    let relative = q.value.filter(|v| *v != 0.0).map(|v| few(q.error / v.abs(), 2));
     html! {
         tr class=[(!q.met).then_some("missed")] {
             th scope="row" {
                 (q.name)
-                @for remark in &q.remarks { span class="remark" { (remark) } }
-                @if let Some(reason) = &q.reason { span class="remark reason" { (reason) } }
+                code class="formula" { (q.formula) }
+                @for remark in &q.remarks { span class="remark" { (worded(remark)) } }
+                @if !q.met {
+                    span class="remark reason" {
+                        b { @if q.value.is_some() { "accuracy missed" } @else { "no value" } }
+                        @if let Some(reason) = &q.reason { ": " (worded(reason)) }
+                    }
+                }
             }
-            td class="number" { @match q.value { Some(v) => (concise(v, q.error)), None => "none" } }
-            td { (unit(&q.unit)) }
-            td class="number" { (relative.unwrap_or_default()) }
-            td { code { (q.formula) } }
+            td class="number" { @match q.value { Some(v) => (concise(v, q.error).replace('-', "−")), None => "none" } }
+            td class="unit" { (unit(&q.unit)) }
+            td class="number bar" { (relative.unwrap_or_default()) }
         }
     }
 }
 
-fn statement(outcome: &Outcome) -> Markup {
+fn statement(outcome: &Outcome, plots: &[Plot]) -> Markup {
     let (from, to) = outcome.span;
     html! {
         section {
             h2 { "The problem as understood" }
             p {
-                "Along " i { (outcome.coordinate) } " from " (short(from)) " to " (short(to)) " "
+                "Along " i { (outcome.coordinate) } " from " (shown(from)) " to " (shown(to)) " "
                 (unit(&outcome.coordinate_unit)) "."
             }
-            (drawing(outcome))
+            @if let Some(span) = plots.iter().find(|p| p.file == plot::SPAN) {
+                div class="picture span" role="img" aria-label=(span.words) { (PreEscaped(&span.svg)) }
+            }
             (entries("Unknowns", &outcome.unknowns))
             (entries("Equations", &outcome.equations))
             (entries("Conditions", &outcome.conditions))
@@ -131,7 +165,7 @@ fn entries(name: &str, entries: &[Entry]) -> Markup {
         @if !entries.is_empty() {
             h3 { (name) }
             div class="wide" {
-                table {
+                table class="entries" {
                     tbody {
                         @for e in entries {
                             tr { th scope="row" { (e.name) } td { code { (e.text) } } td class="remark" { (e.remark) } }
@@ -143,80 +177,12 @@ fn entries(name: &str, entries: &[Entry]) -> Markup {
     }
 }
 
-/// The span with what stands where, drawn to scale.
-fn drawing(outcome: &Outcome) -> Markup {
-    let (from, to) = outcome.span;
-    let place = |x: f64| 40.0 + 720.0 * ((x - from) / (to - from)).clamp(0.0, 1.0);
-    let many = outcome.features.len() > 24;
-    // Labels that would cover each other go to different heights.
-    let mut rows: Vec<f64> = Vec::new();
-    let mut labelled: Vec<(&Feature, usize)> = Vec::new();
-    for (k, feature) in outcome.features.iter().enumerate() {
-        let x = place(feature.x);
-        // Two lines of one condition at one point need one label.
-        if k > 0 && outcome.features[k - 1].label == feature.label && outcome.features[k - 1].x == feature.x {
-            labelled.push((feature, usize::MAX));
-            continue;
-        }
-        let width = 7.0 * feature.label.chars().count().min(22) as f64 + 14.0;
-        let row = rows.iter().position(|end| x - 0.5 * width > *end).unwrap_or(rows.len());
-        let end = x + 0.5 * width;
-        if row == rows.len() {
-            rows.push(end)
-        } else {
-            rows[row] = end
-        }
-        labelled.push((feature, row));
-    }
-    let height = if many { 70 } else { 66 + 18 * rows.len() };
-    html! {
-        svg class="span" role="img" viewBox={ "0 0 800 " (height) } aria-label={ "The span with " (outcome.features.len()) " points" } {
-            line class="member" x1="40" y1="34" x2="760" y2="34" {}
-            @for (feature, row) in labelled {
-                @let x = place(feature.x);
-                (mark(feature.kind, x))
-                @if !many && row < usize::MAX && !feature.label.is_empty() {
-                    text x=(x) y=(66 + 18 * row) text-anchor="middle" {
-                        (feature.label.chars().take(22).collect::<String>())
-                    }
-                }
-                @if !many && feature.kind == FeatureKind::Break {
-                    text class="soft" x=(x) y="16" text-anchor="middle" { (short(feature.x)) }
-                }
-            }
-        }
-        p class="legend" {
-            "block: condition; arrow: prescribed jump; ring: continuity given up; tick: break of the data"
-        }
-    }
-}
-
-fn mark(kind: FeatureKind, x: f64) -> Markup {
-    let points = |dx: f64, top: f64, tip: f64| format!("{},{top} {},{top} {x},{tip}", x - dx, x + dx);
-    html! {
-        @match kind {
-            FeatureKind::Condition => rect class="ink" x=(x - 5.0) y="38" width="10" height="8" {},
-            FeatureKind::Jump => {
-                line class="load" x1=(x) y1="6" x2=(x) y2="30" {}
-                polygon class="load" points=(points(4.0, 24.0, 33.0)) {}
-            },
-            FeatureKind::Release => circle class="ring" cx=(x) cy="34" r="5" {},
-            FeatureKind::Break => line class="tick" x1=(x) y1="26" x2=(x) y2="42" {},
-        }
-    }
-}
-
 fn checks(outcome: &Outcome) -> Markup {
     html! {
         @if !outcome.checks.is_empty() {
             section {
                 h2 { "Checks" }
-                div class="wide" {
-                    table {
-                        thead { tr { th { "What was checked" } th { "" } th { "Result" } th { "What it means" } } }
-                        tbody { @for c in &outcome.checks { (check(c)) } }
-                    }
-                }
+                ul class="checks" { @for c in &outcome.checks { (check(c)) } }
             }
         }
     }
@@ -225,23 +191,67 @@ fn checks(outcome: &Outcome) -> Markup {
 fn check(c: &Check) -> Markup {
     let (class, words) = match c.passed {
         Some(true) => ("good", "passed"),
-        Some(false) => ("bad", "look here"),
-        None => ("", "for information"),
+        Some(false) => ("bad", "failed"),
+        None => ("plain", "for information"),
     };
     html! {
-        tr { th scope="row" { (c.name) } td class=(class) { (words) } td { (c.result) } td class="remark" { (c.meaning) } }
+        li {
+            p class={ "verdict " (class) } { (words) }
+            div {
+                p { b { (worded(&c.name)) } " — " (worded(&c.result)) }
+                p class="remark" { (worded(&c.meaning)) }
+            }
+        }
     }
 }
 
 fn pictures(plots: &[Plot]) -> Markup {
     html! {
-        @if !plots.is_empty() {
+        @if plots.iter().any(|p| p.file != plot::SPAN) {
             section {
                 h2 { "Along the span" }
-                @for plot in plots {
-                    figure {
-                        div role="img" aria-label=(plot.words) { (PreEscaped(&plot.svg)) }
-                        figcaption { (plot.words) }
+                div class="pictures" {
+                    @for plot in plots.iter().filter(|p| p.file != plot::SPAN) {
+                        figure {
+                            div class="picture" role="img" aria-label=(plot.words) { (PreEscaped(&plot.svg)) }
+                            figcaption { (plot.words) }
+                        }
+                    }
+                }
+            }
+        }
+    }
+}
+
+/// Values at chosen places: evenly through the rows, and both limits at every place where a value jumps.
+fn stations(outcome: &Outcome) -> Markup {
+    let rows = &outcome.stations;
+    let step = rows.len().div_ceil(MOST_STATIONS).max(1);
+    let close = |a: usize, b: usize| rows.get(a).zip(rows.get(b)).is_some_and(|(a, b)| a.first() == b.first());
+    let joint = |k: usize| close(k, k + 1) || k > 0 && close(k - 1, k);
+    let joints = (0..rows.len()).filter(|&k| joint(k)).count();
+    let chosen = |k: usize| k.is_multiple_of(step) || k + 1 == rows.len() || joints <= MOST_STATIONS && joint(k);
+    html! {
+        @if !rows.is_empty() {
+            section class="stations" {
+                h2 { "Values along the span" }
+                details {
+                    summary { "Chosen places; all of them are in solution.csv" }
+                    div class="remark" { "A place that stands twice is a break: its left limit, then its right limit." }
+                    div class="wide" {
+                        table class="figures" {
+                            thead {
+                                tr {
+                                    th { (outcome.coordinate) " " span class="unit" { (unit(&outcome.coordinate_unit)) } }
+                                    @for c in &outcome.curves { th { (c.name) " " span class="unit" { (unit(&c.unit)) } } }
+                                }
+                            }
+                            tbody {
+                                @for (_, row) in rows.iter().enumerate().filter(|(k, _)| chosen(*k)) {
+                                    tr { @for value in row { td class="number" { (shown(*value)) } } }
+                                }
+                            }
+                        }
                     }
                 }
             }
@@ -259,16 +269,16 @@ fn mesh(outcome: &Outcome) -> Markup {
                 details open[rows.len() <= 12] {
                     summary { "Elements" }
                     div class="wide" {
-                        table {
+                        table class="figures" {
                             thead { tr { th { "from" } th { "to" } th { "nodes" } th { "last coefficient, relative" } } }
                             tbody {
                                 @for row in rows {
                                     @let last = row.decay.iter().filter_map(|d| d.last()).fold(0.0f64, |s, c| s.max(*c));
                                     tr {
-                                        td class="number" { (short(row.from)) }
-                                        td class="number" { (short(row.to)) }
+                                        td class="number" { (shown(row.from)) }
+                                        td class="number" { (shown(row.to)) }
                                         td class="number" { (row.nodes) }
-                                        td class="number" { (format!("{last:.1e}")) }
+                                        td class="number" { (few(last, 2)) }
                                     }
                                 }
                             }

@@ -1,31 +1,30 @@
-//! Plots as SVG: curves along the span, residual, decay of the coefficients.
+//! Pictures of a record as SVG: curves along the span, residual, decay of the coefficients, the span itself.
 
-use super::outcome::{Curve, FeatureKind, Outcome};
-use crate::sheet::short;
-use plotters::coord::Shift;
-use plotters::coord::ranged1d::{KeyPointHint, NoDefaultFormatting, Ranged, ValueFormatter};
-use plotters::prelude::*;
-use plotters::style::text_anchor::{HPos, Pos, VPos};
+use super::axis::{Axis, Decades, few, pretty};
+use super::canvas::{Canvas, GRID, INK, LINES, PAPER, SOFT, Stand, TEXT, cut, draw, width};
+use super::outcome::{Curve, Feature, FeatureKind, Outcome};
 
-/// Units of the drawing for one of the page: its coordinates are whole numbers, and a fine grid keeps lines smooth.
-const S: u32 = 4;
-/// The same with a sign.
-const Z: i32 = S as i32;
-/// Size of a plot.
-const SIZE: (u32, u32) = (860 * S, 340 * S);
-const INK: RGBColor = RGBColor(34, 40, 49);
-const GRID: RGBColor = RGBColor(222, 226, 230);
-const LINE: RGBColor = RGBColor(18, 87, 133);
-const MARK: RGBColor = RGBColor(176, 66, 24);
-const SOFT: RGBColor = RGBColor(120, 128, 138);
-/// Colours told apart by the colour-blind, in print also by lightness.
-const SERIES: [RGBColor; 6] =
-    [LINE, MARK, RGBColor(70, 130, 82), RGBColor(122, 82, 150), RGBColor(150, 120, 20), RGBColor(60, 60, 60)];
+/// Width of a picture, in pixels.
+const WIDTH: f64 = 560.0;
+/// Height of a picture.
+const HEIGHT: f64 = 330.0;
+/// Space at the right.
+const RIGHT: f64 = 18.0;
+/// Space above the field: title.
+const TOP: f64 = 36.0;
+/// Space below the field: marks, tick labels, key and title.
+const BOTTOM: f64 = 74.0;
+/// Rows of labels under the drawing of the span.
+const ROWS: usize = 6;
+/// Most unknowns named and drawn in the picture of the decay.
+const MOST_NAMES: usize = LINES.len();
+/// Deepest decade drawn below the largest.
+const DEEPEST: i32 = 20;
 
-type Drawing<'a> = DrawingArea<SVGBackend<'a>, Shift>;
-type Outcoming<T> = Result<T, DrawingAreaErrorKind<std::io::Error>>;
+/// File of the drawing of the span.
+pub const SPAN: &str = "span.svg";
 
-/// A plot: file name, drawing, and what it shows in words.
+/// A picture: file name, drawing, and what it shows in words.
 pub struct Plot {
     /// Name inside the folder of plots.
     pub file: String,
@@ -35,26 +34,265 @@ pub struct Plot {
     pub words: String,
 }
 
-/// All plots of a record. One that cannot be drawn is left out.
+/// The rectangle curves are drawn in.
+struct Frame {
+    left: f64,
+    right: f64,
+    top: f64,
+    bottom: f64,
+}
+
+impl Frame {
+    fn beside(labels: impl Iterator<Item = usize>) -> Self {
+        let wide = labels.max().unwrap_or(1).max(2) as f64 * 0.56 * TEXT;
+        Self { left: (wide + 14.0).min(WIDTH / 3.0), right: WIDTH - RIGHT, top: TOP, bottom: HEIGHT - BOTTOM }
+    }
+
+    fn x(&self, part: f64) -> f64 {
+        self.left + part * (self.right - self.left)
+    }
+
+    fn y(&self, part: f64) -> f64 {
+        self.bottom - part * (self.bottom - self.top)
+    }
+
+    fn axes(&self, canvas: &mut Canvas<'_>) {
+        canvas.line((self.left, self.top), (self.left, self.bottom), 1.2, INK);
+        canvas.line((self.left, self.bottom), (self.right, self.bottom), 1.2, INK);
+    }
+
+    fn rung(&self, canvas: &mut Canvas<'_>, part: f64, label: &str) {
+        let y = self.y(part);
+        canvas.line((self.left, y), (self.right, y), 0.8, GRID);
+        canvas.line((self.left - 4.0, y), (self.left, y), 1.2, INK);
+        canvas.text(label, (self.left - 8.0, y), Stand::End, INK);
+    }
+}
+
+/// One quantity along the span with its extremes and the features of the span.
+///
+/// # Errors
+/// What the drawing library reports.
+pub fn curve(curve: &Curve, outcome: &Outcome) -> Result<String, String> {
+    let points = || curve.pieces.iter().flatten();
+    let values = points().map(|p| p.1).chain(curve.marks.iter().map(|m| m.value));
+    let y = Axis::holding(values, 0.16, 7);
+    let frame = Frame::beside(y.ticks.iter().map(|t| t.1.chars().count()));
+    draw((WIDTH, HEIGHT), |canvas| {
+        for (value, label) in &y.ticks {
+            frame.rung(canvas, share(*value, y.ends), label);
+        }
+        let x = along(canvas, &frame, outcome);
+        if y.ends.0 < 0.0 && y.ends.1 > 0.0 && y.base == 0.0 {
+            let zero = frame.y(share(0.0, y.ends));
+            canvas.line((frame.left, zero), (frame.right, zero), 0.8, INK);
+        }
+        frame.axes(canvas);
+        let title = y.title(&cut(&curve.name, WIDTH / 2.0), &curve.unit);
+        canvas.bold(&cut(&title, WIDTH - 20.0), (8.0, 15.0), Stand::Begin, INK);
+        for piece in &curve.pieces {
+            let line: Vec<_> = piece
+                .iter()
+                .filter(|p| p.0.is_finite() && p.1.is_finite())
+                .map(|p| (frame.x(x.place(p.0)), frame.y(y.place(p.1))))
+                .collect();
+            canvas.path(&line, 2.0, LINES[0]);
+        }
+        if points().next().is_none() {
+            nothing(canvas, &frame);
+        }
+        for mark in curve.marks.iter().filter(|m| m.x.is_finite() && m.value.is_finite()) {
+            let at = (frame.x(x.place(mark.x)), frame.y(y.place(mark.value)));
+            canvas.circle(at, 3.5, LINES[1], true);
+            let label = format!("{} at {}", few(y.shown(mark.value), 5), few(x.shown(mark.x), 4));
+            // Above the largest and below the smallest there is no line to cross.
+            let up = !mark.label.starts_with("smallest");
+            let half = 0.5 * width(&label);
+            let middle = at.0.max(frame.left + half + 4.0).min(frame.right - half);
+            let height = at.1 + if up { -14.0 } else { 15.0 };
+            canvas.area((middle - half, height - 8.0), (middle + half, height + 8.0), PAPER);
+            canvas.text(&label, (middle, height), Stand::Middle, INK);
+        }
+    })
+}
+
+/// The relative residual along the span, in decades.
+///
+/// # Errors
+/// What the drawing library reports.
+pub fn residual(outcome: &Outcome) -> Result<String, String> {
+    let points = || outcome.residual.iter().flat_map(|c| c.pieces.iter().flatten());
+    let y = Decades::holding(points().map(|p| p.1.abs()), DEEPEST, 6);
+    let frame = Frame::beside(y.ticks.iter().map(|t| t.1.chars().count()));
+    draw((WIDTH, HEIGHT), |canvas| {
+        rungs(canvas, &frame, &y);
+        let x = along(canvas, &frame, outcome);
+        frame.axes(canvas);
+        canvas.bold("residual, relative to the terms", (8.0, 15.0), Stand::Begin, INK);
+        for (k, one) in outcome.residual.iter().enumerate() {
+            for piece in &one.pieces {
+                let line: Vec<_> = piece
+                    .iter()
+                    .filter(|p| p.0.is_finite() && p.1.is_finite())
+                    .map(|p| (frame.x(x.place(p.0)), frame.y(y.place(p.1.abs()))))
+                    .collect();
+                canvas.path(&line, 1.4, LINES[k % LINES.len()]);
+            }
+        }
+        if points().next().is_none() {
+            nothing(canvas, &frame);
+        }
+    })
+}
+
+/// Sizes of the Legendre coefficients, element after element, one line per unknown and element.
+///
+/// # Errors
+/// What the drawing library reports.
+pub fn decay(outcome: &Outcome) -> Result<String, String> {
+    let mesh = &outcome.mesh;
+    let y = Decades::holding(mesh.iter().flat_map(|r| r.decay.iter().flatten().copied()), DEEPEST, 6);
+    let frame = Frame::beside(y.ticks.iter().map(|t| t.1.chars().count()));
+    draw((WIDTH, HEIGHT), |canvas| {
+        rungs(canvas, &frame, &y);
+        // Each element gets the same width: short elements are where there is something to see.
+        let wide = 1.0 / mesh.len().max(1) as f64;
+        let every = (mesh.len() as f64 * 30.0 / (frame.right - frame.left)).ceil().max(1.0) as usize;
+        for index in 0..mesh.len() {
+            if index > 0 && every < 4 {
+                let x = frame.x(index as f64 * wide);
+                canvas.line((x, frame.top), (x, frame.bottom), 0.8, GRID);
+            }
+            if index % every == 0 {
+                let middle = frame.x((index as f64 + 0.5) * wide);
+                canvas.text(&(index + 1).to_string(), (middle, frame.bottom + 15.0), Stand::Middle, INK);
+            }
+        }
+        frame.axes(canvas);
+        for (index, row) in mesh.iter().enumerate() {
+            for (k, sizes) in row.decay.iter().enumerate().take(MOST_NAMES) {
+                decayed(canvas, &frame, &y, sizes, (index as f64 * wide, wide), k);
+            }
+        }
+        canvas.bold("coefficient size, relative", (8.0, 15.0), Stand::Begin, INK);
+        canvas.text("element, in sequence", (frame.right, HEIGHT - 12.0), Stand::End, INK);
+        canvas.text("degree rises to the right", (8.0, HEIGHT - 12.0), Stand::Begin, SOFT);
+        key(canvas, outcome, (frame.left, frame.bottom + 38.0));
+        if mesh.iter().all(|r| r.decay.is_empty()) {
+            nothing(canvas, &frame);
+        }
+    })
+}
+
+/// Coefficients of one unknown on one element: a line with dots, dots left out where they would touch.
+fn decayed(canvas: &mut Canvas<'_>, frame: &Frame, y: &Decades, sizes: &[f64], (from, wide): (f64, f64), k: usize) {
+    let count = sizes.len().max(1) as f64;
+    let line: Vec<_> = sizes
+        .iter()
+        .enumerate()
+        // A coefficient that is exactly zero has no place on a logarithmic axis.
+        .filter(|(_, s)| s.is_finite() && **s > 0.0)
+        .map(|(d, s)| (frame.x(from + wide * (0.06 + 0.88 * (d as f64 + 0.5) / count)), frame.y(y.place(*s))))
+        .collect();
+    canvas.path(&line, 1.2, LINES[k]);
+    if wide * (frame.right - frame.left) / count > 7.0 {
+        for &at in &line {
+            canvas.circle(at, 2.2, LINES[k], k.is_multiple_of(2));
+        }
+    }
+}
+
+fn key(canvas: &mut Canvas<'_>, outcome: &Outcome, (mut x, y): (f64, f64)) {
+    for (k, name) in outcome.decay_names.iter().enumerate() {
+        let name = cut(name, 120.0);
+        if k >= MOST_NAMES || x + width(&name) + 30.0 > WIDTH - 60.0 && k > 0 {
+            canvas.text(&format!("and {} more", outcome.decay_names.len() - k), (x, y), Stand::Begin, SOFT);
+            break;
+        }
+        canvas.line((x, y), (x + 20.0, y), 2.0, LINES[k]);
+        canvas.text(&name, (x + 26.0, y), Stand::Begin, INK);
+        x += 26.0 + width(&name) + 18.0;
+    }
+}
+
+/// The span as a bar with its features, their names and places.
+///
+/// # Errors
+/// What the drawing library reports.
+pub fn span(outcome: &Outcome) -> Result<String, String> {
+    let (from, to) = outcome.span;
+    let (left, right) = (30.0, WIDTH - 30.0);
+    let x = |v: f64| left + (right - left) * share(v, outcome.span);
+    let places = Axis::holding([from, to].into_iter(), 0.0, 9);
+    let number = |v: f64| few(places.shown(v), 4);
+    let groups = grouped(&outcome.features, outcome.span);
+    // Labels go to the first row with room for them; what finds none stays without a label.
+    let mut ends = [f64::NEG_INFINITY; ROWS];
+    let mut rows = 0;
+    let mut labels = Vec::new();
+    for (place, kinds, names) in &groups {
+        let text = cut(&names.join(", "), 230.0);
+        let half = 0.5 * width(&text);
+        let middle = x(*place).max(half + 4.0).min(WIDTH - half - 4.0);
+        let row = ends.iter().position(|&e| e + 12.0 < middle - half).filter(|_| !text.is_empty());
+        if let Some(row) = row {
+            ends[row] = middle + half;
+            rows = rows.max(row + 1);
+        }
+        labels.push((*place, kinds, text, middle, row));
+    }
+    let bar = 46.0;
+    let height = bar + 62.0 + 20.0 * rows as f64;
+    draw((WIDTH, height), |canvas| {
+        for (place, _, _, middle, row) in &labels {
+            if let Some(row) = row {
+                let y = bar + 31.0 + 20.0 * *row as f64;
+                canvas.line((x(*place), bar + 24.0), (x(*place), y - 8.0), 0.8, GRID);
+                if (x(*place) - middle).abs() > 60.0 {
+                    canvas.line((x(*place), y - 8.0), (*middle, y - 8.0), 0.8, GRID);
+                }
+            }
+        }
+        canvas.area((left, bar - 4.0), (right, bar + 4.0), LINES[0]);
+        let mut numbered = f64::NEG_INFINITY;
+        for (place, kinds, text, middle, row) in &labels {
+            for (n, kind) in kinds.iter().enumerate() {
+                canvas.mark(*kind, (x(*place) + 13.0 * (n as f64 - 0.5 * (kinds.len() as f64 - 1.0)), bar + 14.0));
+            }
+            // Places above the bar, where the neighbour leaves room.
+            if x(*place) - numbered >= 46.0 {
+                canvas.text(&number(*place), (x(*place), bar - 16.0), Stand::Middle, SOFT);
+                numbered = x(*place);
+            }
+            if let Some(row) = row {
+                canvas.text(text, (*middle, bar + 33.0 + 20.0 * *row as f64), Stand::Middle, INK);
+            }
+        }
+        if groups.is_empty() {
+            canvas.text(&number(from), (left, bar - 16.0), Stand::Middle, SOFT);
+            canvas.text(&number(to), (right, bar - 16.0), Stand::Middle, SOFT);
+        }
+        let title = places.title(&cut(&outcome.coordinate, 160.0), &outcome.coordinate_unit);
+        canvas.text(&title, (WIDTH - 8.0, 12.0), Stand::End, INK);
+        kinds_key(canvas, &outcome.features, (8.0, height - 12.0));
+    })
+}
+
+/// Every picture of a record. One that cannot be drawn is left out.
 pub fn all(outcome: &Outcome) -> Vec<Plot> {
     let mut plots = Vec::new();
-    for (k, curve) in outcome.curves.iter().enumerate() {
-        let file = format!("{:02}-{}.svg", k + 1, file_name(&curve.name));
-        plots.extend(drawn(|area| along(area, curve, outcome)).map(|svg| Plot {
-            file,
-            svg,
-            words: words(curve, outcome),
-        }));
+    let mut keep = |file: String, svg: Result<String, String>, words: String| {
+        plots.extend(svg.map(|svg| Plot { file, svg, words }));
+    };
+    keep(SPAN.into(), span(outcome), span_words(outcome));
+    for (k, one) in outcome.curves.iter().enumerate() {
+        keep(format!("{:02}-{}.svg", k + 1, file_name(&one.name)), curve(one, outcome), curve_words(one, outcome));
     }
-    for curve in &outcome.residual {
-        let words = "Residual of the equations along the span, relative to their largest terms, logarithmic".to_owned();
-        let svg = drawn(|area| residual(area, curve, outcome));
-        plots.extend(svg.map(|svg| Plot { file: "residual.svg".into(), svg, words }));
+    if !outcome.residual.is_empty() {
+        keep("residual.svg".into(), residual(outcome), residual_words(outcome));
     }
     if !outcome.mesh.is_empty() {
-        let words =
-            "Sizes of the Legendre coefficients of each carried unknown, element after element, logarithmic".to_owned();
-        plots.extend(drawn(|area| decay(area, outcome)).map(|svg| Plot { file: "decay.svg".into(), svg, words }));
+        keep("decay.svg".into(), decay(outcome), decay_words(outcome));
     }
     plots
 }
@@ -65,279 +303,140 @@ fn file_name(name: &str) -> String {
     text.trim_matches('-').to_owned()
 }
 
-fn words(curve: &Curve, outcome: &Outcome) -> String {
-    let unit = |u: &str| if u == "1" { String::new() } else { format!(" {u}") };
-    let marks: Vec<String> = curve
-        .marks
-        .iter()
-        .map(|m| {
-            let at = format!("{}{}", short(m.x), unit(&outcome.coordinate_unit));
-            format!("{} {}{} at {} = {at}", m.label, short(m.value), unit(&curve.unit), outcome.coordinate)
-        })
-        .collect();
-    format!("{} along the span; {}", curve.name, marks.join("; "))
+fn span_words(outcome: &Outcome) -> String {
+    let unit = plain_unit(&outcome.coordinate_unit);
+    let mut words = format!("Drawing of the span from {} to {}{unit}.", few(outcome.span.0, 4), few(outcome.span.1, 4));
+    for feature in outcome.features.iter().take(20) {
+        words.push_str(&format!(" {} “{}” at {}.", kind_name(feature.kind), feature.label, few(feature.x, 4)));
+    }
+    words
 }
 
-fn drawn(draw: impl Fn(&Drawing<'_>) -> Outcoming<()>) -> Option<String> {
-    let mut svg = String::new();
-    {
-        let area = SVGBackend::with_string(&mut svg, SIZE).into_drawing_area();
-        draw(&area).ok()?;
-        area.present().ok()?;
-    }
-    // Scales with the page; the page gives it its name.
-    let (width, height) = SIZE;
-    let head = format!("<svg width=\"{width}\" height=\"{height}\"");
-    Some(svg.replacen(&head, "<svg", 1))
+fn plain_unit(unit: &str) -> String {
+    if unit == "1" { String::new() } else { format!(" {}", pretty(unit)) }
 }
 
-/// Ticks at round numbers, written as short as they allow.
-#[derive(Clone)]
-struct Round {
-    from: f64,
-    to: f64,
-    /// Least distance of ticks.
-    least: f64,
-}
-
-impl Round {
-    /// Spacing 1, 2 or 5 times a power of ten with at most `most` ticks.
-    fn step(&self, most: usize) -> f64 {
-        let rough = (self.to - self.from).abs() / most.max(1) as f64;
-        let power = 10f64.powf(rough.log10().floor());
-        let factor = [1.0, 2.0, 5.0, 10.0].into_iter().find(|f| f * power >= rough * 0.999).unwrap_or(10.0);
-        (factor * power).max(self.least)
-    }
-}
-
-impl Ranged for Round {
-    type FormatOption = NoDefaultFormatting;
-    type ValueType = f64;
-
-    fn map(&self, value: &f64, limit: (i32, i32)) -> i32 {
-        let share = (value - self.from) / (self.to - self.from);
-        limit.0 + (share * f64::from(limit.1 - limit.0)).round() as i32
-    }
-
-    fn key_points<Hint: KeyPointHint>(&self, hint: Hint) -> Vec<f64> {
-        let step = self.step(hint.max_num_points().min(9));
-        if !(step.is_finite() && step > 0.0) {
-            return Vec::new();
-        }
-        let first = (self.from / step).ceil() as i64;
-        (0..20).map(|k| (first + k) as f64 * step).take_while(|v| *v <= self.to + 1e-9 * step).collect()
-    }
-
-    fn range(&self) -> std::ops::Range<f64> {
-        self.from..self.to
-    }
-}
-
-impl ValueFormatter<f64> for Round {
-    fn format_ext(&self, value: &f64) -> String {
-        tick(*value, self.from.abs().max(self.to.abs()))
-    }
-}
-
-/// A tick label: engineering powers of ten where the axis is large or small.
-fn tick(value: f64, largest: f64) -> String {
-    if largest == 0.0 || (1e-3..1e5).contains(&largest) {
-        let text = format!("{value:.6}");
-        let text = text.trim_end_matches('0').trim_end_matches('.');
-        return if text == "-0" { "0".into() } else { text.to_owned() };
-    }
-    let power = (largest.log10() / 3.0).floor() as i32 * 3;
-    let scaled = value / 10f64.powi(power);
-    let text = format!("{scaled:.4}");
-    let text = text.trim_end_matches('0').trim_end_matches('.');
-    if text == "0" || text == "-0" { "0".into() } else { format!("{text}e{power}") }
-}
-
-/// Ends of an axis with some air; a constant gets a band around it.
-fn padded(low: f64, high: f64) -> (f64, f64) {
-    let spread = high - low;
-    let size = low.abs().max(high.abs());
-    if spread <= 1e-12 * size || spread == 0.0 {
-        let half = if size > 0.0 { 0.1 * size } else { 1.0 };
-        return (low - half, high + half);
-    }
-    (low - 0.08 * spread, high + 0.12 * spread)
-}
-
-fn label(name: &str, unit: &str) -> String {
-    let name: String =
-        if name.chars().count() > 40 { name.chars().take(39).chain(['…']).collect() } else { name.into() };
-    if unit == "1" { name } else { format!("{name}  [{unit}]") }
-}
-
-fn text(size: u32) -> TextStyle<'static> {
-    ("sans-serif", size * S).into_font().color(&INK)
-}
-
-/// A quantity along the span with its extremes and what stands at the points.
-fn along(area: &Drawing<'_>, curve: &Curve, outcome: &Outcome) -> Outcoming<()> {
-    let points = || curve.pieces.iter().flatten().filter(|p| p.1.is_finite());
-    let low = points().map(|p| p.1).fold(f64::INFINITY, f64::min);
-    let high = points().map(|p| p.1).fold(f64::NEG_INFINITY, f64::max);
-    if low > high {
-        return Ok(());
-    }
-    let (bottom, top) = padded(low, high);
-    let (from, to) = outcome.span;
-    let mut chart = ChartBuilder::on(area)
-        .margin(14 * S)
-        .margin_right(26 * S)
-        .x_label_area_size(62 * S)
-        .y_label_area_size(86 * S)
-        .build_cartesian_2d(Round { from, to, least: 0.0 }, Round { from: bottom, to: top, least: 0.0 })?;
-    chart
-        .configure_mesh()
-        .light_line_style(TRANSPARENT)
-        .bold_line_style(GRID.stroke_width(S))
-        .axis_style(INK.stroke_width(S))
-        .label_style(text(14))
-        .axis_desc_style(text(15))
-        .set_all_tick_mark_size(5 * S)
-        .x_desc(label(&outcome.coordinate, &outcome.coordinate_unit))
-        .y_desc(label(&curve.name, &curve.unit))
-        .draw()?;
-    if bottom < 0.0 && top > 0.0 {
-        chart.draw_series([PathElement::new(vec![(from, 0.0), (to, 0.0)], INK.stroke_width(S))])?;
-    }
-    for feature in outcome.features.iter().filter(|f| f.x > from && f.x < to).take(200) {
-        let line = vec![(feature.x, bottom), (feature.x, top)];
-        chart.draw_series([PathElement::new(line, GRID.mix(0.9).stroke_width(S))])?;
-    }
-    for piece in &curve.pieces {
-        chart.draw_series(LineSeries::new(piece.iter().copied(), LINE.stroke_width(2 * S)))?;
-    }
+/// Text for a curve.
+fn curve_words(curve: &Curve, outcome: &Outcome) -> String {
+    let mut words = format!("{} along {}", curve.name, outcome.coordinate);
     for mark in &curve.marks {
-        chart.draw_series([Circle::new((mark.x, mark.value), 4 * S, MARK.filled())])?;
-        let right = mark.x > from + 0.72 * (to - from);
-        let above = mark.value > 0.5 * (low + high);
-        let pos = Pos::new(if right { HPos::Right } else { HPos::Left }, if above { VPos::Bottom } else { VPos::Top });
-        let shift = (if right { -8 * Z } else { 8 * Z }, if above { -6 * Z } else { 6 * Z });
-        let style = ("sans-serif", 14 * S).into_font().color(&MARK).pos(pos);
-        let words = format!("{} at {}", short(mark.value), short(mark.x));
-        let element = EmptyElement::at((mark.x, mark.value)) + Text::new(words, shift, style);
-        chart.draw_series([element])?;
+        words.push_str(&format!(
+            "; {} {}{} at {}{}",
+            mark.label,
+            few(mark.value, 5),
+            plain_unit(&curve.unit),
+            few(mark.x, 4),
+            plain_unit(&outcome.coordinate_unit)
+        ));
     }
-    let strip = chart.plotting_area().get_pixel_range();
-    features(area, outcome, (strip.0.start, strip.0.end), strip.1.end)
+    words.push('.');
+    words
 }
 
-/// Our marks for what stands at the points, in the strip below the axis.
-fn features(area: &Drawing<'_>, outcome: &Outcome, range: (i32, i32), base: i32) -> Outcoming<()> {
+fn decay_words(outcome: &Outcome) -> String {
+    let last = outcome.mesh.iter().flat_map(|r| r.decay.iter()).filter_map(|d| d.last());
+    let last = last.copied().fold(0.0, f64::max);
+    format!(
+        "Sizes of the Legendre coefficients on {} elements, one line per unknown; the largest last coefficient is {} \
+         of the largest of its unknown.",
+        outcome.mesh.len(),
+        few(last, 2)
+    )
+}
+
+fn residual_words(outcome: &Outcome) -> String {
+    let points = outcome.residual.iter().flat_map(|c| c.pieces.iter().flatten());
+    let most = points.map(|p| p.1.abs()).fold(0.0, f64::max);
+    format!("Relative residual of the equations along the span; at most {}.", few(most, 2))
+}
+
+fn share(value: f64, (low, high): (f64, f64)) -> f64 {
+    let part = (value / 2.0 - low / 2.0) / (high / 2.0 - low / 2.0);
+    if part.is_finite() { part.clamp(-1.0, 2.0) } else { 0.5 }
+}
+
+fn nothing(canvas: &mut Canvas<'_>, frame: &Frame) {
+    canvas.text("nothing to draw", (frame.x(0.5), frame.y(0.5)), Stand::Middle, SOFT);
+}
+
+fn rungs(canvas: &mut Canvas<'_>, frame: &Frame, y: &Decades) {
+    let (low, high) = y.ends;
+    for (tick, label) in &y.ticks {
+        frame.rung(canvas, f64::from(tick - low) / f64::from(high - low), label);
+    }
+}
+
+/// The coordinate's axis with the features of the span below it.
+fn along(canvas: &mut Canvas<'_>, frame: &Frame, outcome: &Outcome) -> Axis {
     let (from, to) = outcome.span;
-    for feature in outcome.features.iter().take(200) {
-        let share = ((feature.x - from) / (to - from)).clamp(0.0, 1.0);
-        let x = range.0 + (share * f64::from(range.1 - range.0)).round() as i32;
-        let y = base;
-        match feature.kind {
-            FeatureKind::Condition => {
-                let shape = [(-5, 10), (5, 10), (5, 3), (-5, 3)].map(|(a, b)| (x + a * Z, y + b * Z)).to_vec();
-                area.draw(&Polygon::new(shape, INK.filled()))?;
-            }
-            FeatureKind::Jump => {
-                area.draw(&PathElement::new(vec![(x, y - 22 * Z), (x, y)], MARK.stroke_width(2 * S)))?;
-                area.draw(&Polygon::new(vec![(x - 4 * Z, y - 7 * Z), (x + 4 * Z, y - 7 * Z), (x, y)], MARK.filled()))?;
-            }
-            FeatureKind::Release => {
-                area.draw(&Circle::new((x, y + 6 * Z), 5 * S, WHITE.filled()))?;
-                area.draw(&Circle::new((x, y + 6 * Z), 5 * S, INK.stroke_width(2 * S)))?;
-            }
-            FeatureKind::Break => {
-                area.draw(&PathElement::new(vec![(x, y), (x, y + 9 * Z)], SOFT.stroke_width(2 * S)))?;
-            }
+    let x = Axis::holding([from, to].into_iter(), 0.0, 9);
+    for feature in &outcome.features {
+        let at = frame.x(x.place(feature.x));
+        canvas.line((at, frame.top), (at, frame.bottom), 0.8, GRID);
+    }
+    for (value, label) in &x.ticks {
+        let at = frame.x(share(*value, x.ends));
+        canvas.line((at, frame.bottom), (at, frame.bottom + 4.0), 1.2, INK);
+        canvas.text(label, (at, frame.bottom + 34.0), Stand::Middle, INK);
+    }
+    for (place, kinds, _) in grouped(&outcome.features, outcome.span) {
+        let wide = 12.0 * (kinds.len() as f64 - 1.0);
+        for (n, kind) in kinds.iter().enumerate() {
+            canvas.mark(*kind, (frame.x(x.place(place)) + 12.0 * n as f64 - 0.5 * wide, frame.bottom + 15.0));
         }
     }
-    Ok(())
+    let title = x.title(&cut(&outcome.coordinate, 160.0), &outcome.coordinate_unit);
+    canvas.text(&title, (frame.right, HEIGHT - 13.0), Stand::End, INK);
+    kinds_key(canvas, &outcome.features, (8.0, HEIGHT - 13.0));
+    x
 }
 
-/// Decades from the smallest to the largest, at most 20 of them.
-fn decades(values: impl Iterator<Item = f64>) -> (f64, f64) {
-    let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
-    for v in values.filter(|v| *v > 0.0 && v.is_finite()) {
-        low = low.min(v.log10());
-        high = high.max(v.log10());
-    }
-    if low > high {
-        return (-17.0, 0.0);
-    }
-    let high = high.ceil().max(low.floor() + 1.0);
-    (low.floor().max(high - 20.0), high)
-}
-
-fn residual(area: &Drawing<'_>, curve: &Curve, outcome: &Outcome) -> Outcoming<()> {
-    let (low, high) = decades(curve.pieces.iter().flatten().map(|p| p.1));
-    let (from, to) = outcome.span;
-    let mut chart = ChartBuilder::on(area)
-        .margin(14 * S)
-        .margin_right(26 * S)
-        .x_label_area_size(56 * S)
-        .y_label_area_size(86 * S)
-        .build_cartesian_2d(Round { from, to, least: 0.0 }, Round { from: low, to: high, least: 1.0 })?;
-    chart
-        .configure_mesh()
-        .light_line_style(TRANSPARENT)
-        .bold_line_style(GRID.stroke_width(S))
-        .axis_style(INK.stroke_width(S))
-        .label_style(text(14))
-        .axis_desc_style(text(15))
-        .set_all_tick_mark_size(5 * S)
-        .x_desc(label(&outcome.coordinate, &outcome.coordinate_unit))
-        .y_desc("residual, relative")
-        .y_label_formatter(&|v| format!("1e{v:.0}"))
-        .draw()?;
-    for piece in &curve.pieces {
-        let points = piece.iter().map(|(x, r)| (*x, r.max(1e-300).log10().max(low)));
-        chart.draw_series(LineSeries::new(points, LINE.stroke_width(S)))?;
-    }
-    Ok(())
-}
-
-fn decay(area: &Drawing<'_>, outcome: &Outcome) -> Outcoming<()> {
-    let all = || outcome.mesh.iter().flat_map(|row| row.decay.iter().flatten().copied());
-    let (low, high) = decades(all());
-    let total: usize = outcome.mesh.iter().map(|row| row.nodes + 1).sum();
-    let mut chart = ChartBuilder::on(area)
-        .margin(14 * S)
-        .margin_right(26 * S)
-        .x_label_area_size(56 * S)
-        .y_label_area_size(86 * S)
-        .build_cartesian_2d(
-            Round { from: 0.0, to: total.max(2) as f64, least: 1.0 },
-            Round { from: low, to: high, least: 1.0 },
-        )?;
-    chart
-        .configure_mesh()
-        .disable_x_mesh()
-        .light_line_style(TRANSPARENT)
-        .bold_line_style(GRID.stroke_width(S))
-        .axis_style(INK.stroke_width(S))
-        .label_style(text(14))
-        .axis_desc_style(text(15))
-        .x_labels(0)
-        .set_all_tick_mark_size(5 * S)
-        .x_desc("degree, element after element")
-        .y_desc("coefficient, relative")
-        .y_label_formatter(&|v| format!("1e{v:.0}"))
-        .draw()?;
-    let mut start = 0;
-    for row in &outcome.mesh {
-        let edge = start as f64;
-        chart.draw_series([PathElement::new(vec![(edge, low), (edge, high)], GRID.stroke_width(S))])?;
-        for (u, coefficients) in row.decay.iter().enumerate() {
-            let colour = SERIES[u % SERIES.len()];
-            let at = |(k, c): (usize, &f64)| (edge + 0.5 + k as f64, c.max(1e-300).log10().max(low));
-            chart.draw_series(LineSeries::new(coefficients.iter().enumerate().map(at), colour.stroke_width(S)))?;
+/// What the marks mean, for the kinds that occur.
+fn kinds_key(canvas: &mut Canvas<'_>, features: &[Feature], (mut x, y): (f64, f64)) {
+    for kind in [FeatureKind::Condition, FeatureKind::Jump, FeatureKind::Release, FeatureKind::Break] {
+        if features.iter().any(|f| f.kind == kind) {
+            canvas.mark(kind, (x + 6.0, y));
+            canvas.text(kind_name(kind), (x + 17.0, y), Stand::Begin, SOFT);
+            x += 17.0 + width(kind_name(kind)) + 8.0;
         }
-        start += row.nodes + 1;
     }
-    for (u, name) in outcome.decay_names.iter().enumerate().take(12) {
-        let style = ("sans-serif", 14 * S).into_font().color(&SERIES[u % SERIES.len()]);
-        let place = (Z * (110 + 110 * (u as i32 % 6)), Z * (14 + 16 * (u as i32 / 6)));
-        area.draw(&Text::new(label(name, "1"), place, style))?;
+}
+
+/// The word for a kind of feature.
+fn kind_name(kind: FeatureKind) -> &'static str {
+    match kind {
+        FeatureKind::Condition => "condition",
+        FeatureKind::Jump => "jump",
+        FeatureKind::Release => "release",
+        FeatureKind::Break => "break",
     }
-    Ok(())
+}
+
+/// Features at one place: the kinds once each, the names once each (breaks have none worth printing).
+type Group = (f64, Vec<FeatureKind>, Vec<String>);
+
+fn grouped(features: &[Feature], (from, to): (f64, f64)) -> Vec<Group> {
+    let near = 1e-9 * (to - from).abs();
+    let mut sorted: Vec<&Feature> = features.iter().filter(|f| f.x.is_finite()).collect();
+    sorted.sort_by(|a, b| a.x.total_cmp(&b.x));
+    let mut groups: Vec<Group> = Vec::new();
+    for feature in sorted {
+        if groups.last().is_none_or(|g| (g.0 - feature.x).abs() > near) {
+            groups.push((feature.x, Vec::new(), Vec::new()));
+        }
+        let Some((_, kinds, names)) = groups.last_mut() else { continue };
+        if !kinds.contains(&feature.kind) {
+            kinds.push(feature.kind);
+        }
+        if feature.kind != FeatureKind::Break && !names.contains(&feature.label) {
+            names.push(feature.label.clone());
+        }
+    }
+    // A break is implied where anything else stands.
+    for (_, kinds, _) in &mut groups {
+        if kinds.len() > 1 {
+            kinds.retain(|k| *k != FeatureKind::Break);
+        }
+    }
+    groups
 }
