@@ -1,6 +1,8 @@
 //! Helpers shared by the integration tests.
 #![allow(dead_code)]
 
+pub mod sheets;
+
 use spanwise::model::Side;
 use spanwise::problem::{Number, Problem};
 use spanwise::solve::{Settings, Solution};
