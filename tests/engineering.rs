@@ -85,7 +85,7 @@ fn second_route_agrees_on_every_linear_sheet() {
             continue;
         }
         let solution = sheet.solve(None).unwrap_or_else(|e| panic!("{name}: {e}"));
-        let field = nodal(sheet.model(), &solution.base().mesh).unwrap_or_else(|e| panic!("{name}: {e}"));
+        let field = nodal(&sheet.model(), &solution.base().mesh).unwrap_or_else(|e| panic!("{name}: {e}"));
         for (asked, other) in sheet.evaluate(&solution).iter().zip(sheet.plain_numbers(&field)) {
             let (value, other) = (asked.value.as_ref().expect("a value").value, other.expect("a value"));
             // The differentiation matrices lose digits; places lose twice as many.

@@ -6,7 +6,7 @@ mod common;
 
 use common::sheets::{beam, check, read};
 use spanwise::model::{Batch, ConditionValue, Linearised, Model};
-use spanwise::sheet::{self, Sheet};
+use spanwise::sheet::{self, Reading, Sheet, read_with};
 
 #[test]
 fn kinks_of_data_are_breaks() {
@@ -337,5 +337,68 @@ fn an_equation_may_be_turned_around_and_scaled() {
                 assert!((a.value - b.value).abs() <= a.error + b.error, "{a:?} {b:?}\n{altered}");
             }
         }
+    }
+}
+
+/// Data that are held: other values without reading again, exact derivatives by them, and what they decide is known.
+#[test]
+fn held_data_are_constants_behind_the_unknown_ones() {
+    let text = r#"
+[given]
+L = "2 m"
+d = "30 mm"
+E = "70 GPa"
+I = "pi*d^4/64"
+q = "1.7 kN/m"
+[span]
+x = ["0 m", "L"]
+[unknowns]
+y = "mm"
+[equations]
+bending = "(E*I*y'')'' = q"
+[conditions]
+clamped = ["y(0 m) = 0", "y'(0 m) = 0"]
+free = ["y''(L) = 0", "y'''(L) = 0"]
+[report]
+tip = "y(L) in mm"
+stiffness = "E*I in N*m^2"
+"#;
+    let sheet = read_with(text, &Reading { held: &["d", "q"], ..Default::default() }).expect("sound");
+    assert!(!sheet.moves_points());
+    assert_eq!(
+        sheet.held().iter().map(|h| (h.name.as_str(), h.value)).collect::<Vec<_>>(),
+        [("d", 0.03), ("q", 1700.0)]
+    );
+    assert_eq!((sheet.open_model().layout().constants(), sheet.model().layout().constants()), (2, 0));
+    // Deflection of a uniform cantilever, q L^4/(8 E I) (any handbook of strength of materials).
+    for (d, q) in [(0.03, 1700.0), (0.05, 423.0)] {
+        let solution = sheet.solve_held(&[d, q], None).expect("regular");
+        let exact = q * 16.0 / (8.0 * 70e9 * std::f64::consts::PI * d.powi(4) / 64.0);
+        let found: Vec<_> = sheet.evaluate(&solution).iter().map(|a| a.value.clone().expect("a value")).collect();
+        assert!((found[0].value - exact).abs() <= found[0].error && found[0].error < 1e-11 * exact, "{:?}", found[0]);
+        assert!((found[1].value * 8.0 * exact / 16.0 - q).abs() < 1e-12 * q, "{:?}", found[1]);
+    }
+    // dF/dq = -1 where F = M'' - q, and dF/dd of the definition of M is 4/d E I y''.
+    let model = sheet.open_model();
+    let layout = model.layout();
+    let mut out = Linearised::default();
+    out.reset(layout, 1);
+    let jets = vec![2.0; layout.jets()];
+    let batch = Batch { piece: 0, x: &[0.7], jets: &jets, constants: &[0.03, 1700.0] };
+    model.equations(&batch, &mut out).expect("finite");
+    assert_eq!(out.constants[1], -1.0);
+    let by_diameter = 70e9 * std::f64::consts::PI * 0.03f64.powi(3) / 16.0 * 2.0;
+    assert!((out.constants[2].abs() / by_diameter - 1.0).abs() < 1e-14, "{:?}", out.constants);
+    // The length decides where the span ends.
+    assert!(read_with(text, &Reading { held: &["L"], ..Default::default() }).expect("sound").moves_points());
+    let other = read_with(text, &Reading { replaced: &[("L", "3 m")], ..Default::default() }).expect("sound");
+    assert_eq!(other.model().points(), [0.0, 3.0]);
+    for reading in [
+        Reading { held: &["nothing"], ..Default::default() },
+        Reading { held: &["y"], ..Default::default() },
+        Reading { replaced: &[("q", "1.7 kN")], ..Default::default() },
+        Reading { replaced: &[("z", "1")], ..Default::default() },
+    ] {
+        assert_eq!(read_with(text, &reading).expect_err("refused").len(), 1, "{reading:?}");
     }
 }

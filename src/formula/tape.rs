@@ -80,6 +80,8 @@ pub struct Tape {
     jets: Vec<(u16, u8)>,
     rows: Vec<usize>,
     constants: Vec<u16>,
+    /// Value and error bound of each where a run gives none: held constants as written.
+    defaults: Vec<(f64, f64)>,
     slots: Vec<u32>,
     tests: Vec<PieceTest>,
 }
@@ -99,7 +101,7 @@ pub struct TapeInputs<'a> {
     /// Derivatives of the unknowns, \[rows\]\[n\], node index running fastest; rows as set by [`Tape::bind`], at
     /// first in the order of [`Tape::jets`].
     pub jets: &'a [f64],
-    /// All unknown constants.
+    /// All unknown constants, then the held ones; without these, those have their values as written.
     pub constants: &'a [f64],
     /// All slots.
     pub slots: &'a [f64],
@@ -114,7 +116,7 @@ pub struct ScalarInputs<'a, T> {
     pub x: T,
     /// Derivatives of the unknowns, \[rows\].
     pub jets: &'a [T],
-    /// All unknown constants.
+    /// All unknown constants, then the held ones; without these, those have their values as written.
     pub constants: &'a [T],
     /// All slots.
     pub slots: &'a [T],
@@ -133,7 +135,7 @@ impl Tape {
         &self.jets
     }
 
-    /// Unknown constants that are read.
+    /// Constants that are read.
     pub fn constants(&self) -> &[u16] {
         &self.constants
     }
@@ -213,7 +215,9 @@ impl Tape {
     fn load<T: Number>(&self, uniforms: &mut Vec<T>, constants: &[T], slots: &[T], tests: &[bool]) {
         uniforms.clear();
         uniforms.extend(self.numbers.iter().map(|(value, error)| T::number(*value, *error)));
-        uniforms.extend(self.constants.iter().map(|c| constants[usize::from(*c)]));
+        let given = self.constants.iter().map(|c| constants.get(usize::from(*c)).copied());
+        let defaults = self.defaults.iter().map(|(value, error)| T::number(*value, *error));
+        uniforms.extend(given.zip(defaults).map(|(given, default)| given.unwrap_or(default)));
         uniforms.extend(self.slots.iter().map(|s| slots[*s as usize]));
         uniforms.resize(self.uniforms, T::number(0.0, 0.0));
         for instruction in &self.uniform {
@@ -350,6 +354,7 @@ impl<'a> Compiler<'a> {
             jets: Vec::new(),
             rows: Vec::new(),
             constants: Vec::new(),
+            defaults: Vec::new(),
             slots: Vec::new(),
             tests: Vec::new(),
         };
@@ -449,6 +454,7 @@ impl<'a> Compiler<'a> {
         for id in nodes {
             if let Node::Constant(c) = self.graph.node(*id) {
                 self.tape.constants.push(c);
+                self.tape.defaults.push(self.graph.held(c).map_or(missing, |held| (held.value, held.error)));
                 self.places.insert(*id, Source::Uniform(self.tape.uniforms));
                 self.tape.uniforms += 1;
             }

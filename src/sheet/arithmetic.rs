@@ -63,7 +63,7 @@ impl Lowerer<'_> {
         if typed.dimension == Some(Dimension::TEMPERATURE)
             && self.single_temperature(at, (e, typed)).is_some()
             && typed.absolute.is_temperature()
-            && let Some(value) = self.number_of(typed.node)
+            && let Some(value) = self.shown_number(typed.node)
         {
             let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
             if matches!(e.kind, Kind::Number { .. }) {
@@ -93,7 +93,7 @@ impl Lowerer<'_> {
 
     /// The value of an expression that is a number without a unit.
     fn pure_number(&self, typed: Typed) -> Option<f64> {
-        typed.dimension.is_none_or(Dimension::is_none).then(|| self.number_of(typed.node))?
+        typed.dimension.is_none_or(Dimension::is_none).then(|| self.shown_number(typed.node))?
     }
 
     pub(super) fn binary(
@@ -135,7 +135,7 @@ impl Lowerer<'_> {
                 Some(Typed { node, dimension, absolute })
             }
             Operator::Divide => {
-                if self.number_of(right.node) == Some(0.0) {
+                if self.shown_number(right.node) == Some(0.0) {
                     let text = at.text.get(b.span.clone()).unwrap_or("").trim().to_owned();
                     return self.fault("division by zero", at, &b.span, format!("division by zero: `{text}` is 0"), "");
                 }

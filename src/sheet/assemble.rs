@@ -7,7 +7,7 @@ use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
 use super::reduce::Reduction;
 use super::source::{self, Given, Located, MOST_BYTES, Source};
-use super::{Item, Sheet, Wanted};
+use super::{HeldDatum, Item, Reading, Sheet, Wanted};
 use crate::formula::graph::{Node, NodeId};
 use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::{Condition, Layout};
@@ -19,15 +19,16 @@ use std::ops::Range;
 const MOST_UNKNOWNS: usize = 200;
 
 /// Reads a sheet.
-pub(super) fn assemble(text: &str) -> Result<Sheet, Vec<Fault>> {
+pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<Fault>> {
     let mut faults = Faults::default();
     if text.len() > MOST_BYTES {
         let message = format!("the sheet has {} bytes; at most {MOST_BYTES} are read", text.len());
         faults.add("too large", 0..0, message, Some("measured data belong into files of their own".into()));
         return Err(faults.finish(text));
     }
-    let source = source::read(text, &mut faults);
-    let sheet = Assembler::new(&source, &mut faults).run();
+    let mut source = source::read(text, &mut faults);
+    source.replace(reading.replaced, &mut faults);
+    let sheet = Assembler::new(&source, reading.held, &mut faults).run();
     if sheet.is_none() && faults.is_empty() {
         faults.add("not understood", 0..0, "the sheet is not understood, and it is not known why", None);
     }
@@ -39,6 +40,8 @@ pub(super) fn assemble(text: &str) -> Result<Sheet, Vec<Fault>> {
 
 pub(super) struct Assembler<'s, 'f> {
     pub source: &'s Source,
+    /// Names of the data to be held.
+    held: &'s [&'s str],
     pub lowerer: Lowerer<'f>,
 }
 
@@ -54,8 +57,8 @@ pub(super) struct Carrying {
 }
 
 impl<'s, 'f> Assembler<'s, 'f> {
-    fn new(source: &'s Source, faults: &'f mut Faults) -> Self {
-        Self { source, lowerer: Lowerer::new(faults) }
+    fn new(source: &'s Source, held: &'s [&'s str], faults: &'f mut Faults) -> Self {
+        Self { source, held, lowerer: Lowerer::new(faults) }
     }
 
     fn run(mut self) -> Option<Sheet> {
@@ -135,9 +138,21 @@ impl<'s, 'f> Assembler<'s, 'f> {
         for (name, span) in &source.faulty {
             add(&mut self.lowerer, name, span, Meaning::Faulty);
         }
+        let first = self.lowerer.constants.len() as u16;
+        self.lowerer.graph.hold(first, self.held.len());
+        for name in self.held {
+            if !source.given.iter().any(|entry| entry.name == *name) {
+                let message = format!("`{name}` is not among the data of this sheet");
+                self.lowerer.faults.add("held", 0..0, message, Some("only names of [given] can be held".into()));
+            }
+        }
         for entry in &source.given {
+            let held = self.held.iter().position(|name| *name == entry.name).map(|k| first + k as u16);
             let meaning = match &entry.value {
-                Given::Formula(at) => self.lowerer.parse(at).map(Meaning::Formula),
+                Given::Formula(at) => self.lowerer.parse(at).map(|formula| match held {
+                    Some(constant) => Meaning::Held(constant, formula),
+                    None => Meaning::Formula(formula),
+                }),
                 Given::Pieces { pieces, otherwise } => self.parse_pieces(pieces, otherwise.as_ref()),
             };
             add(&mut self.lowerer, &entry.name, &entry.name_span, meaning.unwrap_or(Meaning::Faulty));
@@ -267,7 +282,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         for entry in &self.source.given {
             let Some(name) = syntax::name(&entry.name) else { continue };
             let (at, tree) = match self.lowerer.meanings.get(&name) {
-                Some(Meaning::Formula(f)) => (f.at.clone(), f.tree.clone()),
+                Some(Meaning::Formula(f) | Meaning::Held(_, f)) => (f.at.clone(), f.tree.clone()),
                 Some(Meaning::Pieces(pieces, _)) => match pieces.first() {
                     Some([_, _, value]) => (value.at.clone(), value.tree.clone()),
                     None => continue,
@@ -276,7 +291,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             };
             let named = Expression { kind: Kind::Name(name), span: tree.span };
             let Some(typed) = self.lowerer.lower(&at, &named) else { continue };
-            if let Some(value) = self.lowerer.number_of(typed.node)
+            if let Some(value) = self.lowerer.shown_number(typed.node)
                 && !value.is_finite()
             {
                 let message = format!("`{}` is not finite", entry.name);
@@ -351,6 +366,20 @@ impl<'s, 'f> Assembler<'s, 'f> {
             wanted.push(Wanted { label: entry.name.clone(), formula, node: typed.node, unit });
         }
         wanted
+    }
+
+    /// The data held, in the order of their constants.
+    fn held_data(&mut self) -> Vec<HeldDatum> {
+        let first = self.lowerer.constants.len() as u16;
+        let mut data = Vec::with_capacity(self.held.len());
+        for (k, name) in self.held.iter().enumerate() {
+            let typed = syntax::name(name).and_then(|name| self.lowerer.named(&name));
+            let value = self.lowerer.graph.held(first + k as u16).map_or(f64::NAN, |held| held.value);
+            let unit = Unit::si(typed.and_then(|t| t.dimension).unwrap_or_default());
+            let unit = self.written_unit(name).unwrap_or(unit);
+            data.push(HeldDatum { name: (*name).to_owned(), unit, value });
+        }
+        data
     }
 
     /// The unit of a bare value of an unknown.
@@ -442,7 +471,8 @@ impl<'s, 'f> Assembler<'s, 'f> {
             placed.push(Placed { name, places: vec![place], formula: slot, reads: vec![(0, run.unknown, 0)] });
         }
         let orders: Vec<usize> = orders.iter().map(|m| usize::from(*m)).collect();
-        let layout = Layout::new(&orders, self.lowerer.constants.len());
+        let held = self.held_data();
+        let layout = Layout::new(&orders, self.lowerer.constants.len() + held.len());
         let linear = self.linear(&nodes, &placed, [points[0], points[points.len() - 1]]);
         let statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
         let [limits, constant_limits] = self.limits();
@@ -455,7 +485,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             equations: Equations::new(graph, &nodes, &layout, &points),
             conditions: placed.iter().map(|p| Condition { name: p.name.clone(), places: p.places.clone() }).collect(),
             ties: placed.iter().map(|p| Tie::new(graph, p.formula, &p.reads, &layout)).collect(),
-            linear,
+            linear: linear && held.is_empty(),
             releases,
             unknown_names: statement
                 .carried
@@ -477,7 +507,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let unknowns = orders.len();
         let curves = self.curves(unknowns, &points);
         let balances = self.balances(&equations, &orders, unknowns, &points);
-        let Lowerer { mut graph, mut functionals, warnings, reduction, .. } = self.lowerer;
+        let Lowerer { mut graph, mut functionals, warnings, reduction, moves, .. } = self.lowerer;
         for functional in &mut functionals {
             functional.expression = reduction.reduce(&mut graph, functional.expression);
         }
@@ -490,6 +520,8 @@ impl<'s, 'f> Assembler<'s, 'f> {
             statement,
             warnings,
             model,
+            held,
+            moves_points: moves.get(),
             report,
             curves,
             balances,

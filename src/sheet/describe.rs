@@ -3,7 +3,7 @@
 use super::assemble::{Assembler, Carrying};
 use super::carry::Flux;
 use super::condition::Read;
-use super::lower::{Formula, Meaning};
+use super::lower::Meaning;
 use super::source::Given;
 use super::statement::{Datum, Feature, Line, Role, Statement};
 use crate::formula::graph::NodeId;
@@ -163,15 +163,9 @@ impl Assembler<'_, '_> {
                 }
             };
             let node = typed.map(|t| t.node);
-            let value = node.and_then(|n| self.lowerer.number_of(n)).zip(typed).map(|(v, t)| {
+            let value = node.and_then(|n| self.lowerer.shown_number(n)).zip(typed).map(|(v, t)| {
                 let dimension = t.dimension.unwrap_or_default();
-                let written = match self.lowerer.meanings.get(&name) {
-                    Some(Meaning::Formula(Formula {
-                        tree: Expression { kind: Kind::Number { unit, .. }, .. },
-                        ..
-                    })) => unit.clone(),
-                    _ => None,
-                };
+                let written = self.written_unit(&name);
                 (v, written.unwrap_or_else(|| Unit::si(dimension)))
             });
             let remark = node.map_or("", |n| {
@@ -189,16 +183,29 @@ impl Assembler<'_, '_> {
         data
     }
 
+    /// The unit in which a plain datum is written.
+    pub(super) fn written_unit(&self, name: &str) -> Option<Unit> {
+        let (Meaning::Formula(formula) | Meaning::Held(_, formula)) =
+            self.lowerer.meanings.get(&syntax::name(name)?)?
+        else {
+            return None;
+        };
+        match &formula.tree.kind {
+            Kind::Number { unit, .. } => unit.clone(),
+            _ => None,
+        }
+    }
+
     pub(super) fn features(&mut self, reads: &[Read], points: &[f64]) -> Vec<Feature> {
         let mut features: Vec<Feature> = Vec::new();
         for read in reads {
             let places: Vec<f64> = match &read.release {
-                Some((_, point, _)) => self.lowerer.number_of(*point).into_iter().collect(),
+                Some((_, point, _)) => self.lowerer.shown_number(*point).into_iter().collect(),
                 None => {
                     let slots = read.node.map(|n| self.lowerer.all_slots(&[n])).unwrap_or_default();
                     let points = slots.iter().flat_map(|s| self.lowerer.functionals[*s as usize].points.clone());
                     let points: Vec<NodeId> = points.collect();
-                    points.into_iter().filter_map(|p| self.lowerer.number_of(p)).collect()
+                    points.into_iter().filter_map(|p| self.lowerer.shown_number(p)).collect()
                 }
             };
             let role = match (&read.release, read.node) {

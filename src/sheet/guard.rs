@@ -127,7 +127,7 @@ impl Assembler<'_, '_> {
         let layout = model.layout();
         let (points, d) = (model.points(), layout.unknowns());
         let jets = vec![1.0; 3 * layout.jets()];
-        let constants = vec![1.0; layout.constants()];
+        let constants = vec![1.0; self.lowerer.constants.len()];
         let mut out = Linearised::default();
         for piece in 0..points.len() - 1 {
             let [a, b] = [points[piece], points[piece + 1]];

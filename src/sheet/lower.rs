@@ -11,8 +11,10 @@ use super::functional::Functional;
 use super::reduce::Reduction;
 use super::source::Located;
 use crate::formula::graph::{Graph, NodeId};
+use crate::formula::number::Rounded;
 use crate::formula::syntax::{Expression, Kind, Span};
 use crate::unit::{Dimension, Unit};
+use std::cell::Cell;
 use std::collections::{HashMap, HashSet};
 use std::ops::Range;
 
@@ -57,6 +59,8 @@ pub(super) enum Meaning {
     Function(u16),
     /// An unknown constant.
     Constant(u16),
+    /// A datum that is held: the index of its constant, and its value as written.
+    Held(u16, Formula),
     Coordinate,
     /// Declared, but a fault was already noted there.
     Faulty,
@@ -115,6 +119,8 @@ pub(super) struct Lowerer<'f> {
     pub limits: Vec<(NodeId, Range<usize>)>,
     /// Stretches covered by data by pieces: they must reach over the whole span.
     pub covers: Vec<Cover>,
+    /// Whether a held datum decided about points, exponents or the like: with another value the sheet is another one.
+    pub moves: Cell<bool>,
     /// Names that were read as units somewhere.
     likened: HashSet<String>,
     /// Whether the graph has been found full.
@@ -141,6 +147,7 @@ impl<'f> Lowerer<'f> {
             reporting: false,
             limits: Vec::new(),
             covers: Vec::new(),
+            moves: Cell::new(false),
             likened: HashSet::new(),
             overfull: false,
             states: [HashMap::new(), HashMap::new()],
@@ -173,8 +180,16 @@ impl<'f> Lowerer<'f> {
         Some(Typed { node, dimension: Some(dimension), absolute: Absolute::NONE })
     }
 
-    /// The value of a node that depends on nothing.
+    /// The value of a node that depends on nothing, to decide something by.
     pub fn number_of(&self, node: NodeId) -> Option<f64> {
+        if self.graph.depends_on(node).held {
+            self.moves.set(true);
+        }
+        self.shown_number(node)
+    }
+
+    /// The same where nothing is decided by it.
+    pub fn shown_number(&self, node: NodeId) -> Option<f64> {
         let free = self.graph.depends_on(node);
         if free.varies() || free.unknowns() || self.graph.has_derivative(node) {
             return None;
@@ -318,8 +333,23 @@ impl<'f> Lowerer<'f> {
                 let (dimension, absolute) = (unit.dimension, unknown_count(unit));
                 Some(Typed { node: self.graph.constant(index), dimension: Some(dimension), absolute })
             }
-            meaning @ (Meaning::Formula(_) | Meaning::Pieces(..)) => self.defined(at, name, span, &meaning),
+            meaning @ (Meaning::Formula(_) | Meaning::Pieces(..) | Meaning::Held(..)) => {
+                self.defined(at, name, span, &meaning)
+            }
         }
+    }
+
+    /// A held datum as the constant that it is.
+    fn hold(&mut self, name: &str, constant: u16, formula: &Formula) -> Option<Typed> {
+        let Formula { at, tree } = formula;
+        let typed = self.lower(at, tree)?;
+        let Some(value) = self.shown_number(typed.node) else {
+            let message = format!("`{name}` is no plain datum: it varies along the span or holds unknowns");
+            return self.fault("held", at, &tree.span, message, "what is to be changed must be one number");
+        };
+        let rounded = self.graph.rounded(typed.node).unwrap_or_else(|| Rounded::exact(value));
+        self.graph.set_held(constant, rounded);
+        Some(Typed { node: self.graph.constant(constant), ..typed })
     }
 
     /// Notes a name that is not defined, once however often it is used.
@@ -360,6 +390,7 @@ impl<'f> Lowerer<'f> {
         self.stack.push(name.to_owned());
         let typed = match meaning {
             Meaning::Formula(formula) => self.lower(&formula.at, &formula.tree),
+            Meaning::Held(constant, formula) => self.hold(name, *constant, formula),
             Meaning::Pieces(pieces, otherwise) => self.pieces(name, pieces, otherwise.as_ref()),
             _ => None,
         };

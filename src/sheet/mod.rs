@@ -38,7 +38,7 @@ pub use statement::{Datum, Feature, Line, Role, Statement};
 use crate::error::{Error, Result};
 use crate::field::Field;
 use crate::formula::graph::{Graph, NodeId};
-use crate::model::{Profile, Side};
+use crate::model::{Held, Profile, Side};
 use crate::quantity::Estimate;
 use crate::solve::Solution;
 use crate::unit::Unit;
@@ -57,6 +57,8 @@ pub struct Sheet {
     /// Warnings: readings that may not be what was meant.
     pub warnings: Vec<String>,
     model: SheetModel,
+    held: Vec<HeldDatum>,
+    moves_points: bool,
     report: Vec<Item>,
     curves: Vec<CurveItem>,
     balances: Vec<Balance>,
@@ -159,13 +161,90 @@ pub struct Closure {
 /// # Ok::<(), spanwise::error::Error>(())
 /// ```
 pub fn read(text: &str) -> std::result::Result<Sheet, Vec<Fault>> {
-    assemble::assemble(text)
+    read_with(text, &Reading::default())
+}
+
+/// How a sheet is to be read otherwise than it stands.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Reading<'a> {
+    /// Data of `[given]` to be held: their values may be changed, and derivatives by them exist.
+    pub held: &'a [&'a str],
+    /// Data of `[given]` with another formula in place of the one written.
+    pub replaced: &'a [(&'a str, &'a str)],
+}
+
+/// A datum whose value may be changed.
+#[derive(Debug, Clone, PartialEq)]
+pub struct HeldDatum {
+    /// Its name.
+    pub name: String,
+    /// The unit that it is written in.
+    pub unit: Unit,
+    /// Its value as written, in SI.
+    pub value: f64,
+}
+
+/// Reads and checks a sheet, with some data held or replaced.
+///
+/// # Errors
+/// As [`read`]; names that are not in `[given]`, or not plain numbers where they are to be held.
+///
+/// # Example
+/// ```
+/// use spanwise::sheet::{Reading, read_with};
+/// let text = r#"
+/// [given]
+/// k = "0.8 W/(m K)"
+/// [span]
+/// x = ["0 m", "2 m"]
+/// [unknowns]
+/// T = "degC"
+/// [equations]
+/// conduction = "(k*T')' = 0"
+/// [conditions]
+/// left = "T(0 m) = 20 degC"
+/// right = "T(2 m) = 60 degC"
+/// [report]
+/// flux = "k*T'(0 m) in W/m^2"
+/// "#;
+/// let sheet = read_with(text, &Reading { held: &["k"], ..Default::default() }).expect("no faults");
+/// let flux = |k: f64| {
+///     let solution = sheet.solve_held(&[k], None).expect("a regular problem");
+///     sheet.evaluate(&solution).remove(0).printed().expect("a value").value
+/// };
+/// assert!((flux(0.8) - 16.0).abs() < 1e-12 && (flux(2.0) - 40.0).abs() < 1e-12);
+/// ```
+pub fn read_with(text: &str, reading: &Reading<'_>) -> std::result::Result<Sheet, Vec<Fault>> {
+    assemble::assemble(text, reading)
 }
 
 impl Sheet {
-    /// The problem for the engine.
-    pub fn model(&self) -> &SheetModel {
+    /// The problem for the engine, with data held as written.
+    pub fn model(&self) -> Held<'_> {
+        self.model_at(self.held.iter().map(|held| held.value).collect())
+    }
+
+    /// The same with other values (SI) of the data held. A problem whose points they move must be read again instead
+    /// ([`Sheet::moves_points`]).
+    pub fn model_at(&self, values: Vec<f64>) -> Held<'_> {
+        Held::new(&self.model, values, self.statement.linear)
+    }
+
+    /// The problem with held data left open: constants behind the unknown ones, in the order of [`Sheet::held`]. It has as
+    /// many conditions fewer than unknowns.
+    pub fn open_model(&self) -> &SheetModel {
         &self.model
+    }
+
+    /// The data held.
+    pub fn held(&self) -> &[HeldDatum] {
+        &self.held
+    }
+
+    /// Whether a datum held decides about points, exponents or the like, so that with another value the sheet must be read
+    /// again.
+    pub fn moves_points(&self) -> bool {
+        self.moves_points
     }
 
     /// Solves the sheet to the accuracy asked.
@@ -174,7 +253,19 @@ impl Sheet {
     /// Those of [`crate::solve::boundary`].
     pub fn solve(&self, watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
         let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
-        crate::solve::boundary(&self.model, &settings)
+        crate::solve::boundary(&self.model(), &settings)
+    }
+
+    /// The same with other values (SI) of the data held, which the fields of the solution carry behind the unknown
+    /// constants.
+    ///
+    /// # Errors
+    /// Those of [`crate::solve::boundary`].
+    pub fn solve_held(&self, values: &[f64], watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
+        let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
+        let mut solution = crate::solve::boundary(&self.model_at(values.to_vec()), &settings)?;
+        solution.carry(values);
+        Ok(solution)
     }
 
     /// What is asked: label, formula, unit.

@@ -18,6 +18,11 @@ pub(super) struct Equations {
     pool: Mutex<Vec<(Workspace, Vec<f64>)>>,
 }
 
+/// Unknown constants of a formula, then held ones.
+fn constants(graph: &Graph, node: NodeId) -> impl Iterator<Item = u16> + use<> {
+    graph.constants_of(node).into_iter().chain(graph.held_of(node))
+}
+
 #[derive(Debug, Clone, Copy)]
 enum Output {
     Residual(usize),
@@ -35,7 +40,7 @@ impl Equations {
                 nodes.push(graph.partial(*equation, Variable::Jet { unknown, order }));
                 outputs.push(Output::Jet(e, layout.jet(usize::from(unknown), usize::from(order))));
             }
-            for constant in graph.constants_of(*equation) {
+            for constant in constants(graph, *equation) {
                 nodes.push(graph.partial(*equation, Variable::Constant(constant)));
                 outputs.push(Output::Constant(e, usize::from(constant)));
             }
@@ -105,7 +110,7 @@ impl Tie {
         for slot in 0..reads.len() {
             nodes.push(graph.partial(formula, Variable::Slot(slot as u32)));
         }
-        let constants: Vec<usize> = graph.constants_of(formula).into_iter().map(usize::from).collect();
+        let constants: Vec<usize> = constants(graph, formula).map(usize::from).collect();
         for constant in &constants {
             nodes.push(graph.partial(formula, Variable::Constant(*constant as u16)));
         }

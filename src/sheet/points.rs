@@ -133,6 +133,9 @@ impl Assembler<'_, '_> {
         own.extend(wanted.iter().map(|w| w.node));
         own.extend(self.drawn().into_iter().map(|d| d.node));
         for test in self.lowerer.graph.piece_tests(&own) {
+            if self.lowerer.graph.depends_on(test.gap).held {
+                self.lowerer.moves.set(true);
+            }
             points.extend(self.sign_changes(test.gap, span));
         }
         points.iter_mut().for_each(|x| *x = x.clamp(span[0], span[1]));
@@ -215,7 +218,9 @@ impl Assembler<'_, '_> {
             }
         }
         let by_name = named.iter().find_map(|name| match self.lowerer.meanings.get(name) {
-            Some(Meaning::Formula(Formula { tree, .. })) => first(tree).filter(|u| u.dimension == dimension),
+            Some(Meaning::Formula(Formula { tree, .. }) | Meaning::Held(_, Formula { tree, .. })) => {
+                first(tree).filter(|u| u.dimension == dimension)
+            }
             _ => None,
         });
         by_name.unwrap_or_else(|| Unit::si(dimension))

@@ -30,6 +30,11 @@ impl Located {
         Self { text, span, origin }
     }
 
+    /// A text that does not stand in the sheet, in place of what stands at `span`.
+    pub fn elsewhere(span: Range<usize>, text: &str) -> Self {
+        Self { origin: vec![span.start; text.len() + 1], text: text.to_owned(), span }
+    }
+
     /// A part of a text.
     pub fn part(whole: &Located, part: Range<usize>) -> Self {
         let origin = whole.origin.get(part.start..=part.end).unwrap_or(&[]).to_vec();
@@ -126,6 +131,21 @@ pub(super) struct Source {
     pub relative: Option<(f64, Range<usize>)>,
     /// Names whose entry is at fault: they are declared all the same.
     pub faulty: Vec<(String, Range<usize>)>,
+}
+
+impl Source {
+    /// Puts other formulas in place of data.
+    pub fn replace(&mut self, replaced: &[(&str, &str)], faults: &mut Faults) {
+        for (name, text) in replaced {
+            match self.given.iter_mut().find(|entry| entry.name == *name) {
+                Some(entry) => entry.value = Given::Formula(Located::elsewhere(entry.name_span.clone(), text)),
+                None => {
+                    let message = format!("`{name}` is not among the data of this sheet");
+                    faults.add("held", 0..0, message, Some("only names of [given] can be replaced".into()));
+                }
+            }
+        }
+    }
 }
 
 const SECTIONS: [&str; 8] = ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];

@@ -75,6 +75,15 @@ impl Solution {
         bars::estimate(&self.field, &self.companions, &number)
     }
 
+    /// Puts the values of held constants behind the unknown constants of all fields, for numbers that depend on them.
+    pub fn carry(&mut self, values: &[f64]) {
+        let others = self.companions.coarser.iter_mut().chain(&mut self.companions.nudged);
+        for field in std::iter::once(&mut self.field).chain(others) {
+            field.constants.truncate(field.layout.constants());
+            field.constants.extend(values);
+        }
+    }
+
     /// The solution with fewer nodes an element that the answer is compared with.
     pub fn base(&self) -> &Field {
         &self.companions.coarser[0]

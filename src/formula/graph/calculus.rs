@@ -15,7 +15,7 @@ impl Graph {
             let depends = match variable {
                 Variable::Coordinate => d.coordinate,
                 Variable::Jet { .. } => d.jets,
-                Variable::Constant(_) => d.constants,
+                Variable::Constant(_) => d.constants || d.held,
                 Variable::Slot(_) => d.slots,
             };
             depends && !g.partials.contains_key(&(id, variable))

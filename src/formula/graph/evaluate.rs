@@ -15,7 +15,7 @@ pub struct Inputs<'a, T = f64> {
     pub middle: f64,
     /// u_i^(k) at x.
     pub jets: &'a dyn Fn(u16, u8) -> T,
-    /// Unknown constants; those missing are taken as not a number.
+    /// Unknown constants, then held ones; those missing have their value as written, or are not a number.
     pub constants: &'a [T],
     /// Slots; those missing are taken as not a number.
     pub slots: &'a [T],
@@ -39,7 +39,11 @@ impl Graph {
                 Node::Number(value) => T::number(value, self.facts(part).error),
                 Node::Coordinate => inputs.x,
                 Node::Jet { unknown, order } => (inputs.jets)(unknown, order),
-                Node::Constant(c) => inputs.constants.get(usize::from(c)).copied().unwrap_or(missing),
+                Node::Constant(c) => inputs
+                    .constants
+                    .get(usize::from(c))
+                    .copied()
+                    .unwrap_or_else(|| self.held(c).map_or(missing, |held| T::number(held.value, held.error))),
                 Node::Slot(s) => inputs.slots.get(s as usize).copied().unwrap_or(missing),
                 Node::Derivative(_) => missing,
                 Node::Negate(a) => of(a).negate(),

@@ -37,7 +37,7 @@ pub enum Node {
         /// Order of the derivative.
         order: u8,
     },
-    /// Unknown constant c.
+    /// Unknown constant c, or a held one: see [`Graph::hold`].
     Constant(u16),
     /// A number that is known only from the solution (value at a point, integral, extreme): slot in a
     /// table that the owner of the graph keeps.
@@ -121,7 +121,7 @@ pub enum Variable {
         /// Order of the derivative.
         order: u8,
     },
-    /// Unknown constant.
+    /// Unknown or held constant.
     Constant(u16),
     /// A slot.
     Slot(u32),
@@ -138,6 +138,8 @@ pub struct Dependence {
     pub constants: bool,
     /// Slots.
     pub slots: bool,
+    /// Held constants: data whose values may be changed.
+    pub held: bool,
 }
 
 impl Dependence {
@@ -147,6 +149,7 @@ impl Dependence {
             jets: self.jets || other.jets,
             constants: self.constants || other.constants,
             slots: self.slots || other.slots,
+            held: self.held || other.held,
         }
     }
 
@@ -212,6 +215,8 @@ pub struct Graph {
     index: HashMap<Key, NodeId>,
     partials: HashMap<(NodeId, Variable), NodeId>,
     totals: HashMap<NodeId, NodeId>,
+    /// Index of the first held constant, and the values that they have.
+    held: (u16, Vec<Rounded>),
     limit: usize,
     full: bool,
 }
@@ -271,6 +276,7 @@ impl Default for Graph {
             index: HashMap::new(),
             partials: HashMap::new(),
             totals: HashMap::new(),
+            held: (u16::MAX, Vec::new()),
             limit: MOST_NODES,
             full: false,
         };
@@ -301,6 +307,26 @@ impl Graph {
     /// Whether [`MOST_NODES`] was reached; nodes made since are not numbers.
     pub fn is_full(&self) -> bool {
         self.full
+    }
+
+    /// From the index `first` on, `count` constants are held: data with values that may be changed later. They are not
+    /// unknown, yet derivatives by them exist and tapes read their values. To be called before any node of them is made.
+    pub fn hold(&mut self, first: u16, count: usize) {
+        self.held = (first, vec![Rounded { value: f64::NAN, error: 0.0 }; count]);
+    }
+
+    /// Gives a held constant the value that it has as written.
+    pub fn set_held(&mut self, constant: u16, value: Rounded) {
+        if let Some(index) = constant.checked_sub(self.held.0)
+            && let Some(held) = self.held.1.get_mut(usize::from(index))
+        {
+            *held = value;
+        }
+    }
+
+    /// The value of a held constant as written; `None` for an unknown one.
+    pub fn held(&self, constant: u16) -> Option<Rounded> {
+        constant.checked_sub(self.held.0).and_then(|k| self.held.1.get(usize::from(k))).copied()
     }
 
     fn facts(&self, id: NodeId) -> Facts {
@@ -368,13 +394,19 @@ impl Graph {
 
     /// Unknown constants in a node.
     pub fn constants_of(&self, id: NodeId) -> BTreeSet<u16> {
-        self.reach_where(&[id], |id| self.depends_on(id).constants)
-            .into_iter()
-            .filter_map(|id| match self.node(id) {
-                Node::Constant(c) => Some(c),
-                _ => None,
-            })
-            .collect()
+        self.constants_where(id, |d| d.constants).filter(|c| self.held(*c).is_none()).collect()
+    }
+
+    /// Held constants in a node.
+    pub fn held_of(&self, id: NodeId) -> BTreeSet<u16> {
+        self.constants_where(id, |d| d.held).filter(|c| self.held(*c).is_some()).collect()
+    }
+
+    fn constants_where(&self, id: NodeId, wanted: impl Fn(Dependence) -> bool) -> impl Iterator<Item = u16> {
+        self.reach_where(&[id], |id| wanted(self.depends_on(id))).into_iter().filter_map(|id| match self.node(id) {
+            Node::Constant(c) => Some(c),
+            _ => None,
+        })
     }
 
     /// Slots in a node.
@@ -445,6 +477,7 @@ impl Graph {
         match node {
             Node::Coordinate => own.coordinate = true,
             Node::Jet { .. } => own.jets = true,
+            Node::Constant(c) if self.held(c).is_some() => own.held = true,
             Node::Constant(_) => own.constants = true,
             Node::Slot(_) => own.slots = true,
             Node::Unary(Unary::Abs | Unary::Sign, _)

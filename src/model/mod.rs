@@ -4,8 +4,11 @@
 //! F_i(x, u, u', ..., u^(m), p) = 0 and conditions g(values at points, p) = 0. The sheet and the Rust
 //! closures of [`crate::problem`] both enter through the trait [`Model`].
 
+mod held;
+
 use crate::error::Result;
 pub use crate::mesh::Side;
+pub use held::Held;
 
 /// Where the derivatives of the unknowns lie in flat arrays.
 ///
