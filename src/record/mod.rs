@@ -16,6 +16,8 @@ pub(crate) mod axis;
 pub(crate) mod canvas;
 /// The span, curves along it, residual, decay as SVG.
 pub mod plot;
+/// Formulas set as mathematics.
+pub(crate) mod mathematics;
 /// The record as a page.
 pub mod page;
 /// The solution along the span as a table.

@@ -1,6 +1,7 @@
 //! The record as one page: self-contained, no script, for screen and paper.
 
 use super::axis::{few, pretty, typeset};
+use super::mathematics::formula;
 use super::number::concise;
 use super::outcome::{Check, Entry, Outcome, Quantity, Status};
 use super::plot::{self, Plot};
@@ -110,7 +111,7 @@ fn results(outcome: &Outcome) -> Markup {
                 div class="wide" {
                     table class="results" {
                         thead { tr { th { "Quantity" } th { "Value" } th { "Unit" } th class="bar" { "Bar, relative" } } }
-                        tbody { @for q in &outcome.quantities { (result(q)) } }
+                        tbody { @for q in &outcome.quantities { (result(q, &outcome.coordinate)) } }
                     }
                 }
             }
@@ -118,13 +119,13 @@ fn results(outcome: &Outcome) -> Markup {
     }
 }
 
-fn result(q: &Quantity) -> Markup {
+fn result(q: &Quantity, coordinate: &str) -> Markup {
     let relative = q.value.filter(|v| *v != 0.0).map(|v| few(q.error / v.abs(), 2));
     html! {
         tr class=[(!q.met).then_some("missed")] {
             th scope="row" {
                 (q.name)
-                code class="formula" { (q.formula) }
+                span class="formula" { (formula(&q.formula, coordinate)) }
                 @for remark in &q.remarks { span class="remark" { (worded(remark)) } }
                 @if !q.met {
                     span class="remark reason" {
@@ -142,6 +143,7 @@ fn result(q: &Quantity) -> Markup {
 
 fn statement(outcome: &Outcome, plots: &[Plot]) -> Markup {
     let (from, to) = outcome.span;
+    let set = |text: &str| formula(text, &outcome.coordinate);
     html! {
         section {
             h2 { "The problem as understood" }
@@ -152,15 +154,15 @@ fn statement(outcome: &Outcome, plots: &[Plot]) -> Markup {
             @if let Some(span) = plots.iter().find(|p| p.file == plot::SPAN) {
                 div class="picture span" role="img" aria-label=(span.words) { (PreEscaped(&span.svg)) }
             }
-            (entries("Unknowns", &outcome.unknowns))
-            (entries("Equations", &outcome.equations))
-            (entries("Conditions", &outcome.conditions))
-            (entries("Data and named expressions", &outcome.data))
+            (entries("Unknowns", &outcome.unknowns, &|text| html! { (unit(text)) }))
+            (entries("Equations", &outcome.equations, &set))
+            (entries("Conditions", &outcome.conditions, &set))
+            (entries("Data and named expressions", &outcome.data, &set))
         }
     }
 }
 
-fn entries(name: &str, entries: &[Entry]) -> Markup {
+fn entries(name: &str, entries: &[Entry], set: &dyn Fn(&str) -> Markup) -> Markup {
     html! {
         @if !entries.is_empty() {
             h3 { (name) }
@@ -168,7 +170,7 @@ fn entries(name: &str, entries: &[Entry]) -> Markup {
                 table class="entries" {
                     tbody {
                         @for e in entries {
-                            tr { th scope="row" { (e.name) } td { code { (e.text) } } td class="remark" { (e.remark) } }
+                            tr { th scope="row" { (e.name) } td { (set(&e.text)) } td class="remark" { (e.remark) } }
                         }
                     }
                 }
