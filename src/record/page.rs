@@ -233,25 +233,30 @@ fn stations(outcome: &Outcome) -> Markup {
     let joint = |k: usize| close(k, k + 1) || k > 0 && close(k - 1, k);
     let joints = (0..rows.len()).filter(|&k| joint(k)).count();
     let chosen = |k: usize| k.is_multiple_of(step) || k + 1 == rows.len() || joints <= MOST_STATIONS && joint(k);
+    // Rounding beside much larger values is shown as the zero that it stands for; the file has all digits.
+    let columns = rows.first().map_or(0, Vec::len);
+    let largest = |k: usize| rows.iter().filter_map(|row| row.get(k)).fold(0.0f64, |s, v| s.max(v.abs()));
+    let sizes: Vec<f64> = (0..columns).map(largest).collect();
+    let clean = |k: usize, value: f64| if value.abs() < 1e-13 * sizes[k] { 0.0 } else { value };
     html! {
         @if !rows.is_empty() {
             section class="stations" {
                 h2 { "Values along the span" }
-                details {
-                    summary { "Chosen places; all of them are in solution.csv" }
-                    div class="remark" { "A place that stands twice is a break: its left limit, then its right limit." }
-                    div class="wide" {
-                        table class="figures" {
-                            thead {
-                                tr {
-                                    th { (outcome.coordinate) " " span class="unit" { (unit(&outcome.coordinate_unit)) } }
-                                    @for c in &outcome.curves { th { (c.name) " " span class="unit" { (unit(&c.unit)) } } }
-                                }
+                p class="lead" {
+                    "Chosen places; all of them are in solution.csv. "
+                    "A place that stands twice is a break: its left limit, then its right limit."
+                }
+                div class="wide" {
+                    table class="figures" {
+                        thead {
+                            tr {
+                                th { (outcome.coordinate) " " span class="unit" { (unit(&outcome.coordinate_unit)) } }
+                                @for c in &outcome.curves { th { (c.name) " " span class="unit" { (unit(&c.unit)) } } }
                             }
-                            tbody {
-                                @for (_, row) in rows.iter().enumerate().filter(|(k, _)| chosen(*k)) {
-                                    tr { @for value in row { td class="number" { (shown(*value)) } } }
-                                }
+                        }
+                        tbody {
+                            @for (_, row) in rows.iter().enumerate().filter(|(k, _)| chosen(*k)) {
+                                tr { @for (k, value) in row.iter().enumerate() { td class="number" { (shown(clean(k, *value))) } } }
                             }
                         }
                     }
