@@ -67,9 +67,64 @@ pub enum Error {
         /// Where the worst element lies.
         x: f64,
     },
+    /// An eigenproblem that makes no sense or is asked for what it does not have.
+    #[error(transparent)]
+    Eigen(#[from] Eigen),
     /// Interrupted from outside or out of time.
     #[error("interrupted")]
     Interrupted,
+}
+
+/// Why an eigenproblem was refused.
+#[derive(Debug, Clone, PartialEq, Error)]
+#[non_exhaustive]
+pub enum Eigen {
+    /// The eigenparameter stands in no equation and no condition.
+    #[error("the eigenparameter appears in no equation and no condition")]
+    Absent,
+    /// A term without any unknown.
+    #[error("{what} has a term without any unknown: an eigenproblem is homogeneous")]
+    Inhomogeneous {
+        /// Equation or condition.
+        what: String,
+    },
+    /// Not linear in the unknowns for a fixed parameter.
+    #[error("{what} is not linear in the unknowns: an eigenproblem is")]
+    Nonlinear {
+        /// Equation or condition.
+        what: String,
+    },
+    /// Not a polynomial of degree two at most in the parameter.
+    #[error("{what} is no polynomial of degree two at most in the eigenparameter")]
+    Degree {
+        /// Equation or condition.
+        what: String,
+    },
+    /// Nothing but constants is unknown.
+    #[error("an eigenproblem needs an unknown function of order one or more")]
+    NoFunction,
+    /// The homogeneous problem has a solution whatever the parameter is.
+    #[error("every number is an eigenvalue: {why}")]
+    Everything {
+        /// Which motion is free.
+        why: String,
+    },
+    /// Fewer eigenvalues exist than were asked for.
+    #[error("{asked} eigenvalues asked, but only {found} exist")]
+    TooFew {
+        /// How many were asked for.
+        asked: usize,
+        /// How many there are.
+        found: usize,
+    },
+    /// There is no lowest eigenvalue.
+    #[error(
+        "the spectrum has no lowest eigenvalue (finer meshes show ever lower ones, below {seen:.3e}): ask near a number"
+    )]
+    Unbounded {
+        /// The lowest one seen.
+        seen: f64,
+    },
 }
 
 /// Result of the engine.

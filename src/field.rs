@@ -71,6 +71,18 @@ impl Field {
         self.zip(other, |a, b| a - b)
     }
 
+    /// Changes the sign of every other unknown function and constant: the conjugate of a doubled field.
+    pub(crate) fn flip_odd(&mut self) {
+        let odd: Vec<bool> =
+            self.layout.orders().iter().enumerate().flat_map(|(i, m)| vec![i % 2 == 1; m + 1]).collect();
+        for jets in &mut self.series {
+            for (series, _) in jets.iter_mut().zip(&odd).filter(|(_, odd)| **odd) {
+                series.iter_mut().for_each(|c| *c = -*c);
+            }
+        }
+        self.constants.iter_mut().skip(1).step_by(2).for_each(|c| *c = -*c);
+    }
+
     fn zip(&self, other: &Field, f: impl Fn(f64, f64) -> f64) -> Field {
         debug_assert_eq!(self.mesh, other.mesh);
         let mut result = self.clone();

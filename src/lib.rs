@@ -30,6 +30,8 @@ pub(crate) mod linear;
 pub(crate) mod newton;
 // Where to put elements: seeds, indicators, refinement plans. Plans only, never solves.
 pub(crate) mod adapt;
+// Eigenproblems: the pencil, its dense form, blocks of modes as boundary-value problems, counts.
+pub(crate) mod spectrum;
 // What the answer rests on: error bars, residual, second route, explanations of singular problems.
 pub mod evidence;
 // Drivers: from a model to a solution.

@@ -162,7 +162,13 @@ pub(crate) fn exponents(
     let equations = sample(model, piece, x)?;
     Ok(companion(layout, &equations, scale, length).and_then(|mut matrix| {
         balancing::balance_parlett_reinsch(&mut matrix);
-        let schur = Schur::try_new(matrix, f64::EPSILON, 1000)?;
+        let schur = Schur::try_new(matrix.clone(), f64::EPSILON, 1000).or_else(|| {
+            // On a cyclic matrix (the fourth derivative proportional to u) the iteration may go in circles: a small change
+            // breaks the symmetry.
+            let size = matrix.amax();
+            matrix.iter_mut().enumerate().for_each(|(k, v)| *v += 1e-9 * size * (k as f64 + 0.385).sin());
+            Schur::try_new(matrix, f64::EPSILON, 1000)
+        })?;
         Some(schur.complex_eigenvalues().iter().map(|e| e / length).collect())
     }))
 }

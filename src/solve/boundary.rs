@@ -77,7 +77,7 @@ pub fn on_mesh(model: &dyn Model, mesh: &Mesh) -> Result<Field> {
     Ok(solver.solve(mesh, None, &Perturbation::NONE)?.field)
 }
 
-fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
+pub(super) fn check(model: &dyn Model, settings: &Settings<'_>) -> Result<()> {
     let points = model.points();
     let ascending = points.len() >= 2 && points.windows(2).all(|p| p[0] < p[1]);
     if !ascending || points.iter().any(|p| !p.is_finite()) {

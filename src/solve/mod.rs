@@ -1,11 +1,13 @@
 //! Drivers: from a model to a solution.
 
 mod boundary;
+mod eigen;
 mod nonlinear;
 mod solver;
 mod viscosity;
 
 pub use boundary::{boundary, on_mesh};
+pub use eigen::{Ask, Count, Discarded, Method, Mode, Reason, Spectrum, eigen, eigen_complex};
 
 use crate::error::Result;
 use crate::evidence::bars::{self, Companions};
