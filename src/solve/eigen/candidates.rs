@@ -69,18 +69,21 @@ impl Task<'_> {
                 None => self.inside_agree(&sorted),
             };
             let same_rank = first.finite == second.finite && fine.size() != coarse.size();
-            if let (Some(n), true) = (wanted, same_rank && agreed == first.finite) {
-                if agreed < n {
-                    let asked = if matches!(self.ask, Ask::Pairs(_)) { n / 2 } else { n };
-                    return Err(too_few(asked, agreed));
-                }
+            if let Some(n) = wanted
+                && same_rank
+                && agreed == first.finite
+                && agreed < n
+            {
+                let asked = if matches!(self.ask, Ask::Pairs(_)) { n / 2 } else { n };
+                return Err(too_few(asked, agreed));
             }
             if matches!(self.ask, Ask::Lowest(_)) {
                 let now = sorted.iter().find(|s| s.agrees).map(|s| s.value.re);
-                if let (Some(before), Some(now)) = (lowest, now) {
-                    if now < 0.0 && now < 1.5 * before.min(0.0) - 1e-6 * self.pencil.size {
-                        return Err(Eigen::Unbounded { seen: now }.into());
-                    }
+                if let (Some(before), Some(now)) = (lowest, now)
+                    && now < 0.0
+                    && now < 1.5 * before.min(0.0) - 1e-6 * self.pencil.size
+                {
+                    return Err(Eigen::Unbounded { seen: now }.into());
                 }
                 // A negative one may be the first of many: one more look with a finer mesh.
                 let first_look = lowest.is_none();

@@ -86,7 +86,7 @@ impl Task<'_> {
                 constants.push(matrix[(r, c)].im);
             }
         }
-        let start = Start2 { task: self, block: &block, basis, combine: &combine, constants };
+        let start = Opening { task: self, block: &block, basis, combine: &combine, constants };
         let mut library = Library::new(block.layout().orders().iter().copied().max().unwrap_or(0));
         let coarse = start.on(&Mesh::uniform(block.points(), 1, 8), &mut library)?;
         let scale: Vec<f64> = (0..parts * block.width()).flat_map(|_| self.scale.iter().copied()).collect();
@@ -103,7 +103,7 @@ impl Task<'_> {
 }
 
 /// The field to start from.
-struct Start2<'a> {
+struct Opening<'a> {
     task: &'a Task<'a>,
     block: &'a Block<'a>,
     basis: &'a Basis,
@@ -111,7 +111,7 @@ struct Start2<'a> {
     constants: Vec<f64>,
 }
 
-impl Start2<'_> {
+impl Opening<'_> {
     /// The basis on a mesh of the block problem.
     fn on(&self, mesh: &Mesh, library: &mut Library) -> Result<Field> {
         let own = &self.task.pencil.layout;
