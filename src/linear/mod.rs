@@ -20,4 +20,4 @@ pub(crate) mod tables;
 
 pub(crate) use nudge::Perturbation;
 pub(crate) use pass::{Pass, from_nodes, solve, transfer};
-pub(crate) use tables::Library;
+pub(crate) use tables::{Library, Tables};

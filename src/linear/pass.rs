@@ -57,7 +57,10 @@ pub(crate) fn solve(
         perturbation.apply(model, &batch, &mut equations);
         let local = Sizes { common: scale, local: &sizes[index] };
         let Condensed { rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
-        responses.push(Response { values: response, ratios: ratios(layout, element, x.len(), &equations) });
+        responses.push(Response {
+            values: response,
+            ratios: ratios(layout, element, library.lobatto(), x.len(), &equations),
+        });
         frame.push(&rows);
         let at_break = mesh.elements.get(index + 1).is_some_and(|next| next.piece != element.piece);
         if at_break {
@@ -101,8 +104,8 @@ pub(crate) fn transfer(field: &Field, mesh: &Mesh, library: &mut Library) -> Res
     let mut nodes = Vec::with_capacity(mesh.elements.len());
     for element in &mesh.elements {
         let tables = library.get(element)?;
-        let mut jets = Vec::with_capacity(tables.n);
-        for s in &tables.nodes {
+        let mut jets = Vec::with_capacity(tables.n + 1);
+        for s in std::iter::once(&-1.0).chain(&tables.nodes) {
             let x = element.coordinate(*s);
             hint = field.locate_in(x, element.piece, hint);
             jets.push(field.jets(hint, field.element(hint).reference(x), layout.orders()));
@@ -112,7 +115,8 @@ pub(crate) fn transfer(field: &Field, mesh: &Mesh, library: &mut Library) -> Res
     from_nodes(layout, mesh, &nodes, field.constants.clone(), library)
 }
 
-/// A field from jets at the nodes of each element: the highest derivatives of all nodes, the states of the first.
+/// A field from jets at the left end and at all nodes of each element: the states of the former, the highest derivatives
+/// of the latter.
 pub(crate) fn from_nodes(
     layout: &Layout,
     mesh: &Mesh,
@@ -125,7 +129,7 @@ pub(crate) fn from_nodes(
         let tables = library.get(element)?;
         let mut jets = Vec::with_capacity(layout.jets());
         for (i, &m) in layout.orders().iter().enumerate() {
-            let values: Vec<f64> = nodes.iter().map(|jets| jets[layout.jet(i, m)]).collect();
+            let values: Vec<f64> = nodes[1..].iter().map(|jets| jets[layout.jet(i, m)]).collect();
             let first = layout.jet(i, 0);
             let state = &nodes[0][first..first + m];
             jets.extend(integrate_up(tables.modal(&values), state, 0.5 * element.length()));
@@ -143,11 +147,11 @@ struct Response {
     ratios: Vec<f64>,
 }
 
-fn ratios(layout: &Layout, element: &Element, n: usize, equations: &Linearised) -> Vec<f64> {
+fn ratios(layout: &Layout, element: &Element, lobatto: bool, n: usize, equations: &Linearised) -> Vec<f64> {
     let (d, j, states) = (layout.unknowns(), layout.jets(), layout.states());
     let mut ratios = vec![0.0f64; d * states];
-    if element.open.is_some() {
-        // The last coefficient is visible at Gauss nodes.
+    if element.open.is_some() || !lobatto {
+        // The last coefficient is visible at Gauss and Radau nodes.
         return ratios;
     }
     for node in [0, n / 2, n - 1] {

@@ -14,6 +14,9 @@ use crate::field::Field;
 /// Smallest damping factor that is tried before the iteration is given up.
 const LEAST_DAMPING: f64 = 1e-6;
 
+/// Steps this short that bring nothing nearer are rounding: the problem is that sensitive, and the bars will say so.
+const STALL: f64 = 1e-6;
+
 /// How an iteration ended.
 #[derive(Debug, Clone)]
 pub(crate) struct Iteration {
@@ -79,7 +82,9 @@ pub(crate) fn newton(stepper: &mut dyn Stepper, start: &Field, wanted: f64, most
                     before = Some((damping * length, simplified));
                     break;
                 }
-                _ if length < 1e-10 => return Ok(Iteration { field, failure: None }),
+                _ if length < 1e-10 || (length < STALL && damping < 0.1) => {
+                    return Ok(Iteration { field, failure: None });
+                }
                 _ => damping *= 0.5,
             }
             if damping < LEAST_DAMPING {

@@ -26,8 +26,7 @@ pub fn boundary(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> 
     let scale = exponents::scales(model)?;
     let open = exponents::singular_ends(model, &scale)?;
     let mut mesh = seed::seed(model, &scale, open, settings.most_elements)?;
-    let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
-    let mut solver = Solver { model, settings, scale, library: Library::new(depth), pass: 0 };
+    let mut solver = Solver { model, settings, scale, library: Library::suited(model), pass: 0 };
     let wanted = wanted_tail(settings.relative);
     let (mut base, mut resolved) = (solver.solve(&mesh, None, &Perturbation::NONE)?, false);
     while solver.pass < PASSES {
@@ -72,8 +71,7 @@ pub fn on_mesh(model: &dyn Model, mesh: &Mesh) -> Result<Field> {
     let settings = Settings::default();
     check(model, &settings)?;
     let scale = exponents::scales(model)?;
-    let depth = model.layout().orders().iter().copied().max().unwrap_or(0);
-    let mut solver = Solver { model, settings: &settings, scale, library: Library::new(depth), pass: 0 };
+    let mut solver = Solver { model, settings: &settings, scale, library: Library::suited(model), pass: 0 };
     Ok(solver.solve(mesh, None, &Perturbation::NONE)?.field)
 }
 

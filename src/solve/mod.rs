@@ -2,6 +2,7 @@
 
 mod boundary;
 mod eigen;
+mod march;
 mod nonlinear;
 mod solver;
 mod viscosity;

@@ -1,5 +1,6 @@
 //! Nonlinear boundary-value problems: start, mesh and iteration together, homotopy when they find no way.
 
+use super::march::{initial, march};
 use super::solver::{ENRICH, PASSES, Solver, admissible, wanted_tail};
 use super::viscosity::Viscous;
 use super::{Settings, Solution};
@@ -21,6 +22,11 @@ const BUDGET: usize = 200_000;
 
 /// Solves a nonlinear problem.
 pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<Solution> {
+    if initial(model)
+        && let Some(near) = march(model, settings)?
+    {
+        return follow(model, settings, &near, near.mesh.clone());
+    }
     let starts = starts(model, settings)?;
     let mut reasons = Vec::new();
     let mut note = |error: Error| match error {
@@ -35,7 +41,7 @@ pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<So
         }
     };
     for start in &starts {
-        match follow(model, settings, start) {
+        match seeded(model, settings, start) {
             Ok(solution) => return Ok(solution),
             Err(error) => note(error)?,
         }
@@ -43,7 +49,7 @@ pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<So
     for way in [thinning, homotopy] {
         let mut budget = BUDGET;
         for start in &starts {
-            match way(model, settings, start, &mut budget).and_then(|near| follow(model, settings, &near)) {
+            match way(model, settings, start, &mut budget).and_then(|near| seeded(model, settings, &near)) {
                 Ok(solution) => return Ok(solution),
                 Err(error) => note(error)?,
             }
@@ -56,16 +62,15 @@ pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<So
 /// Fields to start from: constant ones at which the equations make sense, and what one linear solve makes of
 /// each, which meets all linear conditions.
 fn starts(model: &dyn Model, settings: &Settings<'_>) -> Result<Vec<Field>> {
-    let layout = model.layout();
     let mesh = Mesh::uniform(model.points(), 1, 16);
-    let mut library = depth(layout);
+    let mut library = Library::suited(model);
     let mut starts = Vec::new();
     starts.extend(guessed(model, &mut library)?);
     for level in [0.0, 1.0] {
         let flat = constant(model, &mesh, level, &mut library)?;
         let linear = Linearisation::new(model, &flat, &flat);
         let Ok(scale) = exponents::scales(&linear) else { continue };
-        let mut solver = Solver { model: &linear, settings, scale, library: depth(layout), pass: 0 };
+        let mut solver = Solver { model: &linear, settings, scale, library: Library::suited(model), pass: 0 };
         match solver.solve(&mesh, None, &Perturbation::NONE) {
             Ok(pass) => starts.push(pass.field),
             Err(Error::Interrupted) => return Err(Error::Interrupted),
@@ -92,7 +97,7 @@ fn guessed(model: &dyn Model, library: &mut Library) -> Result<Option<Field>> {
     for element in &mesh.elements {
         let tables = library.get(element)?;
         let at = |s: &f64| model.guess(element.coordinate(*s), element.piece).unwrap_or_default();
-        let jets: Vec<Vec<f64>> = tables.nodes.iter().map(at).collect();
+        let jets: Vec<Vec<f64>> = std::iter::once(&-1.0).chain(&tables.nodes).map(at).collect();
         if jets.iter().flatten().any(|v| !v.is_finite()) || jets.iter().any(|j| j.len() != layout.jets()) {
             return Err(Error::NotFinite { what: "the guess".into(), x: element.left });
         }
@@ -100,10 +105,6 @@ fn guessed(model: &dyn Model, library: &mut Library) -> Result<Option<Field>> {
     }
     let constants = model.guessed_constants().unwrap_or_else(|| vec![0.0; layout.constants()]);
     Ok(Some(from_nodes(layout, &mesh, &values, constants, library)?))
-}
-
-fn depth(layout: &Layout) -> Library {
-    Library::new(layout.orders().iter().copied().max().unwrap_or(0))
 }
 
 /// All unknowns at the same value.
@@ -127,15 +128,21 @@ fn constant(model: &dyn Model, mesh: &Mesh, level: f64, library: &mut Library) -
     transfer(&field, mesh, library)
 }
 
-/// Newton's iteration and mesh adaptation in turn, from a start to the answer with its companions.
-fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<Solution> {
-    let mut run = Run::new(model, settings, start, BUDGET)?;
+/// [`follow`] on a mesh seeded from the equations about the start.
+fn seeded(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<Solution> {
+    let mesh = Run::new(model, settings, start, BUDGET)?.field.mesh;
+    follow(model, settings, start, mesh)
+}
+
+/// Newton's iteration and mesh adaptation in turn, from a start and a mesh to the answer with its companions.
+fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field, mesh: Mesh) -> Result<Solution> {
+    let mut run = Run::on(model, settings, start, mesh, BUDGET)?;
     let resolved = run.converge(start, wanted_tail(settings.relative), 1e-13)?;
     let passes = run.passes;
     let about = run.field.clone();
     let linear = Linearisation::new(model, &about, &about);
     let mut solver =
-        Solver { model: &linear, settings, scale: run.scale.clone(), library: depth(model.layout()), pass: passes };
+        Solver { model: &linear, settings, scale: run.scale.clone(), library: Library::suited(model), pass: passes };
     let mesh = about.mesh.clone();
     let base = solver.solve(&mesh, Some(&about), &Perturbation::NONE)?.field;
     let between = run.polished(&mesh.enriched(ENRICH / 2), &base)?;
@@ -167,7 +174,12 @@ impl<'a> Run<'a> {
         let linear = Linearisation::new(model, start, start);
         let scale = exponents::scales(&linear)?;
         let mesh = seed::seed(&linear, &scale, [false; 2], settings.most_elements)?;
-        let mut library = depth(model.layout());
+        Self::on(model, settings, start, mesh, budget)
+    }
+
+    fn on(model: &'a dyn Model, settings: &'a Settings<'a>, start: &Field, mesh: Mesh, budget: usize) -> Result<Self> {
+        let scale = exponents::scales(&Linearisation::new(model, start, start))?;
+        let mut library = Library::suited(model);
         let field = transfer(start, &mesh, &mut library)?;
         Ok(Self { model, settings, scale, field, library, passes: 0, budget })
     }

@@ -121,8 +121,8 @@ impl Opening<'_> {
         for element in &mesh.elements {
             let piece = self.block.piece(element.piece);
             let tables = library.get(element)?;
-            let mut all = Vec::with_capacity(tables.n);
-            for s in &tables.nodes {
+            let mut all = Vec::with_capacity(tables.n + 1);
+            for s in std::iter::once(&-1.0).chain(&tables.nodes) {
                 let x = element.coordinate(*s);
                 hint = self.basis.vectors[0][0].locate_in(x, piece, hint);
                 let jets: Vec<[Vec<f64>; 2]> = self
