@@ -1,6 +1,6 @@
 //! Reading the sheet, writing the record.
 
-use crate::sheet::MOST_BYTES;
+use crate::sheet::{self, DataFile, MOST_BYTES};
 use std::fs::{self, File};
 use std::io::{Read, Write};
 use std::path::Path;
@@ -40,6 +40,25 @@ pub(super) fn sheet(name: &str) -> Result<String, Failure> {
         let line = before.iter().filter(|b| **b == b'\n').count() + 1;
         Failure::new(format!("{name} is not UTF-8 text: line {line}"), Some("save it with the encoding UTF-8"))
     })
+}
+
+/// Largest data file, in bytes.
+const MOST_DATA: u64 = 4_000_000;
+
+/// The data files that a sheet names; their names are relative to the sheet.
+pub(super) fn data(name: &str, text: &str) -> Vec<DataFile> {
+    let folder = Path::new(name).parent().unwrap_or(Path::new(""));
+    let read = |file: &str| -> Result<String, String> {
+        let mut bytes = Vec::new();
+        let opened = File::open(folder.join(file)).and_then(|f| f.take(MOST_DATA + 1).read_to_end(&mut bytes));
+        opened.map_err(|error| format!("cannot be read: {error}"))?;
+        if bytes.len() as u64 > MOST_DATA {
+            return Err(format!("is larger than {MOST_DATA} bytes, the limit of a data file"));
+        }
+        String::from_utf8(bytes).map_err(|_| "is not UTF-8 text".to_owned())
+    };
+    let content = |file: String| DataFile { content: read(&file), name: file };
+    sheet::files(text).into_iter().map(content).collect()
 }
 
 /// Writes the files of a record. All are written under temporary names first and then renamed one by one: a file is

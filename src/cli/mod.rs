@@ -13,7 +13,7 @@ use crate::error::Error;
 use crate::record::build::{self, Origin};
 use crate::record::outcome::{Outcome, Status};
 use crate::record::{json, text};
-use crate::sheet::{self, Sheet};
+use crate::sheet::{self, Reading, Sheet};
 use arguments::{Arguments, Colour, Task};
 use clap::Parser;
 use sha2::{Digest, Sha256};
@@ -84,7 +84,8 @@ fn read(name: &str, as_json: bool, colour: Colour) -> Result<(Sheet, String), u8
         complain(&failure.message, failure.hint);
         NO_SENSE
     })?;
-    match sheet::read(&text) {
+    let data = files::data(name, &text);
+    match sheet::read_with(&text, &Reading { files: &data, ..Reading::default() }) {
         Ok(sheet) => {
             for warning in &sheet.warnings {
                 eprintln!("warning: {warning}");

@@ -13,5 +13,7 @@ pub mod number;
 pub(crate) mod random;
 // Text to syntax tree, with places.
 pub mod syntax;
+// Measured data: values between points.
+pub mod table;
 // Instruction lists: evaluation over many nodes at once.
 pub mod tape;

@@ -1,6 +1,7 @@
 //! Numbers that formulas can be evaluated with: plain `f64`, and values with a bound for their error.
 
 use super::graph::{Binary, Unary};
+use super::table::Table;
 
 /// What evaluation needs of a number.
 pub trait Number: Copy {
@@ -22,6 +23,8 @@ pub trait Number: Copy {
     fn unary(self, f: Unary) -> Self;
     /// f(a, b)
     fn binary(self, f: Binary, other: Self) -> Self;
+    /// The derivative `order` of measured data.
+    fn tabulated(self, table: &Table, order: u8) -> Self;
     /// `then` if `self < 0` (`strict`) or `self <= 0`, else `otherwise`.
     fn choose(self, strict: bool, then: Self, otherwise: Self) -> Self;
 }
@@ -121,6 +124,9 @@ impl Number for f64 {
     }
     fn binary(self, f: Binary, other: Self) -> Self {
         binary(f, self, other)
+    }
+    fn tabulated(self, table: &Table, order: u8) -> Self {
+        table.value(order, self)
     }
     fn choose(self, strict: bool, then: Self, otherwise: Self) -> Self {
         if holds(self, strict) { then } else { otherwise }
@@ -304,6 +310,10 @@ impl Number for Rounded {
                 Self::new(value, error)
             }
         }
+    }
+
+    fn tabulated(self, table: &Table, order: u8) -> Self {
+        Self::new(table.value(order, self.value), table.rounding(order, self.value, self.error))
     }
 
     fn choose(self, strict: bool, then: Self, otherwise: Self) -> Self {

@@ -5,7 +5,9 @@
 
 use super::graph::{Binary, Graph, Node, NodeId, PieceTest, Unary};
 use super::number::{Number, binary, holds, powi, small_integer, unary};
+use super::table::Table;
 use std::collections::{BTreeSet, HashMap};
+use std::sync::Arc;
 
 /// Nodes done at a time: a register stays in the first cache.
 const CHUNK: usize = 128;
@@ -33,6 +35,8 @@ enum Operation {
     Power,
     Unary(Unary),
     Binary(Binary),
+    /// Index into the tape's measured data, order of the derivative.
+    Table(u16, u8),
     /// gap, then, otherwise
     Choose(bool),
     /// then, otherwise; index into [`Tape::tests`]
@@ -84,6 +88,8 @@ pub struct Tape {
     defaults: Vec<(f64, f64)>,
     slots: Vec<u32>,
     tests: Vec<PieceTest>,
+    /// All measured data of the graph.
+    tables: Vec<Arc<Table>>,
 }
 
 /// Memory of a run; reuse it, and no run after the first allocates.
@@ -191,7 +197,7 @@ impl Tape {
                     Source::Coordinate => Operand::Each(&inputs.x[nodes.clone()]),
                     Source::Jet(j) => Operand::Each(self.row(inputs.jets, j, n, &nodes)),
                 });
-                step_all(instruction.operation, &operands, inputs.tests, &mut to[..length]);
+                step_all(instruction.operation, &operands, inputs.tests, &self.tables, &mut to[..length]);
             }
             for (k, source) in self.outputs.iter().enumerate() {
                 let to = &mut out[k * n..][nodes.clone()];
@@ -226,7 +232,7 @@ impl Tape {
                 // A uniform is computed from uniforms only.
                 _ => T::number(f64::NAN, f64::INFINITY),
             });
-            uniforms[instruction.to] = step(instruction.operation, operands, tests);
+            uniforms[instruction.to] = step(instruction.operation, operands, tests, &self.tables);
         }
     }
 
@@ -245,7 +251,7 @@ impl Tape {
         };
         for instruction in &self.varying {
             let operands = instruction.operands.map(|source| fetch(scratch, source));
-            scratch[self.uniforms + instruction.to] = step(instruction.operation, operands, inputs.tests);
+            scratch[self.uniforms + instruction.to] = step(instruction.operation, operands, inputs.tests, &self.tables);
         }
         for (to, source) in out[..self.outputs.len()].iter_mut().zip(&self.outputs) {
             *to = fetch(scratch, *source);
@@ -253,7 +259,7 @@ impl Tape {
     }
 }
 
-fn step<T: Number>(operation: Operation, [a, b, c]: [T; 3], tests: &[bool]) -> T {
+fn step<T: Number>(operation: Operation, [a, b, c]: [T; 3], tests: &[bool], tables: &[Arc<Table>]) -> T {
     match operation {
         Operation::Negate => a.negate(),
         Operation::Add => a.add(b),
@@ -264,6 +270,7 @@ fn step<T: Number>(operation: Operation, [a, b, c]: [T; 3], tests: &[bool]) -> T
         Operation::Power => a.power(b),
         Operation::Unary(f) => a.unary(f),
         Operation::Binary(f) => a.binary(f, b),
+        Operation::Table(table, order) => a.tabulated(&tables[usize::from(table)], order),
         Operation::Choose(strict) => a.choose(strict, b, c),
         Operation::Piece(k) => {
             if tests[k] {
@@ -292,7 +299,7 @@ impl Operand<'_> {
 }
 
 /// The same as [`step`] for each node of a chunk.
-fn step_all(operation: Operation, [a, b, c]: &[Operand<'_>; 3], tests: &[bool], to: &mut [f64]) {
+fn step_all(operation: Operation, [a, b, c]: &[Operand<'_>; 3], tests: &[bool], tables: &[Arc<Table>], to: &mut [f64]) {
     match operation {
         Operation::Negate => map(to, a, |a| -a),
         Operation::Add => zip(to, a, b, |a, b| a + b),
@@ -305,6 +312,10 @@ fn step_all(operation: Operation, [a, b, c]: &[Operand<'_>; 3], tests: &[bool], 
         Operation::Unary(Unary::Sqrt) => map(to, a, f64::sqrt),
         Operation::Unary(f) => map(to, a, |a| unary(f, a)),
         Operation::Binary(f) => zip(to, a, b, |a, b| binary(f, a, b)),
+        Operation::Table(table, order) => {
+            let table = &tables[usize::from(table)];
+            map(to, a, |a| table.value(order, a));
+        }
         Operation::Choose(strict) => {
             for (i, to) in to.iter_mut().enumerate() {
                 *to = if holds(a.at(i), strict) { b.at(i) } else { c.at(i) };
@@ -357,6 +368,7 @@ impl<'a> Compiler<'a> {
             defaults: Vec::new(),
             slots: Vec::new(),
             tests: Vec::new(),
+            tables: graph.tables().to_vec(),
         };
         Self { graph, tape, places: HashMap::new() }
     }
@@ -495,6 +507,7 @@ impl<'a> Compiler<'a> {
             },
             Node::Unary(f, a) => (Operation::Unary(f), vec![a]),
             Node::Binary(f, a, b) => (Operation::Binary(f), vec![a, b]),
+            Node::Table { table, order, argument } => (Operation::Table(table, order), vec![argument]),
             Node::Choose { gap, strict, then, otherwise } => match self.graph.piece_test(node) {
                 Some(test) => {
                     // All piece tests have been collected before.

@@ -7,7 +7,7 @@ use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
 use super::reduce::Reduction;
 use super::source::{self, Given, Located, MOST_BYTES, Source};
-use super::{HeldDatum, Item, Reading, Sheet, Wanted};
+use super::{DataFile, HeldDatum, Item, Reading, Sheet, Wanted};
 use crate::formula::graph::{Node, NodeId};
 use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::{Condition, Layout};
@@ -28,7 +28,7 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
     }
     let mut source = source::read(text, &mut faults);
     source.replace(reading.replaced, &mut faults);
-    let sheet = Assembler::new(&source, reading.held, &mut faults).run();
+    let sheet = Assembler::new(&source, reading, &mut faults).run();
     if sheet.is_none() && faults.is_empty() {
         faults.add("not understood", 0..0, "the sheet is not understood, and it is not known why", None);
     }
@@ -42,6 +42,8 @@ pub(super) struct Assembler<'s, 'f> {
     pub source: &'s Source,
     /// Names of the data to be held.
     held: &'s [&'s str],
+    /// Data files of the sheet.
+    files: &'s [DataFile],
     pub lowerer: Lowerer<'f>,
 }
 
@@ -57,8 +59,8 @@ pub(super) struct Carrying {
 }
 
 impl<'s, 'f> Assembler<'s, 'f> {
-    fn new(source: &'s Source, held: &'s [&'s str], faults: &'f mut Faults) -> Self {
-        Self { source, held, lowerer: Lowerer::new(faults) }
+    fn new(source: &'s Source, reading: &Reading<'s>, faults: &'f mut Faults) -> Self {
+        Self { source, held: reading.held, files: reading.files, lowerer: Lowerer::new(faults) }
     }
 
     fn run(mut self) -> Option<Sheet> {
@@ -154,6 +156,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
                     None => Meaning::Formula(formula),
                 }),
                 Given::Pieces { pieces, otherwise } => self.parse_pieces(pieces, otherwise.as_ref()),
+                Given::Measured(measured) => self.declare_measured(&entry.name, measured, self.files),
             };
             add(&mut self.lowerer, &entry.name, &entry.name_span, meaning.unwrap_or(Meaning::Faulty));
         }
@@ -287,6 +290,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
                     Some([_, _, value]) => (value.at.clone(), value.tree.clone()),
                     None => continue,
                 },
+                Some(Meaning::Measured(declared)) => (declared.against.at.clone(), declared.against.tree.clone()),
                 _ => continue,
             };
             let named = Expression { kind: Kind::Name(name), span: tree.span };
@@ -507,6 +511,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let unknowns = orders.len();
         let curves = self.curves(unknowns, &points);
         let balances = self.balances(&equations, &orders, unknowns, &points);
+        let watched = self.watched(unknowns, &points);
         let Lowerer { mut graph, mut functionals, warnings, reduction, moves, .. } = self.lowerer;
         for functional in &mut functionals {
             functional.expression = reduction.reduce(&mut graph, functional.expression);
@@ -525,6 +530,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             report,
             curves,
             balances,
+            watched,
         })
     }
 }

@@ -4,6 +4,7 @@ use super::assemble::{Assembler, Carrying};
 use super::carry::Flux;
 use super::condition::Read;
 use super::lower::Meaning;
+use super::nature::Constant;
 use super::source::Given;
 use super::statement::{Datum, Feature, Line, Role, Statement};
 use crate::formula::graph::NodeId;
@@ -161,6 +162,7 @@ impl Assembler<'_, '_> {
                     parts.extend(otherwise.iter().map(|o| format!("else {}", o.text)));
                     parts.join("; ")
                 }
+                Given::Measured(measured) => measured.describe(),
             };
             let node = typed.map(|t| t.node);
             let value = node.and_then(|n| self.lowerer.shown_number(n)).zip(typed).map(|(v, t)| {
@@ -179,6 +181,11 @@ impl Assembler<'_, '_> {
                 }
             });
             data.push(Datum { name: entry.name.clone(), text, value, remark: remark.into() });
+        }
+        for constant in &self.lowerer.nature {
+            let Constant { name, value, unit, meaning } = constant;
+            let (name, text) = ((*name).to_owned(), format!("{value} {unit}"));
+            data.push(Datum { name, text, value: None, remark: (*meaning).to_owned() });
         }
         data
     }

@@ -8,6 +8,8 @@ use super::absolute::Absolute;
 use super::call::FUNCTIONS;
 use super::fault::{Faults, nearest};
 use super::functional::Functional;
+use super::measured::{Declaration, Reach, Taken};
+use super::nature::{self, CONSTANTS, Constant};
 use super::reduce::Reduction;
 use super::source::Located;
 use crate::formula::graph::{Graph, NodeId};
@@ -17,6 +19,7 @@ use crate::unit::{Dimension, Unit};
 use std::cell::Cell;
 use std::collections::{HashMap, HashSet};
 use std::ops::Range;
+use std::sync::Arc;
 
 /// A lowered expression.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -42,6 +45,8 @@ pub(super) struct Cover {
     pub ends: [f64; 2],
     /// Places of the first and the last limit.
     pub places: [Range<usize>; 2],
+    /// What to do about a gap.
+    pub hint: &'static str,
 }
 
 impl Cover {
@@ -55,6 +60,8 @@ pub(super) enum Meaning {
     Formula(Formula),
     /// A datum by pieces: limits and value of each, and the rest.
     Pieces(Vec<[Formula; 3]>, Option<Formula>),
+    /// Measured data.
+    Measured(Arc<Declaration>),
     /// An unknown function.
     Function(u16),
     /// An unknown constant.
@@ -119,6 +126,12 @@ pub(super) struct Lowerer<'f> {
     pub limits: Vec<(NodeId, Range<usize>)>,
     /// Stretches covered by data by pieces: they must reach over the whole span.
     pub covers: Vec<Cover>,
+    /// Tables made of measured data, by name; `None` where they are at fault.
+    pub taken: HashMap<String, Option<Taken>>,
+    /// What measured data are read at.
+    pub reaches: Vec<Reach>,
+    /// Constants of nature in use.
+    pub nature: Vec<&'static Constant>,
     /// Whether a held datum decided about points, exponents or the like: with another value the sheet is another one.
     pub moves: Cell<bool>,
     /// Names that were read as units somewhere.
@@ -147,6 +160,9 @@ impl<'f> Lowerer<'f> {
             reporting: false,
             limits: Vec::new(),
             covers: Vec::new(),
+            taken: HashMap::new(),
+            reaches: Vec::new(),
+            nature: Vec::new(),
             moves: Cell::new(false),
             likened: HashSet::new(),
             overfull: false,
@@ -312,6 +328,15 @@ impl<'f> Lowerer<'f> {
             if name.eq_ignore_ascii_case("nan") {
                 return self.fault("not finite", at, span, "nan is not a number to calculate with", "");
             }
+            if let Some(constant) = nature::named(name)
+                && let Some((unit, value)) = constant.quantity()
+            {
+                if !self.nature.contains(&constant) {
+                    self.nature.push(constant);
+                }
+                let node = self.graph.number_within(value.value, value.error);
+                return self.plain(node, unit.dimension);
+            }
             return self.undefined(at, name, span);
         };
         match meaning {
@@ -333,7 +358,7 @@ impl<'f> Lowerer<'f> {
                 let (dimension, absolute) = (unit.dimension, unknown_count(unit));
                 Some(Typed { node: self.graph.constant(index), dimension: Some(dimension), absolute })
             }
-            meaning @ (Meaning::Formula(_) | Meaning::Pieces(..) | Meaning::Held(..)) => {
+            meaning @ (Meaning::Formula(_) | Meaning::Pieces(..) | Meaning::Measured(_) | Meaning::Held(..)) => {
                 self.defined(at, name, span, &meaning)
             }
         }
@@ -359,6 +384,7 @@ impl<'f> Lowerer<'f> {
         }
         let sound = self.meanings.iter().filter(|(_, meaning)| !matches!(meaning, Meaning::Faulty));
         let known = sound.map(|(name, _)| name.as_str()).chain(FUNCTIONS.iter().copied());
+        let known = known.chain(CONSTANTS.iter().map(|c| c.name));
         let near = nearest(name, known).map(|k| format!("did you mean `{k}`?"));
         let unit = || {
             let unit = Unit::parse(name, false).ok()?;
@@ -392,6 +418,7 @@ impl<'f> Lowerer<'f> {
             Meaning::Formula(formula) => self.lower(&formula.at, &formula.tree),
             Meaning::Held(constant, formula) => self.hold(name, *constant, formula),
             Meaning::Pieces(pieces, otherwise) => self.pieces(name, pieces, otherwise.as_ref()),
+            Meaning::Measured(declared) => self.measured(name, declared),
             _ => None,
         };
         self.stack.pop();

@@ -15,13 +15,16 @@ mod call;
 mod carry;
 mod condition;
 mod count;
+mod datafile;
 mod describe;
 mod draw;
 mod fault;
 mod functional;
 mod guard;
 mod lower;
+mod measured;
 mod model;
+mod nature;
 mod piece;
 mod points;
 mod pole;
@@ -30,8 +33,10 @@ mod source;
 mod start;
 mod statement;
 
+pub use datafile::DataFile;
 pub use fault::Fault;
 pub use model::SheetModel;
+pub use nature::{CONSTANTS, Constant};
 pub use source::MOST_BYTES;
 pub use statement::{Datum, Feature, Line, Role, Statement};
 
@@ -62,6 +67,7 @@ pub struct Sheet {
     report: Vec<Item>,
     curves: Vec<CurveItem>,
     balances: Vec<Balance>,
+    watched: Vec<measured::Watched>,
 }
 
 impl std::fmt::Debug for Sheet {
@@ -164,6 +170,16 @@ pub fn read(text: &str) -> std::result::Result<Sheet, Vec<Fault>> {
     read_with(text, &Reading::default())
 }
 
+/// Names of the data files that a sheet reads measured data from, as it writes them.
+///
+/// ```
+/// let text = "[given]\nk = { against = 'T', file = 'k.csv' }\n";
+/// assert_eq!(spanwise::sheet::files(text), ["k.csv"]);
+/// ```
+pub fn files(text: &str) -> Vec<String> {
+    source::files(text)
+}
+
 /// How a sheet is to be read otherwise than it stands.
 #[derive(Debug, Clone, Copy, Default)]
 pub struct Reading<'a> {
@@ -171,6 +187,8 @@ pub struct Reading<'a> {
     pub held: &'a [&'a str],
     /// Data of `[given]` with another formula in place of the one written.
     pub replaced: &'a [(&'a str, &'a str)],
+    /// The data files that the sheet names ([`files`]).
+    pub files: &'a [DataFile],
 }
 
 /// A datum whose value may be changed.
@@ -253,7 +271,17 @@ impl Sheet {
     /// Those of [`crate::solve::boundary`].
     pub fn solve(&self, watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
         let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
-        crate::solve::boundary(&self.model(), &settings)
+        let solution = crate::solve::boundary(&self.model(), &settings)?;
+        self.within_measured(&solution)?;
+        Ok(solution)
+    }
+
+    /// Refuses a solution that needs measured data where nothing was measured.
+    fn within_measured(&self, solution: &Solution) -> Result<()> {
+        match self.watched.iter().find_map(|w| w.refuses(solution)) {
+            Some(reason) => Err(Error::Unsupported(reason)),
+            None => Ok(()),
+        }
     }
 
     /// The same with other values (SI) of the data held, which the fields of the solution carry behind the unknown
@@ -265,6 +293,7 @@ impl Sheet {
         let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
         let mut solution = crate::solve::boundary(&self.model_at(values.to_vec()), &settings)?;
         solution.carry(values);
+        self.within_measured(&solution)?;
         Ok(solution)
     }
 
@@ -275,7 +304,12 @@ impl Sheet {
 
     /// The asked numbers, in the order of the sheet.
     pub fn evaluate(&self, solution: &Solution) -> Vec<Asked> {
-        self.report.iter().map(|item| self.asked(item, solution)).collect()
+        let outside = self.watched.iter().find_map(|w| w.refuses(solution));
+        let asked = self.report.iter().map(|item| self.asked(item, solution));
+        match outside {
+            Some(reason) => asked.map(|a| Asked { value: Err(reason.clone()), ..a }).collect(),
+            None => asked.collect(),
+        }
     }
 
     fn asked(&self, item: &Item, solution: &Solution) -> Asked {

@@ -91,14 +91,14 @@ impl Assembler<'_, '_> {
             }
         }
         for cover in std::mem::take(&mut self.lowerer.covers) {
-            let Cover { name, ends, places } = cover;
+            let Cover { name, ends, places, hint } = cover;
             if ends[0] > span[0] + small {
                 let message = format!("`{name}` has no value from {} to {}", shown(span[0]), shown(ends[0]));
-                self.lowerer.faults.add("piece", places[0].clone(), message, Some(Cover::HINT.into()));
+                self.lowerer.faults.add("piece", places[0].clone(), message, Some(hint.into()));
             }
             if ends[1] < span[1] - small {
                 let message = format!("`{name}` has no value from {} to {}", shown(ends[1]), shown(span[1]));
-                self.lowerer.faults.add("piece", places[1].clone(), message, Some(Cover::HINT.into()));
+                self.lowerer.faults.add("piece", places[1].clone(), message, Some(hint.into()));
             }
         }
         let mut used: BTreeSet<u32> = BTreeSet::new();
@@ -138,6 +138,7 @@ impl Assembler<'_, '_> {
             }
             points.extend(self.sign_changes(test.gap, span));
         }
+        points.extend(self.measured_points(span));
         points.iter_mut().for_each(|x| *x = x.clamp(span[0], span[1]));
         points.sort_by(f64::total_cmp);
         let mut merged: Vec<f64> = Vec::with_capacity(points.len());

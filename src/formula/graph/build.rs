@@ -7,8 +7,11 @@
 
 use super::{Binary, Graph, NOT_A_NUMBER, Node, NodeId, ONE, Unary, ZERO};
 use crate::formula::number::{Number, Rounded, holds};
+use crate::formula::table::Table;
 use crate::unit::Unit;
 use std::collections::BTreeMap;
+use std::ops::Range;
+use std::sync::Arc;
 
 /// Longest sum or product that is flattened; a longer one stays as it is, which costs only recognition.
 const LONGEST: usize = 500;
@@ -275,6 +278,57 @@ impl Graph {
         }
         let node = Node::Choose { gap, strict, then, otherwise };
         self.intern(node, 0.0)
+    }
+
+    /// Takes in measured data; the number of its table, `None` when there are too many.
+    pub fn measure(&mut self, table: Table) -> Option<u16> {
+        let number = u16::try_from(self.tables.len()).ok()?;
+        self.tables.push(Arc::new(table));
+        Some(number)
+    }
+
+    /// All measured data, by their number.
+    pub fn tables(&self) -> &[Arc<Table>] {
+        &self.tables
+    }
+
+    /// The derivative `order` of measured data, read at `argument`.
+    ///
+    /// Where the argument holds the coordinate and data only, a derivative that steps from piece to piece becomes a
+    /// choice, so that both sides of a break have their own ([`Graph::piece_tests`]).
+    pub fn table(&mut self, table: u16, order: u8, argument: NodeId) -> NodeId {
+        let Some(data) = self.tables.get(usize::from(table)).cloned() else { return NOT_A_NUMBER };
+        if order > data.degree() && self.depends_on(argument).only_coordinate() {
+            return ZERO;
+        }
+        if let Some(argument) = self.rounded(argument) {
+            return self.rounded_node(argument.tabulated(&data, order));
+        }
+        if order > data.smoothness() && self.depends_on(argument).only_coordinate() {
+            return self.by_pieces(&data, order, argument, 0..data.points().len() - 1);
+        }
+        self.intern(Node::Table { table, order, argument }, 0.0)
+    }
+
+    /// Polynomials piece by piece, found by halving.
+    fn by_pieces(&mut self, data: &Table, order: u8, argument: NodeId, range: Range<usize>) -> NodeId {
+        let left = data.points()[range.start];
+        if range.len() == 1 {
+            let left = self.number(left);
+            let t = self.subtract(argument, left);
+            let mut value = ZERO;
+            for c in data.coefficients(order, range.start).into_iter().rev() {
+                let (scaled, c) = (self.multiply(value, t), self.number(c));
+                value = self.add(scaled, c);
+            }
+            return value;
+        }
+        let middle = range.start + range.len() / 2;
+        let point = self.number(data.points()[middle]);
+        let gap = self.subtract(argument, point);
+        let below = self.by_pieces(data, order, argument, range.start..middle);
+        let above = self.by_pieces(data, order, argument, middle..range.end);
+        self.choose(gap, true, below, above)
     }
 
     /// Coefficient and rest; of a number the rest is 1.

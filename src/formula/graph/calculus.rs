@@ -89,6 +89,14 @@ impl Graph {
                 let (da, db) = (slope(self, a), slope(self, b));
                 self.binary_slope(f, [a, b], [da, db])
             }
+            Node::Table { table, order, argument } => {
+                let inner = slope(self, argument);
+                if inner == ZERO {
+                    return ZERO;
+                }
+                let outer = self.table(table, order.saturating_add(1), argument);
+                self.multiply(outer, inner)
+            }
             Node::Choose { gap, strict, then, otherwise } => {
                 let (then, otherwise) = (slope(self, then), slope(self, otherwise));
                 self.choose(gap, strict, then, otherwise)
@@ -308,6 +316,7 @@ impl Graph {
             Node::Power(a, b) => self.power(new(a), new(b)),
             Node::Unary(f, a) => self.unary(f, new(a)),
             Node::Binary(f, a, b) => self.binary(f, new(a), new(b)),
+            Node::Table { table, order, argument } => self.table(table, order, new(argument)),
             Node::Choose { gap, strict, then, otherwise } => self.choose(new(gap), strict, new(then), new(otherwise)),
         }
     }

@@ -53,6 +53,10 @@ impl Graph {
                 Node::Power(a, b) => of(a).power(of(b)),
                 Node::Unary(f, a) => of(a).unary(f),
                 Node::Binary(f, a, b) => of(a).binary(f, of(b)),
+                Node::Table { table, order, argument } => match self.tables.get(usize::from(table)) {
+                    Some(table) => of(argument).tabulated(table, order),
+                    None => missing,
+                },
                 node @ Node::Choose { gap, strict, then, otherwise } => {
                     let at_middle = inputs.middle != inputs.x.value();
                     let gap = if at_middle && self.piece_test(node).is_some() {

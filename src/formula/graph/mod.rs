@@ -17,7 +17,9 @@ mod evaluate;
 pub use evaluate::Inputs;
 
 use super::number::Rounded;
+use super::table::Table;
 use std::collections::{BTreeSet, HashMap};
+use std::sync::Arc;
 
 /// Names a node of a [`Graph`].
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, PartialOrd, Ord)]
@@ -58,6 +60,15 @@ pub enum Node {
     Unary(Unary, NodeId),
     /// f(a, b)
     Binary(Binary, NodeId, NodeId),
+    /// A derivative of measured data: see [`Graph::table`].
+    Table {
+        /// Number of the table.
+        table: u16,
+        /// Order of the derivative, 0 for the values.
+        order: u8,
+        /// Where it is read.
+        argument: NodeId,
+    },
     /// `if(gap < 0, a, b)`; strictly less where `strict`, else `gap <= 0`.
     /// A test whose gap holds the coordinate and data only is decided once per piece of the mesh, at the
     /// piece's middle: its number in [`Graph::piece_tests`]; every other test is decided point by point.
@@ -185,7 +196,7 @@ pub const MOST_NODES: usize = 1_000_000;
 #[derive(Debug, Clone, Copy)]
 struct Facts {
     dependence: Dependence,
-    /// Holds abs, min, max, sign, a signed power or a choice that unknowns decide.
+    /// Holds abs, min, max, sign, a signed power, measured data or a choice that unknowns decide.
     kink: bool,
     /// Holds a [`Node::Derivative`].
     open: bool,
@@ -217,6 +228,8 @@ pub struct Graph {
     totals: HashMap<NodeId, NodeId>,
     /// Index of the first held constant, and the values that they have.
     held: (u16, Vec<Rounded>),
+    /// Measured data.
+    tables: Vec<Arc<Table>>,
     limit: usize,
     full: bool,
 }
@@ -245,6 +258,9 @@ impl Key {
             Node::Choose { gap, strict, then, otherwise } => {
                 Self(13 + u32::from(strict), gap.0.into(), pair(then, otherwise))
             }
+            Node::Table { table, order, argument } => {
+                Self(15, (u64::from(table) << 8) | u64::from(order), argument.0.into())
+            }
         }
     }
 }
@@ -254,7 +270,9 @@ impl Node {
     pub fn operands(self) -> impl Iterator<Item = NodeId> {
         let list = match self {
             Self::Number(_) | Self::Coordinate | Self::Jet { .. } | Self::Constant(_) | Self::Slot(_) => [None; 3],
-            Self::Derivative(a) | Self::Negate(a) | Self::Unary(_, a) => [Some(a), None, None],
+            Self::Derivative(a) | Self::Negate(a) | Self::Unary(_, a) | Self::Table { argument: a, .. } => {
+                [Some(a), None, None]
+            }
             Self::Add(a, b) | Self::Multiply(a, b) | Self::Divide(a, b) | Self::Power(a, b) | Self::Binary(_, a, b) => {
                 [Some(a), Some(b), None]
             }
@@ -277,6 +295,7 @@ impl Default for Graph {
             partials: HashMap::new(),
             totals: HashMap::new(),
             held: (u16::MAX, Vec::new()),
+            tables: Vec::new(),
             limit: MOST_NODES,
             full: false,
         };
@@ -352,7 +371,7 @@ impl Graph {
         self.facts(id).dependence
     }
 
-    /// Whether unknowns decide anything not smooth: abs, min, max, sign, a signed power, a choice. Partial
+    /// Whether unknowns decide anything not smooth: abs, min, max, sign, a signed power, measured data, a choice. Partial
     /// derivatives alone do not show it: sign(u) has the derivative 0.
     pub fn has_kink_in_unknowns(&self, id: NodeId) -> bool {
         self.facts(id).kink
@@ -481,7 +500,8 @@ impl Graph {
             Node::Constant(_) => own.constants = true,
             Node::Slot(_) => own.slots = true,
             Node::Unary(Unary::Abs | Unary::Sign, _)
-            | Node::Binary(Binary::Min | Binary::Max | Binary::SignedPower, ..) => {
+            | Node::Binary(Binary::Min | Binary::Max | Binary::SignedPower, ..)
+            | Node::Table { .. } => {
                 facts.kink |= own.unknowns();
             }
             Node::Choose { gap, .. } => facts.kink |= self.depends_on(gap).unknowns(),
