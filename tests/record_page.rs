@@ -44,6 +44,8 @@ fn made(pieces: Vec<Vec<(f64, f64)>>, span: (f64, f64)) -> Outcome {
         stations: Vec::new(),
         residual: Vec::new(),
         features: Vec::new(),
+        cases: Vec::new(),
+        envelopes: Vec::new(),
         decay_names: Vec::new(),
         mesh: Vec::new(),
         passes: 1,

@@ -12,7 +12,7 @@ mod progress;
 use crate::error::Error;
 use crate::record::build::{self, Origin};
 use crate::record::outcome::{Outcome, Status};
-use crate::record::{json, text};
+use crate::record::{cases, json, text};
 use crate::sheet::{self, Reading, Sheet};
 use arguments::{Arguments, Colour, Task};
 use clap::Parser;
@@ -125,16 +125,27 @@ fn solve(name: &str, as_json: bool, record: Option<&std::path::Path>, cross_chec
     };
     let origin = Origin { source: name, text: &text };
     let progress = progress::Progress::start();
-    let solved = sheet.solve(Some(&|step| progress.step(step)));
+    let watch = |step| progress.step(step);
+    let solved = sheet.solve(Some(&watch));
+    let mut answers: Vec<cases::Answer<'_>> = Vec::new();
+    let mut stopped = matches!(solved, Err(Error::Interrupted));
+    for case in sheet.cases() {
+        if stopped {
+            break;
+        }
+        answers.push((case, case.sheet.solve(Some(&watch))));
+        stopped = matches!(answers.last(), Some((_, Err(Error::Interrupted))));
+    }
     progress.finish();
-    let outcome = match &solved {
-        Ok(solution) => build::solved(&sheet, solution, origin, cross_check),
-        Err(error) => build::failed(&sheet, origin, error),
-    };
-    if matches!(solved, Err(Error::Interrupted)) {
+    if stopped {
         complain("interrupted: nothing was written", None);
         return NOT_MET;
     }
+    let mut outcome = match &solved {
+        Ok(solution) => build::solved(&sheet, solution, origin, cross_check),
+        Err(error) => build::failed(&sheet, origin, error),
+    };
+    cases::join(&mut outcome, &sheet, solved.as_ref().ok(), &answers, origin);
     if let Some(reason) = outcome.reason.as_ref().filter(|_| outcome.status == Status::Failed) {
         complain(&format!("{name}: {reason}"), None);
     }

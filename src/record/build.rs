@@ -63,6 +63,8 @@ pub fn unsolved(sheet: &Sheet, origin: Origin<'_>) -> Outcome {
         stations: Vec::new(),
         residual: Vec::new(),
         features: features.collect(),
+        cases: Vec::new(),
+        envelopes: Vec::new(),
         decay_names: s.carried.clone(),
         mesh: Vec::new(),
         passes: 0,

@@ -1,6 +1,8 @@
 //! Results for programs.
 
-use super::outcome::{Check, Entry, Feature, FeatureKind, MeshRow, Outcome, Quantity, Status};
+use super::outcome::{
+    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, Outcome, Peak, Quantity, Status,
+};
 use crate::sheet::Fault;
 use serde::Serialize;
 
@@ -21,6 +23,38 @@ struct Document<'a> {
     problem: Option<Problem<'a>>,
     mesh: Mesh,
     warnings: &'a [String],
+    #[serde(skip_serializing_if = "Vec::is_empty")]
+    cases: Vec<CaseLine<'a>>,
+    #[serde(skip_serializing_if = "Vec::is_empty")]
+    envelopes: Vec<EnvelopeLine<'a>>,
+}
+
+#[derive(Serialize)]
+struct CaseLine<'a> {
+    name: &'a str,
+    status: &'static str,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    reason: Option<&'a str>,
+    changed: Vec<Line<'a>>,
+    quantities: Vec<Number<'a>>,
+}
+
+/// What a curve reaches over all cases.
+#[derive(Serialize)]
+struct EnvelopeLine<'a> {
+    name: &'a str,
+    unit: &'a str,
+    cases: &'a [String],
+    largest: Option<PeakLine<'a>>,
+    smallest: Option<PeakLine<'a>>,
+}
+
+#[derive(Serialize)]
+struct PeakLine<'a> {
+    value: f64,
+    error: f64,
+    at: f64,
+    case: &'a str,
 }
 
 #[derive(Serialize)]
@@ -128,14 +162,42 @@ fn problem_of(outcome: &Outcome) -> Problem<'_> {
     }
 }
 
-/// The record as JSON; with `problem` the statement of the problem is included. Never holds a number that is not
-/// finite.
-pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -> String {
-    let status = match outcome.status {
+fn status(status: Status) -> &'static str {
+    match status {
         Status::Solved => "solved",
         Status::Inaccurate => "inaccurate",
         Status::Failed => "failed",
-    };
+    }
+}
+
+fn case(c: &CaseResult) -> CaseLine<'_> {
+    CaseLine {
+        name: &c.name,
+        status: status(c.status),
+        reason: c.reason.as_deref(),
+        changed: lines(&c.changed),
+        quantities: c.quantities.iter().map(number).collect(),
+    }
+}
+
+fn envelope(e: &Envelope) -> EnvelopeLine<'_> {
+    EnvelopeLine {
+        name: &e.name,
+        unit: &e.unit,
+        cases: &e.cases,
+        largest: peak_line(&e.high),
+        smallest: peak_line(&e.low),
+    }
+}
+
+fn peak_line(peak: &Option<Peak>) -> Option<PeakLine<'_>> {
+    let Peak { value, error, x, case } = peak.as_ref()?;
+    (value.is_finite() && error.is_finite()).then_some(PeakLine { value: *value, error: *error, at: *x, case })
+}
+
+/// The record as JSON; with `problem` the statement of the problem is included. Never holds a number that is not
+/// finite.
+pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -> String {
     let problem = problem.then(|| problem_of(outcome));
     let evidence =
         outcome.checks.iter().map(|Check { name, result, passed, .. }| Evidence { name, result, passed: *passed });
@@ -143,7 +205,7 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
     let document = Document {
         program: "spanwise",
         version,
-        status,
+        status: status(outcome.status),
         reason: outcome.reason.as_deref(),
         title: &outcome.title,
         sheet: &outcome.source,
@@ -154,6 +216,8 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
         problem,
         mesh: mesh(outcome),
         warnings: &outcome.warnings,
+        cases: outcome.cases.iter().map(case).collect(),
+        envelopes: outcome.envelopes.iter().map(envelope).collect(),
     };
     pretty(&document)
 }

@@ -6,6 +6,10 @@ pub mod outcome;
 pub mod build;
 /// Values with uncertain digits.
 pub mod number;
+/// Load cases.
+pub mod cases;
+/// Envelopes over load cases.
+pub mod envelope;
 /// Results for people, on a terminal.
 pub mod text;
 /// Results for programs.
@@ -34,6 +38,9 @@ pub fn files(outcome: &Outcome, sha256: &str, version: &str) -> Vec<(String, Vec
         ("solution.csv".into(), csv::table(outcome).into_bytes()),
         ("sheet.toml".into(), outcome.sheet.clone().into_bytes()),
     ];
+    if !outcome.envelopes.is_empty() {
+        files.push(("envelope.csv".into(), envelope::table(outcome).into_bytes()));
+    }
     files.extend(plots.into_iter().map(|p| (format!("plots/{}", p.file), p.svg.into_bytes())));
     files
 }

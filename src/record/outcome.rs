@@ -118,6 +118,64 @@ pub struct MeshRow {
     pub decay: Vec<Vec<f64>>,
 }
 
+/// Results of one load case.
+#[derive(Debug, Clone, PartialEq)]
+pub struct CaseResult {
+    /// Its name.
+    pub name: String,
+    /// Data changed, as written.
+    pub changed: Vec<Entry>,
+    /// How it ended.
+    pub status: Status,
+    /// Why it failed.
+    pub reason: Option<String>,
+    /// Asked numbers.
+    pub quantities: Vec<Quantity>,
+    /// Evidence.
+    pub checks: Vec<Check>,
+}
+
+/// The largest or smallest value of an expression over the span and all cases.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Peak {
+    /// The value.
+    pub value: f64,
+    /// Its bar.
+    pub error: f64,
+    /// Where.
+    pub x: f64,
+    /// Name of the case that governs; `base` for the sheet as it stands.
+    pub case: String,
+}
+
+/// Smallest and largest value at one place, each with the index of the case that governs.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Extent {
+    /// Coordinate.
+    pub x: f64,
+    /// Smallest value, index of its case.
+    pub low: (f64, usize),
+    /// Largest value, index of its case.
+    pub high: (f64, usize),
+}
+
+/// What an expression reaches along the span over all cases.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Envelope {
+    /// The expression.
+    pub name: String,
+    /// Its unit.
+    pub unit: String,
+    /// Names of the cases in it: `base` first.
+    pub cases: Vec<String>,
+    /// Place by place; at a break the left, then the right limit.
+    pub rows: Vec<Extent>,
+    /// The smallest value of all.
+    pub low: Option<Peak>,
+    /// The largest value of all.
+    pub high: Option<Peak>,
+}
+
 /// Everything a record shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Outcome {
@@ -160,6 +218,10 @@ pub struct Outcome {
     pub residual: Vec<Curve>,
     /// Supports, jumps, breaks.
     pub features: Vec<Feature>,
+    /// Load cases.
+    pub cases: Vec<CaseResult>,
+    /// What each curve reaches over base and cases.
+    pub envelopes: Vec<Envelope>,
     /// Names of the unknowns of the decay columns (carried fluxes included).
     pub decay_names: Vec<String>,
     /// The mesh.

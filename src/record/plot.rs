@@ -288,6 +288,10 @@ pub fn all(outcome: &Outcome) -> Vec<Plot> {
     for (k, one) in outcome.curves.iter().enumerate() {
         keep(format!("{:02}-{}.svg", k + 1, file_name(&one.name)), curve(one, outcome), curve_words(one, outcome));
     }
+    for (k, one) in outcome.envelopes.iter().enumerate() {
+        let file = format!("envelope-{:02}-{}.svg", k + 1, file_name(&one.name));
+        keep(file, curve(&one.curve(), outcome), one.words(outcome));
+    }
     if !outcome.residual.is_empty() {
         keep("residual.svg".into(), residual(outcome), residual_words(outcome));
     }

@@ -38,6 +38,7 @@ pub fn results(outcome: &Outcome) -> String {
             let _ = writeln!(text, "{verdict}  {}{gap}   {}", check.name, check.result);
         }
     }
+    text.push_str(&super::cases::text(outcome));
     text
 }
 

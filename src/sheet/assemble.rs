@@ -28,9 +28,16 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
     }
     let mut source = source::read(text, &mut faults);
     source.replace(reading.replaced, &mut faults);
-    let sheet = Assembler::new(&source, reading, &mut faults).run();
+    let mut sheet = Assembler::new(&source, reading, &mut faults).run();
     if sheet.is_none() && faults.is_empty() {
         faults.add("not understood", 0..0, "the sheet is not understood, and it is not known why", None);
+    }
+    if let Some(sheet) = &mut sheet
+        && faults.is_empty()
+        && reading.held.is_empty()
+        && reading.replaced.is_empty()
+    {
+        sheet.cases = super::cases::read(&source, reading, &mut faults);
     }
     match sheet {
         Some(sheet) if faults.is_empty() => Ok(sheet),
@@ -59,11 +66,11 @@ pub(super) struct Carrying {
 }
 
 impl<'s, 'f> Assembler<'s, 'f> {
-    fn new(source: &'s Source, reading: &Reading<'s>, faults: &'f mut Faults) -> Self {
+    pub fn new(source: &'s Source, reading: &Reading<'s>, faults: &'f mut Faults) -> Self {
         Self { source, held: reading.held, files: reading.files, lowerer: Lowerer::new(faults) }
     }
 
-    fn run(mut self) -> Option<Sheet> {
+    pub fn run(mut self) -> Option<Sheet> {
         self.declare();
         let span = self.span();
         let equations = self.equations();
@@ -531,6 +538,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             curves,
             balances,
             watched,
+            cases: Vec::new(),
         })
     }
 }

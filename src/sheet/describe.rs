@@ -5,7 +5,6 @@ use super::carry::Flux;
 use super::condition::Read;
 use super::lower::Meaning;
 use super::nature::Constant;
-use super::source::Given;
 use super::statement::{Datum, Feature, Line, Role, Statement};
 use crate::formula::graph::NodeId;
 use crate::formula::syntax::{self, Expression, Kind};
@@ -154,16 +153,7 @@ impl Assembler<'_, '_> {
         for entry in &self.source.given {
             let Some(name) = syntax::name(&entry.name) else { continue };
             let typed = self.lowerer.named(&name);
-            let text = match &entry.value {
-                Given::Formula(at) => at.text.clone(),
-                Given::Pieces { pieces, otherwise } => {
-                    let mut parts: Vec<String> =
-                        pieces.iter().map(|(k, v)| format!("{}: {}", k.text.trim(), v.text)).collect();
-                    parts.extend(otherwise.iter().map(|o| format!("else {}", o.text)));
-                    parts.join("; ")
-                }
-                Given::Measured(measured) => measured.describe(),
-            };
+            let text = entry.value.text();
             let node = typed.map(|t| t.node);
             let value = node.and_then(|n| self.lowerer.shown_number(n)).zip(typed).map(|(v, t)| {
                 let dimension = t.dimension.unwrap_or_default();

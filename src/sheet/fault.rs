@@ -49,6 +49,14 @@ impl Faults {
         }
     }
 
+    /// Takes in those of another reading, each message behind `prefix`.
+    pub fn append(&mut self, other: Self, prefix: &str) {
+        for fault in other.list {
+            self.add(fault.code, fault.span, format!("{prefix}{}", fault.message), fault.hint);
+        }
+        self.more += other.more;
+    }
+
     /// Number of faults so far.
     pub fn len(&self) -> usize {
         self.list.len() + self.more

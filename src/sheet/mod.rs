@@ -13,6 +13,7 @@ mod arithmetic;
 mod assemble;
 mod call;
 mod carry;
+mod cases;
 mod condition;
 mod count;
 mod datafile;
@@ -33,6 +34,7 @@ mod source;
 mod start;
 mod statement;
 
+pub use cases::Case;
 pub use datafile::DataFile;
 pub use fault::Fault;
 pub use model::SheetModel;
@@ -68,6 +70,7 @@ pub struct Sheet {
     curves: Vec<CurveItem>,
     balances: Vec<Balance>,
     watched: Vec<measured::Watched>,
+    cases: Vec<Case>,
 }
 
 impl std::fmt::Debug for Sheet {
@@ -263,6 +266,11 @@ impl Sheet {
     /// again.
     pub fn moves_points(&self) -> bool {
         self.moves_points
+    }
+
+    /// The load cases: each the sheet with changed data.
+    pub fn cases(&self) -> &[Case] {
+        &self.cases
     }
 
     /// Solves the sheet to the accuracy asked.

@@ -1,10 +1,15 @@
 //! The sheet's file as sections of located texts: TOML and nothing else; no formula is read here.
 
 use super::fault::{Faults, NOT_TOML, nearest};
-use crate::formula::table::Through;
 use std::ops::Range;
 use toml::Spanned;
 use toml::de::{DeTable, DeValue};
+
+mod cases;
+mod measured;
+
+pub(super) use cases::Changes;
+pub(super) use measured::{Measured, Rows, files};
 
 /// Largest sheet, in bytes.
 pub const MOST_BYTES: usize = 1_000_000;
@@ -99,52 +104,6 @@ pub(super) enum Given {
     Measured(Measured),
 }
 
-/// Measured data.
-#[derive(Debug, Clone, PartialEq)]
-pub(super) struct Measured {
-    pub against: Located,
-    pub through: Through,
-    pub rows: Rows,
-    /// Where the points, or the name of the file, stand.
-    pub place: Range<usize>,
-}
-
-/// Where measured data come from.
-#[derive(Debug, Clone, PartialEq)]
-pub(super) enum Rows {
-    Points(Vec<[Located; 2]>),
-    File { file: Located, columns: Option<[Located; 2]> },
-}
-
-impl Measured {
-    /// In words.
-    pub fn describe(&self) -> String {
-        let how = match self.through {
-            Through::Smooth => "smooth",
-            Through::Straight => "straight",
-        };
-        let rows = match &self.rows {
-            Rows::Points(rows) => format!("{} points", rows.len()),
-            Rows::File { file, .. } => file.text.clone(),
-        };
-        format!("measured against {}, {rows}, {how}", self.against.text.trim())
-    }
-}
-
-/// Names of the data files of a sheet.
-pub(super) fn files(sheet: &str) -> Vec<String> {
-    let source = read(sheet, &mut Faults::default());
-    let mut names = Vec::new();
-    for entry in source.given {
-        if let Given::Measured(Measured { rows: Rows::File { file, .. }, .. }) = entry.value
-            && !names.contains(&file.text)
-        {
-            names.push(file.text);
-        }
-    }
-    names
-}
-
 /// A named entry.
 #[derive(Debug, Clone, PartialEq)]
 pub(super) struct Entry<T> {
@@ -164,7 +123,7 @@ pub(super) struct Declared {
 }
 
 /// The sections of a sheet.
-#[derive(Debug, Default)]
+#[derive(Debug, Clone, Default)]
 pub(super) struct Source {
     pub title: String,
     pub note: Option<String>,
@@ -177,6 +136,8 @@ pub(super) struct Source {
     pub conditions: Vec<Entry<Vec<Located>>>,
     pub report: Vec<Entry<Located>>,
     pub relative: Option<(f64, Range<usize>)>,
+    /// Load cases: data changed in each.
+    pub cases: Vec<Entry<Changes>>,
     /// Names whose entry is at fault: they are declared all the same.
     pub faulty: Vec<(String, Range<usize>)>,
 }
@@ -199,12 +160,11 @@ impl Source {
 const SECTIONS: [&str; 8] = ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];
 
 /// Sections that belong to parts of the contract that are not built yet.
-const LATER: [(&str, &str); 6] = [
+const LATER: [(&str, &str); 5] = [
     ("eigen", "eigenproblems"),
     ("solutions", "a search for several solutions"),
     ("path", "following a parameter"),
     ("sweep", "sweeps over data"),
-    ("cases", "load cases"),
     ("complex", "complex sheets"),
 ];
 
@@ -223,6 +183,7 @@ pub(super) fn read(sheet: &str, faults: &mut Faults) -> Source {
     for (key, value) in table.get_ref() {
         reader.section(&mut source, key.as_ref(), key.span(), value);
     }
+    reader.check_cases(&source);
     for (name, missing) in [
         ("span", source.coordinate.is_none()),
         ("unknowns", source.unknowns.is_empty() && source.faulty.is_empty()),
@@ -290,9 +251,10 @@ impl Reader<'_, '_> {
                 };
                 source.conditions.push(Entry { name, name_span, value });
             }),
+            "cases" => self.each(value, |r, entry, value| r.case(source, entry, value)),
             "accuracy" => self.each(value, |r, entry, value| r.accuracy(source, entry, value)),
             _ => {
-                let known = SECTIONS.into_iter().chain(["accuracy"]);
+                let known = SECTIONS.into_iter().chain(["accuracy", "cases"]);
                 let hint = nearest(key, known).map(|k| format!("did you mean `{k}`?")).unwrap_or_else(|| {
                     "the sections are given, span, unknowns, equations, conditions, report, accuracy".into()
                 });
@@ -381,77 +343,6 @@ impl Reader<'_, '_> {
             }
         }
         Some(Entry { name, name_span, value: Given::Pieces { pieces, otherwise } })
-    }
-
-    fn measured(&mut self, name: &str, place: Range<usize>, table: &Table<'_>) -> Option<Measured> {
-        let (mut against, mut through, mut rows, mut columns) = (None, Through::Smooth, None, None);
-        let mut sound = true;
-        for (key, value) in table {
-            match key.as_ref().as_ref() {
-                "against" => against = self.text(value),
-                "through" => match value.get_ref() {
-                    DeValue::String(how) if how == "smooth" => through = Through::Smooth,
-                    DeValue::String(how) if how == "straight" => through = Through::Straight,
-                    _ => {
-                        let message = "measured data run smooth or straight between their points";
-                        let hint = Some("write through = \"smooth\" or through = \"straight\"".into());
-                        self.faults.add("measured", value.span(), message, hint);
-                        sound = false;
-                    }
-                },
-                "points" => match value.get_ref() {
-                    DeValue::Array(list) => {
-                        let pairs: Vec<Option<[Located; 2]>> = list.iter().map(|pair| self.pair(pair)).collect();
-                        let pairs: Option<Vec<[Located; 2]>> = pairs.into_iter().collect();
-                        sound &= pairs.is_some();
-                        rows = pairs.map(|pairs| (Rows::Points(pairs), value.span()));
-                    }
-                    _ => sound &= self.pair(value).is_some(),
-                },
-                "file" => {
-                    let file = self.text(value)?;
-                    rows = Some((Rows::File { file, columns: None }, value.span()));
-                }
-                "columns" => columns = self.pair(value),
-                other => {
-                    let hint = nearest(other, ["against", "points", "file", "through", "columns"]);
-                    let hint = hint.map(|k| format!("did you mean `{k}`?"));
-                    let message = format!("`{other}` says nothing about measured data");
-                    self.faults.add("unknown key", key.span(), message, hint);
-                    sound = false;
-                }
-            }
-        }
-        if let (Some((Rows::File { columns: own, .. }, _)), Some(columns)) = (&mut rows, columns) {
-            *own = Some(columns);
-        }
-        match (against, rows) {
-            (Some(against), Some((rows, place))) if sound => Some(Measured { against, through, rows, place }),
-            (Some(_), Some(_)) => None,
-            (against, _) => {
-                if sound {
-                    let missing = if against.is_none() { "against what they are measured" } else { "points or a file" };
-                    let message = format!("measured data `{name}` lack {missing}");
-                    let hint = "write { against = \"T\", points = [[\"20 degC\", \"15.1 W/(m K)\"], ...] }";
-                    self.faults.add("measured", place, message, Some(hint.into()));
-                }
-                None
-            }
-        }
-    }
-
-    /// A list of two texts or numbers.
-    fn pair(&mut self, value: &Value<'_>) -> Option<[Located; 2]> {
-        match value.get_ref() {
-            DeValue::Array(list) if list.len() == 2 => {
-                let texts: Vec<Option<Located>> = list.iter().map(|v| self.text(v)).collect();
-                texts.into_iter().collect::<Option<Vec<Located>>>()?.try_into().ok()
-            }
-            _ => {
-                self.wrong(value, "a point is a pair: [\"20 degC\", \"15.1 W/(m K)\"]");
-                None
-            }
-        }
     }
 
     fn span(&mut self, source: &mut Source, (name, name_span): (String, Range<usize>), value: &Value<'_>) {
