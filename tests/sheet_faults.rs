@@ -506,22 +506,19 @@ fn what_is_not_built_yet_is_refused_in_one_sentence() {
             BASE,
             &[
                 ("title = \"Bench\"", "title = \"Bench\"\ncomplex = true"),
-                ("q = \"1 kN/m\"", "q = { against = \"x\", points = [] }"),
                 ("x = [\"0 m\", \"L\"]", "x = [\"0 m\", \"L\"]\nuntil = \"y = 0\""),
                 ("y'(L) = 0", "regular(y, L)"),
-                ("[report]", "[eigen]\n[solutions]\n[path]\n[sweep]\n[cases.a]\n[report]"),
+                ("[report]", "[eigen]\n[solutions]\n[path]\n[sweep]\n[report]"),
             ],
         ),
         &[
             (2, 1, "`complex`: complex sheets are not part of this version"),
-            (6, 7, "measured data are not part of this version"),
             (9, 1, "`until`: marching to an event is not part of this version"),
             (16, 23, "`regular`: singular ends are not part of this version"),
             (17, 2, "`eigen`: eigenproblems are not part of this version"),
             (18, 2, "`solutions`: a search for several solutions is not part of this version"),
             (19, 2, "`path`: following a parameter is not part of this version"),
             (20, 2, "`sweep`: sweeps over data are not part of this version"),
-            (21, 2, "`cases`: load cases are not part of this version"),
         ],
     );
     expect(

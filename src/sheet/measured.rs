@@ -38,7 +38,7 @@ pub(super) struct Declaration {
 #[derive(Debug, Clone)]
 enum Values {
     Written(Vec<[Formula; 2]>),
-    Read(Columns),
+    Read(Box<Columns>),
 }
 
 /// What has been made of a declaration.
@@ -92,7 +92,7 @@ impl Assembler<'_, '_> {
             }
             Rows::File { file, columns } => {
                 let columns = columns.as_ref().map(|c| c.each_ref().map(|l| l.text.as_str()));
-                Values::Read(from_file(file, columns, files, self.lowerer.faults)?)
+                Values::Read(Box::new(from_file(file, columns, files, self.lowerer.faults)?))
             }
         };
         let place = given.place.clone();
@@ -259,7 +259,7 @@ impl Lowerer<'_> {
         let ((x, y), dimension, absolute, places) = match &declared.values {
             Values::Written(rows) => self.written(name, rows, wanted)?,
             Values::Read(columns) => {
-                let Columns { units: [x, y], rows } = columns;
+                let Columns { units: [x, y], rows } = columns.as_ref();
                 if let Some(Some(wanted)) = wanted
                     && wanted != x.dimension
                 {
