@@ -101,7 +101,7 @@ complex = true"#, 2, 1, "not yet", r#"`complex`: complex sheets are not part of 
 L = ["1 m"]
 [report]"#, 17, 2, "not yet", r#"`sweep`: sweeps over data are not part of this version"#),
     // measured
-    (r#"k = "0.8 W/(m K)""#, r#"k = { against = "T", points = [] }"#, 4, 29, "measured", r#"`k` needs at least two points"#),
+    (r#"k = "0.8 W/(m K)""#, r#"k = { against = "T", points = [] }"#, 4, 31, "measured", r#"`k` needs at least two points"#),
     // comma
     (r#"0.8 W/(m K)"#, r#"0,8 W/(m K)"#, 4, 7, "syntax", r#"a comma cannot stand here"#),
     // a small letter for a capital, a prime forgotten
