@@ -279,7 +279,7 @@ fn counts_of_conditions() {
         &with(BASE, &[(", \"y'(L) = 0\"", "")]),
         &[(14, 1, "4 conditions are needed (order 4), 3 given: 2 at x = 0 m, 1 at x = 3 m")],
     );
-    hint(&with(BASE, &[(", \"y'(L) = 0\"", "")]), "1 more, most likely at x = 3 m; unknowns: `y` (order 4)");
+    hint(&with(BASE, &[(", \"y'(L) = 0\"", "")]), "`y` (order 4) lacks 1 condition at x = 3 m");
     expect(
         &with(BASE, &[("\"y'(L) = 0\"", "\"y'(L) = 0\", \"y''(L) = 0\", \"y(1 m) + y(2 m) = 0\"")]),
         &[(14, 1, "4 conditions are needed (order 4), 6 given: 2 at x = 0 m, 3 at x = 3 m, 1 over several points")],

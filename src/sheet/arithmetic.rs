@@ -5,7 +5,7 @@ use super::lower::{Lowerer, Typed};
 use super::source::Located;
 use crate::formula::graph::NodeId;
 use crate::formula::syntax::{Comparison, Expression, Kind, Operator, Span, Test};
-use crate::unit::Dimension;
+use crate::unit::{Dimension, Unit};
 
 impl Lowerer<'_> {
     /// The common dimension of two parts, or a fault that names both.
@@ -32,10 +32,31 @@ impl Lowerer<'_> {
             (Some(found), Some(wanted)) if found != wanted => {
                 let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
                 let message = format!("`{text}` is {} but {} is needed here", found.describe(), wanted.describe());
-                self.fault("dimension", at, &e.span, message, "")
+                let hint = if wanted == Dimension::default() {
+                    format!("divide it by a value of its own kind, as in {text}/(1 {})", Unit::si(found).text)
+                } else if found == Dimension::default() && matches!(e.kind, Kind::Number { .. }) {
+                    format!("give the number its unit: {text} {}", Unit::si(wanted).text)
+                } else {
+                    String::new()
+                };
+                self.fault("dimension", at, &e.span, message, &hint)
             }
             _ => Some(()),
         }
+    }
+
+    /// Refuses a place that does not measure what the coordinate does.
+    pub fn expect_place(&mut self, at: &Located, e: &Expression, typed: Typed) -> Option<()> {
+        let pure = Some(Dimension::default());
+        if self.coordinate_dimension == pure && typed.dimension.is_some() && typed.dimension != pure {
+            let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
+            let found = typed.dimension.unwrap_or_default().describe();
+            let name = &self.coordinate;
+            let message = format!("`{text}` is {found} but the ends of `{name}` are pure numbers");
+            let hint = format!("write the span with units: {name} = [\"0 m\", \"L\"]");
+            return self.fault("dimension", at, &e.span, message, &hint);
+        }
+        self.expect(at, e, typed, self.coordinate_dimension)
     }
 
     /// Refuses a difference of temperatures set against an absolute one.

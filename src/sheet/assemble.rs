@@ -353,7 +353,8 @@ impl<'s, 'f> Assembler<'s, 'f> {
                     if typed.dimension.is_some() && unit.dimension != dimension {
                         let message =
                             format!("this number is {}, not {}", dimension.describe(), unit.dimension.describe());
-                        let hint = crate::unit::mistaken(&unit, dimension).unwrap_or_default();
+                        let usual = || format!("ask for it in {} or the like", Unit::si(dimension).text);
+                        let hint = crate::unit::mistaken(&unit, dimension).unwrap_or_else(usual);
                         self.lowerer.fault::<()>("dimension", at, &span, message, &hint);
                         continue;
                     }

@@ -228,7 +228,7 @@ impl Lowerer<'_> {
     /// A point of the span with its side.
     pub fn point(&mut self, at: &Located, argument: &Argument) -> Option<(NodeId, Option<Side>)> {
         let point = self.lower(at, &argument.value)?;
-        self.expect(at, &argument.value, point, self.coordinate_dimension)?;
+        self.expect_place(at, &argument.value, point)?;
         self.scalar(at, &argument.value, point)?;
         let side = argument.side.map(|s| if s == Sign::Minus { Side::Left } else { Side::Right });
         Some((point.node, side))

@@ -7,6 +7,34 @@ use super::short;
 use crate::formula::graph::NodeId;
 use crate::model::Release;
 
+/// A condition as it counts: the unknowns that it speaks of, and the end (0 or 1) that it stands at.
+struct Tied {
+    unknowns: Vec<usize>,
+    end: Option<usize>,
+}
+
+/// Gives as many conditions as possible to an unknown that they speak of, no unknown more than it has room for.
+fn assigned(ties: &[Tied], room: &[usize]) -> Vec<Option<usize>> {
+    fn give(k: usize, ties: &[Tied], room: &[usize], owners: &mut [Option<usize>], seen: &mut [bool]) -> bool {
+        for &u in &ties[k].unknowns {
+            if std::mem::replace(&mut seen[u], true) {
+                continue;
+            }
+            let held: Vec<usize> = (0..ties.len()).filter(|j| owners[*j] == Some(u)).collect();
+            if held.len() < room[u] || held.into_iter().any(|j| give(j, ties, room, owners, seen)) {
+                owners[k] = Some(u);
+                return true;
+            }
+        }
+        false
+    }
+    let mut owners = vec![None; ties.len()];
+    for k in 0..ties.len() {
+        give(k, ties, room, &mut owners, &mut vec![false; room.len()]);
+    }
+    owners
+}
+
 impl Assembler<'_, '_> {
     /// Whether all points of a condition are points of the model.
     pub(super) fn inside(&self, read: &Read, points: &[f64]) -> bool {
@@ -55,12 +83,14 @@ impl Assembler<'_, '_> {
         let constants = self.lowerer.constants.len();
         let needed = order + constants + releases;
         let given = reads.iter().filter(|r| r.node.is_some()).count();
-        if given == needed {
+        // A section of conditions that was not recognised is a fault of its own.
+        if given == needed || (self.source.conditions.is_empty() && !self.lowerer.faults.is_empty()) {
             return;
         }
         let unit = self.coordinate_unit();
         let shown = |x: f64| format!("{} = {} {}", self.lowerer.coordinate, short(unit.from_si(x)), unit.text);
         let (mut from, mut to, mut inner, mut spread) = (0, 0, 0, 0);
+        let mut ties: Vec<Tied> = Vec::new();
         for node in reads.iter().filter_map(|r| r.node) {
             let slots = self.lowerer.all_slots(&[node]);
             let places: Vec<f64> = slots
@@ -71,9 +101,11 @@ impl Assembler<'_, '_> {
             let integral = slots.iter().any(|s| self.lowerer.functionals[*s as usize].runs());
             let small = 1e-12 * (points[points.len() - 1] - points[0]);
             let all = |x: f64| !places.is_empty() && !integral && places.iter().all(|p| (p - x).abs() <= small);
-            if all(points[0]) {
+            let end = [all(points[0]), all(points[points.len() - 1])].iter().position(|here| *here);
+            ties.push(Tied { unknowns: self.tied(&slots), end });
+            if end == Some(0) {
                 from += 1;
-            } else if all(points[points.len() - 1]) {
+            } else if end == Some(1) {
                 to += 1;
             } else if places.len() == 1 || (places.len() > 1 && places.iter().all(|p| (p - places[0]).abs() <= small)) {
                 inner += 1;
@@ -110,21 +142,87 @@ impl Assembler<'_, '_> {
             || self.source.equations.last().map_or(0..0, |e| e.name_span.clone()),
             |c| c.name_span.clone(),
         );
-        let hint = if given < needed {
-            let each: Vec<String> = self
-                .lowerer
-                .functions
-                .iter()
-                .enumerate()
-                .map(|(u, f)| format!("`{}` (order {})", f.name, self.true_order(u, orders)))
-                .collect();
-            let short = needed - given;
-            let end = if from < to { shown(points[0]) } else { shown(points[points.len() - 1]) };
-            format!("{short} more, most likely at {end}; unknowns: {}", each.join(", "))
-        } else {
-            format!("{} too many", given - needed)
+        let ends = [points[0], points[points.len() - 1]].map(shown);
+        let hint = match given < needed {
+            true => self.lacking(&ties, orders, &ends, needed - given, releases > inner),
+            false => {
+                let much = format!("{} too many", given - needed);
+                let flux = self.source.equations.first().and_then(|_| self.support(orders));
+                match flux.filter(|_| inner > releases) {
+                    Some(flux) => {
+                        format!("{much}: a support inside the span gives up a continuity, release({flux}, place)")
+                    }
+                    None => much,
+                }
+            }
         };
         self.lowerer.faults.add("condition count", place, message, Some(hint));
+    }
+
+    /// Unknown functions that a condition speaks of, fluxes counted for the unknown that they follow from.
+    fn tied(&self, slots: &std::collections::BTreeSet<u32>) -> Vec<usize> {
+        let functions = self.lowerer.functions.len();
+        let mut tied = Vec::new();
+        for slot in slots {
+            let expression = self.lowerer.functionals[*slot as usize].expression;
+            for (unknown, _) in self.lowerer.graph.jets_of(expression) {
+                let unknown = usize::from(unknown);
+                let carried = self.lowerer.carried.get(unknown.wrapping_sub(functions));
+                let first = carried.and_then(|c| self.lowerer.graph.jets_of(c.written).into_iter().next());
+                let own = if unknown < functions { Some(unknown) } else { first.map(|(u, _)| usize::from(u)) };
+                tied.extend(own.filter(|u| *u < functions && !tied.contains(u)));
+            }
+        }
+        tied
+    }
+
+    /// Which unknown lacks how many conditions at which end.
+    fn lacking(&self, ties: &[Tied], orders: &[u8], ends: &[String; 2], short: usize, inside: bool) -> String {
+        if inside {
+            return format!("{short} more: each jump or release needs one condition more at its place");
+        }
+        let room: Vec<usize> = (0..self.lowerer.functions.len()).map(|u| self.true_order(u, orders)).collect();
+        let owners = assigned(ties, &room);
+        let mut parts = Vec::new();
+        for (u, function) in self.lowerer.functions.iter().enumerate() {
+            let own = || ties.iter().zip(&owners).filter(|(_, owner)| **owner == Some(u)).map(|(tie, _)| tie);
+            let missing = room[u] - own().count();
+            if missing == 0 {
+                continue;
+            }
+            let at = |end: usize| own().filter(|tie| tie.end == Some(end)).count();
+            let [left, right] = [at(0), at(1)];
+            let place = match missing {
+                _ if left + missing <= right => format!(" at {}", ends[0]),
+                _ if right + missing <= left => format!(" at {}", ends[1]),
+                _ if left == right && missing % 2 == 0 => " on both ends together".to_owned(),
+                1 => " at one end".to_owned(),
+                _ => String::new(),
+            };
+            let s = if missing == 1 { "" } else { "s" };
+            parts.push(format!("`{}` (order {}) lacks {missing} condition{s}{place}", function.name, room[u]));
+        }
+        if parts.is_empty() {
+            return format!("{short} more: an unknown constant needs a condition of its own");
+        }
+        parts.join("; ")
+    }
+
+    /// The flux whose continuity a support gives up: the last one carried, as the sheet names it.
+    fn support(&mut self, orders: &[u8]) -> Option<String> {
+        let functions = self.lowerer.functions.len();
+        let last =
+            self.lowerer.carried.last().map(|c| (c.written, orders.get(functions + self.lowerer.carried.len() - 1)));
+        let (written, order) = last?;
+        let named = self.source.given.iter().find_map(|entry| {
+            let name = crate::formula::syntax::name(&entry.name)?;
+            let scalars = std::mem::replace(&mut self.lowerer.scalars, false);
+            let typed = self.lowerer.named(&name);
+            self.lowerer.scalars = scalars;
+            (typed?.node == written).then_some(name)
+        })?;
+        // The highest state of the flux itself.
+        Some(named + &"'".repeat(usize::from(*order?).saturating_sub(1)))
     }
 
     /// Order of an unknown with the fluxes that follow from it.

@@ -113,6 +113,9 @@ pub(super) fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) 
     if let Some(same) = known.iter().find(|k| k.eq_ignore_ascii_case(name)) {
         return Some(same);
     }
+    // A word that goes on where a known one ends, or the other way round: `maximum` for `max`.
+    let begins = |k: &&&str| k.len() >= 3 && name.len() >= 3 && (name.starts_with(**k) || k.starts_with(name));
+    let begun = known.iter().filter(begins).min_by_key(|k| (k.len().abs_diff(name.len()), **k)).copied();
     let best = known.into_iter().map(|k| (strsim::osa_distance(name, k), k)).min_by_key(|(d, k)| (*d, k.len(), *k))?;
     let most = match name.chars().count() {
         0 | 1 => 0,
@@ -120,5 +123,5 @@ pub(super) fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) 
         5..=8 => 2,
         _ => 3,
     };
-    (best.0 <= most).then_some(best.1)
+    if best.0 <= most { Some(best.1) } else { begun }
 }

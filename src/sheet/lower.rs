@@ -388,7 +388,12 @@ impl<'f> Lowerer<'f> {
         let near = nearest(name, known).map(|k| format!("did you mean `{k}`?"));
         let unit = || {
             let unit = Unit::parse(name, false).ok()?;
-            Some(format!("as a unit it belongs behind a number: `12 kN {0}` or `12 [kN*{0}]`", unit.text))
+            let unit = unit.text;
+            let behind = at.text.get(..span.start).is_some_and(|before| before.trim_end().ends_with('*'));
+            Some(match behind {
+                true => format!("as a unit it belongs behind a number: `12 kN {unit}` or `12 [kN*{unit}]`"),
+                false => format!("as a unit it belongs behind a number: `12 {unit}`"),
+            })
         };
         let hint = near.or_else(unit).unwrap_or_default();
         self.meanings.insert(name.to_owned(), Meaning::Faulty);

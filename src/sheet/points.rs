@@ -72,13 +72,14 @@ impl Assembler<'_, '_> {
         let inside = |x: f64| x >= span[0] - small && x <= span[1] + small;
         let unit = self.coordinate_unit();
         let shown = |x: f64| format!("{} {}", short(unit.from_si(x)), unit.text);
+        let reach = format!("the span runs from {} to {}", shown(span[0]), shown(span[1]));
         let mut points = span.to_vec();
         for (x, place) in breaks {
             if inside(*x) {
                 points.push(*x);
             } else {
                 let message = format!("the break at {} lies outside the span", shown(*x));
-                self.lowerer.faults.add("outside", place.clone(), message, None);
+                self.lowerer.faults.add("outside", place.clone(), message, Some(reach.clone()));
             }
         }
         for (node, place) in self.lowerer.limits.clone() {
@@ -87,7 +88,7 @@ impl Assembler<'_, '_> {
                 points.push(x);
             } else {
                 let message = format!("this piece ends at {}, outside the span", shown(x));
-                self.lowerer.faults.add("outside", place, message, None);
+                self.lowerer.faults.add("outside", place, message, Some(reach.clone()));
             }
         }
         for cover in std::mem::take(&mut self.lowerer.covers) {
@@ -110,7 +111,8 @@ impl Assembler<'_, '_> {
                     Some(x) if x > span[0] + small && x < span[1] - small => points.push(x),
                     _ => {
                         let message = "a jump or release must lie at a point inside the span";
-                        self.lowerer.faults.add("outside", read.at.span.clone(), message, None);
+                        let hint = "at an end write a condition instead: V(L) = -P";
+                        self.lowerer.faults.add("outside", read.at.span.clone(), message, Some(hint.into()));
                     }
                 }
             }
@@ -126,7 +128,7 @@ impl Assembler<'_, '_> {
             for (node, place) in functional.points.iter().zip(functional.point_places) {
                 if let Some(x) = self.lowerer.number_of(*node).filter(|x| !inside(*x)) {
                     let message = format!("this point, {}, lies outside the span", shown(x));
-                    self.lowerer.faults.add("outside", place, message, None);
+                    self.lowerer.faults.add("outside", place, message, Some(reach.clone()));
                 }
             }
         }

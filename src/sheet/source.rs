@@ -177,7 +177,10 @@ pub(super) fn read(sheet: &str, faults: &mut Faults) -> Source {
     let (table, errors) = Table::parse_recoverable(sheet);
     for error in errors {
         let span = error.span().unwrap_or(0..0);
-        faults.add(NOT_TOML, span, format!("not TOML: {}", error.message()), Some(TOML_HINT.into()));
+        let typographic =
+            sheet.get(span.clone()).is_some_and(|text| text.contains(['“', '”', '„', '‘', '’', '«', '»']));
+        let hint = if typographic { "write straight quotes: \"" } else { TOML_HINT };
+        faults.add(NOT_TOML, span, format!("not TOML: {}", error.message()), Some(hint.into()));
     }
     let mut reader = Reader { sheet, faults };
     for (key, value) in table.get_ref() {

@@ -91,7 +91,10 @@ pub fn mistaken(unit: &Unit, wanted: Dimension) -> Option<String> {
 }
 
 fn word(symbol: &str) -> Option<String> {
-    WORDS.iter().find(|(word, _)| *word == symbol).map(|(_, unit)| (*unit).into())
+    let lower = symbol.to_lowercase();
+    // A word may begin with a capital; short symbols may not, for there capitals decide.
+    let same = |word: &str| word == symbol || (word.chars().count() > 3 && word == lower);
+    WORDS.iter().find(|(word, _)| same(word)).map(|(_, unit)| (*unit).into())
 }
 
 /// `mm2`, `m²`

@@ -490,7 +490,7 @@ impl<'a> Parser<'a> {
                 error(span, "a comma cannot stand here", Some("decimals are written with a point: 3.5"))
             }
             Token::Comma => error(span, "a comma cannot stand here", None),
-            Token::Close => error(span, "this parenthesis was never opened", None),
+            Token::Close => error(span, "this parenthesis was never opened", Some("take it away, or open one before")),
             Token::Compare(_) => error(span, "a comparison stands only in if(test, a, b)", None),
             Token::Equals => error(span, "an equation cannot stand within an expression", None),
             Token::Plus | Token::Minus => error(span.clone(), format!("something is missing behind `{found}`"), None),

@@ -129,7 +129,7 @@ fn faults_have_place_message_and_hint() {
         ("a = b", 2..3, "an equation cannot stand here, only an expression", None),
         ("(a + b", 0..1, "this parenthesis is not closed", Some("a ) is missing")),
         ("f(a, g(b)", 1..2, "this parenthesis is not closed", Some("a ) is missing")),
-        ("a + b)", 5..6, "this parenthesis was never opened", None),
+        ("a + b)", 5..6, "this parenthesis was never opened", Some("take it away, or open one before")),
         ("a + ", 2..3, "something is missing behind `+`", None),
         ("a + * b", 2..3, "something is missing behind `+`", None),
         ("(a+)", 2..3, "something is missing behind `+`", None),
