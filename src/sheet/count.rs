@@ -195,7 +195,7 @@ impl Assembler<'_, '_> {
             let place = match missing {
                 _ if left + missing <= right => format!(" at {}", ends[0]),
                 _ if right + missing <= left => format!(" at {}", ends[1]),
-                _ if left == right && missing % 2 == 0 => " on both ends together".to_owned(),
+                _ if left == right && missing.is_multiple_of(2) => " on both ends together".to_owned(),
                 1 => " at one end".to_owned(),
                 _ => String::new(),
             };
