@@ -94,6 +94,17 @@ impl Mesh {
         Self { elements: self.elements.iter().map(|e| Element { nodes: e.nodes + more, ..*e }).collect() }
     }
 
+    /// The same elements, open at singular ends of the span.
+    pub(crate) fn opened(mut self, open: [bool; 2]) -> Self {
+        if let (true, Some(first)) = (open[0], self.elements.first_mut()) {
+            first.open = Some(Side::Left);
+        }
+        if let (true, Some(last)) = (open[1], self.elements.last_mut()) {
+            last.open = Some(Side::Right);
+        }
+        self
+    }
+
     /// Both ends of the span.
     pub fn span(&self) -> [f64; 2] {
         match (self.elements.first(), self.elements.last()) {

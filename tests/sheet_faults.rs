@@ -483,16 +483,23 @@ fn numbers_that_are_none() {
 #[test]
 fn points_where_the_equation_is_singular() {
     for equation in ["(1/x)*(x*k*T')' = 0", "(x*k*T')' = 0", "x*T'' + T' = 0"] {
-        expect(
-            &with(HEAT, &[("(k*T')' = 0", equation)]),
-            &[(
-                11,
-                8,
-                "at x = 0 m the factor of the highest derivative vanishes or is not finite: singular points are not \
-                 part of this version",
-            )],
-        );
+        let text = with(HEAT, &[("(k*T')' = 0", equation)]);
+        let message = "at the singular end x = 0 m this equation itself forces T'(0 m) = 0, which no condition says";
+        expect(&text, &[(11, 8, message)]);
+        let found = sheet::read(&text).expect_err("refused");
+        assert_eq!(found[0].hint.as_deref(), Some("write regular(T, 0 m) in place of \"left\""));
+        expect(&with(&text, &[("T(0 m) = Ta", "regular(T, 0 m)")]), &[]);
     }
+    let flux = with(HEAT, &[("(k*T')' = 0", "(x*k*T')' = 0"), ("[span]", "f = \"x*k*T'\"\n[span]")]);
+    expect(&with(&flux, &[("T(0 m) = Ta", "f(0 m) = 0")]), &[]);
+    expect(
+        &with(&flux, &[("T(0 m) = Ta", "f(0 m) = 3 W/m")]),
+        &[(14, 8, "`f(0 m) = 3 W/m` cannot be met: nothing in it varies at this end")],
+    );
+    expect(
+        &with(HEAT, &[("T(0 m) = Ta", "regular(T, 0 m)")]),
+        &[(13, 8, "`regular(T, 0 m)` says nothing: the equations are not singular there")],
+    );
     expect(
         &with(HEAT, &[("(k*T')' = 0", "(1/x)*(x*k*T')' = 0"), ("[\"0 m\"", "[\"1 mm\""), ("T(0 m)", "T(1 mm)")]),
         &[],
@@ -507,14 +514,12 @@ fn what_is_not_built_yet_is_refused_in_one_sentence() {
             &[
                 ("title = \"Bench\"", "title = \"Bench\"\ncomplex = true"),
                 ("x = [\"0 m\", \"L\"]", "x = [\"0 m\", \"L\"]\nuntil = \"y = 0\""),
-                ("y'(L) = 0", "regular(y, L)"),
                 ("[report]", "[eigen]\n[solutions]\n[path]\n[sweep]\n[report]"),
             ],
         ),
         &[
             (2, 1, "`complex`: complex sheets are not part of this version"),
             (9, 1, "`until`: marching to an event is not part of this version"),
-            (16, 23, "`regular`: singular ends are not part of this version"),
             (17, 2, "`eigen`: eigenproblems are not part of this version"),
             (18, 2, "`solutions`: a search for several solutions is not part of this version"),
             (19, 2, "`path`: following a parameter is not part of this version"),

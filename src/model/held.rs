@@ -149,6 +149,10 @@ impl Model for Held<'_> {
         known
     }
 
+    fn written_out(&self, equation: usize) -> bool {
+        self.model.written_out(equation)
+    }
+
     fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
         self.model.admissible(x, jets, &self.all(constants))
     }

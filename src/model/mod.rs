@@ -190,6 +190,12 @@ pub trait Model: Sync {
         let _ = (index, jets, constants, out);
         false
     }
+    /// Whether an equation that is singular at an end of the span is known to be written out, (r k T')' as r k T'' + (r k)' T',
+    /// so that it admits no false solutions as a flux carried through that end would.
+    fn written_out(&self, equation: usize) -> bool {
+        let _ = equation;
+        false
+    }
     /// Whether jets at x lie where the equations are meant to hold (`above`, `below` of a sheet).
     fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
         let _ = (x, jets, constants);

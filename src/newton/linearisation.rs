@@ -141,6 +141,10 @@ impl Model for Linearisation<'_> {
         self.model.releases()
     }
 
+    fn written_out(&self, equation: usize) -> bool {
+        self.model.written_out(equation)
+    }
+
     fn unknown_name(&self, unknown: usize) -> String {
         self.model.unknown_name(unknown)
     }

@@ -6,6 +6,7 @@ use super::fault::{Fault, Faults};
 use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
 use super::reduce::Reduction;
+use super::singular::{Expanded, Singular};
 use super::source::{self, Given, Located, MOST_BYTES, Source};
 use super::{DataFile, HeldDatum, Item, Reading, Sheet, Wanted};
 use crate::formula::graph::{Node, NodeId};
@@ -52,6 +53,9 @@ pub(super) struct Assembler<'s, 'f> {
     /// Data files of the sheet.
     files: &'s [DataFile],
     pub lowerer: Lowerer<'f>,
+    /// Equations that are singular at an end, and the fluxes of those, which are not carried.
+    pub singular: Vec<Singular>,
+    pub expanded: Vec<Expanded>,
 }
 
 /// An equation with its fluxes carried.
@@ -67,13 +71,20 @@ pub(super) struct Carrying {
 
 impl<'s, 'f> Assembler<'s, 'f> {
     pub fn new(source: &'s Source, reading: &Reading<'s>, faults: &'f mut Faults) -> Self {
-        Self { source, held: reading.held, files: reading.files, lowerer: Lowerer::new(faults) }
+        Self {
+            source,
+            held: reading.held,
+            files: reading.files,
+            lowerer: Lowerer::new(faults),
+            singular: Vec::new(),
+            expanded: Vec::new(),
+        }
     }
 
     pub fn run(mut self) -> Option<Sheet> {
         self.declare();
         let span = self.span();
-        let equations = self.equations();
+        let equations = self.equations(span);
         let fluxes: Vec<Flux> = equations.as_ref().map(|e| e.1.clone()).unwrap_or_default();
         self.lowerer.scalars = true;
         self.lowerer.carried = fluxes.iter().map(|f| Carried { written: f.written, unknown: f.unknown }).collect();
@@ -228,7 +239,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
     }
 
     /// Lowers the equations and carries their fluxes.
-    fn equations(&mut self) -> Option<(Vec<Carrying>, Vec<Flux>)> {
+    fn equations(&mut self, span: Option<[f64; 2]>) -> Option<(Vec<Carrying>, Vec<Flux>)> {
         let source = self.source;
         let mut lowered = Vec::new();
         let mut complete = true;
@@ -269,9 +280,21 @@ impl<'s, 'f> Assembler<'s, 'f> {
             let hint = "write one equation for each unknown that is not constant";
             self.lowerer.faults.add("equation count", place, message, Some(hint.into()));
         }
+        for (k, equation) in lowered.iter().enumerate() {
+            let singular = span.map_or_else(Vec::new, |span| self.singular(k, equation.written, span));
+            if !singular.is_empty() {
+                let expanded = self.expanded(k, equation.written);
+                self.singular.extend(singular);
+                self.expanded.extend(expanded);
+            }
+        }
         let mut carrier = Carrier { graph: &mut self.lowerer.graph, fluxes: Vec::new(), next: functions as u16 };
         let mut stepping = Vec::new();
         for (k, equation) in lowered.iter_mut().enumerate() {
+            if self.singular.iter().any(|s| s.equation == k) {
+                equation.main = carrier.graph.expand(equation.written);
+                continue;
+            }
             match carrier.carry(equation.written) {
                 Ok(main) => equation.main = main,
                 Err(_) => stepping.push(k),
@@ -444,8 +467,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 *at = order.max(*at);
             }
         }
-        for equation in &equations {
-            self.check_steps(equation, &fluxes, &points);
+        for (k, equation) in equations.iter().enumerate() {
+            if !self.singular.iter().any(|s| s.equation == k) {
+                self.check_steps(equation, &fluxes, &points);
+            }
         }
         let owners = self.owners(&equations, &nodes, &orders)?;
         self.lowerer.reduction = Reduction::new(&mut self.lowerer.graph, &nodes, &orders, &owners);
@@ -454,7 +479,9 @@ impl<'s, 'f> Assembler<'s, 'f> {
             // Refused already; what such a condition ties cannot be counted.
             return None;
         }
-        let releases = self.releases(&reads, &orders, &points)?;
+        let (singular, expanded) = (std::mem::take(&mut self.singular), std::mem::take(&mut self.expanded));
+        let reads = self.regularity(reads, &equations, &singular, &expanded, &points)?;
+        let releases = self.releases(&reads, &expanded, &orders, &points)?;
         self.check_count(&reads, &orders, releases.len(), &points);
         let order: usize = orders.iter().map(|m| usize::from(*m)).sum();
 
@@ -506,6 +533,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 .chain(running.iter().map(|_| "an integral".into()))
                 .collect(),
             equation_names,
+            written_out: singular.iter().map(|s| s.equation).collect(),
             limits,
             constant_limits,
             guess,
@@ -514,7 +542,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         };
         self.check_poles(&equations, &nodes, model.layout.unknowns(), &points);
         if linear {
-            self.check_regular(&model, &equations, &nodes)?;
+            self.check_regular(&model, &equations, &nodes, &singular)?;
         }
         let unknowns = orders.len();
         let curves = self.curves(unknowns, &points);

@@ -148,9 +148,7 @@ impl Lowerer<'_> {
                 self.asked(at, e, name, arguments)
             }
             ("release", _) => self.fault("release", at, &e.span, "`release` stands alone, as a condition", ""),
-            ("regular", _) => {
-                self.fault("not yet", at, name_span, "`regular`: singular ends are not part of this version", "")
-            }
+            ("regular", _) => self.fault("regular", at, &e.span, "`regular` stands alone, as a condition", ""),
             ("fold", _) => self.fault("not yet", at, name_span, "`fold`: paths are not part of this version", ""),
             _ => self.undefined(at, name, name_span),
         }

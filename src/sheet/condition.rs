@@ -18,6 +18,8 @@ pub(super) struct Read {
     pub node: Option<NodeId>,
     /// A continuity given up: what may jump, and where.
     pub release: Option<(NodeId, NodeId, String)>,
+    /// The end at which it only says that the solution is smooth.
+    pub regular: Option<NodeId>,
 }
 
 /// A condition with its points found.
@@ -49,13 +51,17 @@ pub(super) enum Refusal {
 impl Lowerer<'_> {
     /// Reads one condition.
     pub fn condition(&mut self, name: &str, at: &Located) -> Option<Read> {
-        let read = |node, release| Read { name: name.to_owned(), at: at.clone(), node, release };
+        let read = |node, release| Read { name: name.to_owned(), at: at.clone(), node, release, regular: None };
         let alone = if at.text.contains('=') { None } else { syntax::parse(&at.text).ok() };
-        if let Some(whole) = &alone
-            && matches!(&whole.kind, Kind::Call { name, .. } if name == "regular")
+        if let Some(Expression { kind: Kind::Call { name: function, arguments, .. }, span }) = &alone
+            && function == "regular"
         {
-            self.lower(at, whole);
-            return None;
+            let [what, point] = &arguments[..] else {
+                return self.fault("arguments", at, span, "write regular(unknown, end)", "");
+            };
+            self.lower(at, &what.value)?;
+            let point = self.point(at, point)?;
+            return Some(Read { regular: Some(point.0), ..read(None, None) });
         }
         if let Some(Expression { kind: Kind::Call { name: function, arguments, .. }, span }) = alone
             && function == "release"

@@ -4,6 +4,7 @@ use super::assemble::Assembler;
 use super::condition::{Read, Running};
 use super::points::SAME_POINT;
 use super::short;
+use super::singular::Expanded;
 use crate::formula::graph::NodeId;
 use crate::model::Release;
 
@@ -50,7 +51,13 @@ impl Assembler<'_, '_> {
     }
 
     /// Continuities given up; `None` if some cannot be.
-    pub(super) fn releases(&mut self, reads: &[Read], orders: &[u8], points: &[f64]) -> Option<Vec<Release>> {
+    pub(super) fn releases(
+        &mut self,
+        reads: &[Read],
+        expanded: &[Expanded],
+        orders: &[u8],
+        points: &[f64],
+    ) -> Option<Vec<Release>> {
         let before = self.lowerer.faults.len();
         let mut releases = Vec::new();
         for read in reads {
@@ -59,7 +66,8 @@ impl Assembler<'_, '_> {
             let x = self.lowerer.number_of(*point)?;
             let near = |k: &usize| (points[*k] - x).abs();
             let point = (0..points.len()).min_by(|p, q| near(p).total_cmp(&near(q)))?;
-            let state = self.lowerer.state_of(*what).filter(|(u, k)| *k < orders[usize::from(*u)]);
+            let state = self.lowerer.state_of(*what).or_else(|| self.behind_flux(*what, expanded));
+            let state = state.filter(|(u, k)| *k < orders[usize::from(*u)]);
             let Some((unknown, order)) = state else {
                 let message = format!("`{text}` is not one of the continuous quantities of this problem");
                 let hint = "name an unknown, one of its lower derivatives, or a flux as it stands in the equation";

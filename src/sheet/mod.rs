@@ -30,6 +30,7 @@ mod piece;
 mod points;
 mod pole;
 mod reduce;
+mod singular;
 mod source;
 mod start;
 mod statement;

@@ -186,6 +186,8 @@ pub struct SheetModel {
     pub(super) releases: Vec<Release>,
     pub(super) unknown_names: Vec<String>,
     pub(super) equation_names: Vec<String>,
+    /// Equations that are singular at an end and written out.
+    pub(super) written_out: Vec<usize>,
     /// Limits of unknowns: index, lower and upper bound, both exclusive.
     pub(super) limits: Vec<(usize, f64, f64)>,
     /// The same for unknown constants.
@@ -255,6 +257,10 @@ impl Model for SheetModel {
     fn condition_rounding(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> bool {
         self.ties[index].rounding(&self.layout, jets, constants, out);
         true
+    }
+
+    fn written_out(&self, equation: usize) -> bool {
+        self.written_out.contains(&equation)
     }
 
     fn admissible(&self, _x: f64, jets: &[f64], constants: &[f64]) -> bool {

@@ -62,14 +62,15 @@ pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<So
 /// Fields to start from: constant ones at which the equations make sense, and what one linear solve makes of
 /// each, which meets all linear conditions.
 fn starts(model: &dyn Model, settings: &Settings<'_>) -> Result<Vec<Field>> {
-    let mesh = Mesh::uniform(model.points(), 1, 16);
+    let closed = Mesh::uniform(model.points(), 2, 16);
     let mut library = Library::suited(model);
     let mut starts = Vec::new();
     starts.extend(guessed(model, &mut library)?);
     for level in [0.0, 1.0] {
-        let flat = constant(model, &mesh, level, &mut library)?;
+        let flat = constant(model, &closed, level, &mut library)?;
         let linear = Linearisation::new(model, &flat, &flat);
         let Ok(scale) = exponents::scales(&linear) else { continue };
+        let mesh = closed.clone().opened(exponents::open_ends(&linear, &scale)?);
         let mut solver = Solver { model: &linear, settings, scale, library: Library::suited(model), pass: 0 };
         match solver.solve(&mesh, None, &Perturbation::NONE) {
             Ok(pass) => starts.push(pass.field),
@@ -173,7 +174,8 @@ impl<'a> Run<'a> {
     fn new(model: &'a dyn Model, settings: &'a Settings<'a>, start: &Field, budget: usize) -> Result<Self> {
         let linear = Linearisation::new(model, start, start);
         let scale = exponents::scales(&linear)?;
-        let mesh = seed::seed(&linear, &scale, [false; 2], settings.most_elements)?;
+        let open = exponents::open_ends(&linear, &scale)?;
+        let mesh = seed::seed(&linear, &scale, open, settings.most_elements)?;
         Self::on(model, settings, start, mesh, budget)
     }
 
