@@ -104,16 +104,15 @@ impl Assembler<'_, '_> {
         let whole = graph.expand(written);
         let length = span[1] - span[0];
         let mut found = Vec::new();
-        for end in 0..2 {
+        for (end, x) in span.into_iter().enumerate() {
             let inward = if end == 0 { length } else { -length };
-            let here = graph.in_piece(whole, span[end] + BESIDE * inward);
-            let Some(cleared) = cleared(graph, here, span[end]) else { continue };
+            let here = graph.in_piece(whole, x + BESIDE * inward);
+            let Some(cleared) = cleared(graph, here, x) else { continue };
             let tops = tops(graph, cleared);
             let highest = tops.values().copied().max().unwrap_or(0);
             let vanishes = tops.iter().all(|(unknown, order)| {
                 let factor = graph.partial(cleared, Variable::Jet { unknown: *unknown, order: *order });
-                let (at, inside) =
-                    (value(graph, factor, span[end], 0.9), value(graph, factor, span[end] + INSIDE * inward, 0.9));
+                let (at, inside) = (value(graph, factor, x, 0.9), value(graph, factor, x + INSIDE * inward, 0.9));
                 matches!((at, inside), (Some(at), Some(inside)) if at.abs() <= ZERO * inside.abs())
             });
             if highest > 0 && vanishes {
@@ -321,7 +320,7 @@ impl Assembler<'_, '_> {
         let row = self.coefficients(relation, x);
         let rest = self.rest_at_zero(relation, x);
         let mut terms: Vec<(&(u16, u8), &f64)> = row.iter().filter(|(_, v)| **v != 0.0).collect();
-        terms.sort_by(|a, b| b.0.1.cmp(&a.0.1));
+        terms.sort_by_key(|term| std::cmp::Reverse(term.0.1));
         match (&terms[..], rest) {
             ([((unknown, order), _)], Some(0.0)) => {
                 let name = self.lowerer.functions.get(usize::from(*unknown)).map_or("u", |f| f.name.as_str());
