@@ -53,6 +53,9 @@ pub(super) enum Task {
         /// Solve by a second, independent route as well and show the difference
         #[arg(long)]
         cross_check: bool,
+        /// Give up after so many seconds
+        #[arg(long, value_name = "SECONDS", value_parser = seconds)]
+        time_limit: Option<f64>,
     },
     /// Read a sheet, count, check dimensions, show the problem as understood; solve nothing
     Check {
@@ -62,6 +65,35 @@ pub(super) enum Task {
         #[arg(long)]
         json: bool,
     },
+    /// Read a record, see whether its files still belong together, solve it again, and say which numbers agree
+    Recheck {
+        /// The folder that --record wrote
+        record: PathBuf,
+        /// Print JSON instead of text
+        #[arg(long)]
+        json: bool,
+        /// Give up after so many seconds
+        #[arg(long, value_name = "SECONDS", value_parser = seconds)]
+        time_limit: Option<f64>,
+    },
+    /// Set two records side by side: differences against their bars
+    Compare {
+        /// The folder of a record
+        first: PathBuf,
+        /// The folder of another one
+        second: PathBuf,
+        /// Print JSON instead of text
+        #[arg(long)]
+        json: bool,
+    },
+}
+
+/// A time that can be waited for.
+fn seconds(text: &str) -> Result<f64, String> {
+    match text.parse::<f64>() {
+        Ok(seconds) if seconds > 0.0 && seconds <= 1e7 => Ok(seconds),
+        _ => Err("a number of seconds, more than 0".into()),
+    }
 }
 
 /// When messages are coloured.

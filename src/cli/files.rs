@@ -45,17 +45,22 @@ pub(super) fn sheet(name: &str) -> Result<String, Failure> {
 /// Largest data file, in bytes.
 const MOST_DATA: u64 = 4_000_000;
 
+/// A whole file, unless it is larger than `most` bytes; else why not.
+pub(super) fn bytes(path: &Path, most: u64) -> Result<Vec<u8>, String> {
+    let mut bytes = Vec::new();
+    let opened = File::open(path).and_then(|f| f.take(most + 1).read_to_end(&mut bytes));
+    opened.map_err(|error| format!("cannot be read: {error}"))?;
+    if bytes.len() as u64 > most {
+        return Err(format!("is larger than {most} bytes, the limit of such a file"));
+    }
+    Ok(bytes)
+}
+
 /// The data files that a sheet names; their names are relative to the sheet.
 pub(super) fn data(name: &str, text: &str) -> Vec<DataFile> {
     let folder = Path::new(name).parent().unwrap_or(Path::new(""));
     let read = |file: &str| -> Result<String, String> {
-        let mut bytes = Vec::new();
-        let opened = File::open(folder.join(file)).and_then(|f| f.take(MOST_DATA + 1).read_to_end(&mut bytes));
-        opened.map_err(|error| format!("cannot be read: {error}"))?;
-        if bytes.len() as u64 > MOST_DATA {
-            return Err(format!("is larger than {MOST_DATA} bytes, the limit of a data file"));
-        }
-        String::from_utf8(bytes).map_err(|_| "is not UTF-8 text".to_owned())
+        String::from_utf8(bytes(&folder.join(file), MOST_DATA)?).map_err(|_| "is not UTF-8 text".to_owned())
     };
     let content = |file: String| DataFile { content: read(&file), name: file };
     sheet::files(text).into_iter().map(content).collect()

@@ -8,17 +8,20 @@ mod arguments;
 mod faults;
 mod files;
 mod progress;
+mod recheck;
+mod solving;
 
-use crate::error::Error;
 use crate::record::build::{self, Origin};
-use crate::record::outcome::{Outcome, Status};
-use crate::record::{cases, json, text};
-use crate::sheet::{self, Reading, Sheet};
+use crate::record::digests::{self, digest};
+use crate::record::outcome::Status;
+use crate::record::{json, text};
+use crate::sheet::{self, DataFile, Reading, Sheet};
 use arguments::{Arguments, Colour, Task};
 use clap::Parser;
-use sha2::{Digest, Sha256};
 use std::io::{IsTerminal, Write};
+use std::path::Path;
 use std::process::ExitCode;
+use std::time::Duration;
 
 /// Every asked number met its accuracy.
 const GOOD: u8 = 0;
@@ -41,11 +44,18 @@ pub fn main() -> ExitCode {
             return ExitCode::from(if asked { GOOD } else { NO_SENSE });
         }
     };
+    let colour = arguments.colour;
     let code = match &arguments.task {
-        Task::Solve { sheet, json, record, cross_check } => {
-            solve(sheet, *json, record.as_deref(), *cross_check, arguments.colour)
+        Task::Solve { sheet, json, record, cross_check, time_limit } => {
+            let limit = time_limit.map(Duration::from_secs_f64);
+            let wish = Wish { json: *json, record: record.as_deref(), cross_check: *cross_check, limit, colour };
+            solve(sheet, &wish)
         }
-        Task::Check { sheet, json } => check(sheet, *json, arguments.colour),
+        Task::Check { sheet, json } => check(sheet, *json, colour),
+        Task::Recheck { record, json, time_limit } => {
+            recheck::recheck(record, *json, time_limit.map(Duration::from_secs_f64))
+        }
+        Task::Compare { first, second, json } => recheck::compare(first, second, *json),
     };
     ExitCode::from(code)
 }
@@ -79,7 +89,7 @@ fn coloured(choice: Colour) -> bool {
 }
 
 /// Reads and checks a sheet; faults are reported.
-fn read(name: &str, as_json: bool, colour: Colour) -> Result<(Sheet, String), u8> {
+fn read(name: &str, as_json: bool, colour: Colour) -> Result<(Sheet, String, Vec<DataFile>), u8> {
     let text = files::sheet(name).map_err(|failure| {
         complain(&failure.message, failure.hint);
         NO_SENSE
@@ -90,7 +100,7 @@ fn read(name: &str, as_json: bool, colour: Colour) -> Result<(Sheet, String), u8
             for warning in &sheet.warnings {
                 eprintln!("warning: {warning}");
             }
-            Ok((sheet, text))
+            Ok((sheet, text, data))
         }
         Err(found) => {
             eprint!("{}", faults::render(name, &text, &found, coloured(colour)));
@@ -103,13 +113,13 @@ fn read(name: &str, as_json: bool, colour: Colour) -> Result<(Sheet, String), u8
 }
 
 fn check(name: &str, as_json: bool, colour: Colour) -> u8 {
-    let (sheet, text) = match read(name, as_json, colour) {
+    let (sheet, text, _) = match read(name, as_json, colour) {
         Ok(read) => read,
         Err(code) => return code,
     };
     let outcome = build::unsolved(&sheet, Origin { source: name, text: &text });
     if as_json {
-        return say(&json::statement(&outcome, &digest(&text), VERSION));
+        return say(&json::statement(&outcome, &digest(text.as_bytes()), VERSION));
     }
     let s = &sheet.statement;
     let conditions = s.order + s.constants + s.releases;
@@ -118,63 +128,43 @@ fn check(name: &str, as_json: bool, colour: Colour) -> u8 {
     say(&(text::statement(&outcome) + &count))
 }
 
-fn solve(name: &str, as_json: bool, record: Option<&std::path::Path>, cross_check: bool, colour: Colour) -> u8 {
-    let (sheet, text) = match read(name, as_json, colour) {
+/// How a sheet is to be solved.
+struct Wish<'a> {
+    json: bool,
+    record: Option<&'a Path>,
+    cross_check: bool,
+    limit: Option<Duration>,
+    colour: Colour,
+}
+
+fn solve(name: &str, wish: &Wish<'_>) -> u8 {
+    let (sheet, text, data) = match read(name, wish.json, wish.colour) {
         Ok(read) => read,
         Err(code) => return code,
     };
     let origin = Origin { source: name, text: &text };
-    let progress = progress::Progress::start();
-    let watch = |step| progress.step(step);
-    let solved = sheet.solve(Some(&watch));
-    let mut answers: Vec<cases::Answer<'_>> = Vec::new();
-    let mut stopped = matches!(solved, Err(Error::Interrupted));
-    for case in sheet.cases() {
-        if stopped {
-            break;
-        }
-        answers.push((case, case.sheet.solve(Some(&watch))));
-        stopped = matches!(answers.last(), Some((_, Err(Error::Interrupted))));
-    }
-    progress.finish();
-    if stopped {
-        complain("interrupted: nothing was written", None);
-        return NOT_MET;
-    }
-    let mut outcome = match &solved {
-        Ok(solution) => build::solved(&sheet, solution, origin, cross_check),
-        Err(error) => build::failed(&sheet, origin, error),
-    };
-    cases::join(&mut outcome, &sheet, solved.as_ref().ok(), &answers, origin);
+    let Some(outcome) = solving::solve(&sheet, origin, wish.cross_check, wish.limit) else { return NOT_MET };
     if let Some(reason) = outcome.reason.as_ref().filter(|_| outcome.status == Status::Failed) {
         complain(&format!("{name}: {reason}"), None);
     }
-    let digest = digest(&text);
-    let mut code = if as_json {
+    let digest = digest(text.as_bytes());
+    let mut code = if wish.json {
         say(&json::document(&outcome, &digest, VERSION, false))
     } else if outcome.status == Status::Failed {
         GOOD
     } else {
         say(&text::results(&outcome))
     };
-    if let Some(folder) = record
-        && let Err(failure) = files::write_record(folder, &rendered(&outcome, &digest))
-    {
-        complain(&failure.message, failure.hint);
-        code = NO_SENSE;
+    if let Some(folder) = wish.record {
+        let mut files = crate::record::files(&outcome, &digest, VERSION);
+        digests::seal(&mut files, &data);
+        if let Err(failure) = files::write_record(folder, &files) {
+            complain(&failure.message, failure.hint);
+            code = NO_SENSE;
+        }
     }
     match outcome.status {
         Status::Solved => code,
         _ => code.max(NOT_MET),
     }
-}
-
-/// The files of a record: name inside the folder, and content.
-fn rendered(outcome: &Outcome, digest: &str) -> Vec<(String, Vec<u8>)> {
-    crate::record::files(outcome, digest, VERSION)
-}
-
-/// SHA-256 of the sheet, in hexadecimal.
-fn digest(text: &str) -> String {
-    Sha256::digest(text.as_bytes()).iter().map(|b| format!("{b:02x}")).collect()
 }

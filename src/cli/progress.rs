@@ -15,14 +15,20 @@ static STOP: AtomicBool = AtomicBool::new(false);
 pub(super) struct Progress {
     start: Instant,
     bar: OnceLock<ProgressBar>,
+    limit: Option<Duration>,
+}
+
+/// Whether Ctrl-C was pressed.
+pub(super) fn interrupted() -> bool {
+    STOP.load(Ordering::SeqCst)
 }
 
 impl Progress {
     /// Starts watching; Ctrl-C from now on ends the solve in order.
-    pub fn start() -> Self {
+    pub fn start(limit: Option<Duration>) -> Self {
         // A second handler cannot be set; then the default one ends the program, which is as good.
         let _ = ctrlc::set_handler(|| STOP.store(true, Ordering::SeqCst));
-        Self { start: Instant::now(), bar: OnceLock::new() }
+        Self { start: Instant::now(), bar: OnceLock::new(), limit }
     }
 
     /// Takes in a step; false stops the solve.
@@ -38,7 +44,7 @@ impl Progress {
             bar.set_message(format!("pass {}, element {} of {}", step.pass, step.done, step.elements));
             bar.tick();
         }
-        !STOP.load(Ordering::SeqCst)
+        !interrupted() && self.limit.is_none_or(|limit| self.start.elapsed() < limit)
     }
 
     /// Takes the line away.

@@ -10,6 +10,10 @@ pub mod number;
 pub mod cases;
 /// Envelopes over load cases.
 pub mod envelope;
+/// Records read back and set side by side.
+pub mod compare;
+/// Digests of the files of a record.
+pub mod digests;
 /// Results for people, on a terminal.
 pub mod text;
 /// Results for programs.

@@ -1,0 +1,42 @@
+//! One solve with its cases, watched.
+
+use super::{complain, progress};
+use crate::error::Error;
+use crate::record::build::{self, Origin};
+use crate::record::cases;
+use crate::record::outcome::Outcome;
+use crate::sheet::Sheet;
+use std::time::Duration;
+
+/// Solves a sheet and its cases; `None` when interrupted or out of time, which has been said.
+pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit: Option<Duration>) -> Option<Outcome> {
+    let progress = progress::Progress::start(limit);
+    let watch = |step| progress.step(step);
+    let solved = sheet.solve(Some(&watch));
+    let mut answers: Vec<cases::Answer<'_>> = Vec::new();
+    let mut stopped = matches!(solved, Err(Error::Interrupted));
+    for case in sheet.cases() {
+        if stopped {
+            break;
+        }
+        answers.push((case, case.sheet.solve(Some(&watch))));
+        stopped = matches!(answers.last(), Some((_, Err(Error::Interrupted))));
+    }
+    progress.finish();
+    if stopped {
+        match limit.filter(|_| !progress::interrupted()) {
+            Some(limit) => complain(
+                &format!("not solved within the {} s allowed: nothing was written", limit.as_secs_f64()),
+                Some("allow more with --time-limit, or ask for less accuracy"),
+            ),
+            None => complain("interrupted: nothing was written", None),
+        }
+        return None;
+    }
+    let mut outcome = match &solved {
+        Ok(solution) => build::solved(sheet, solution, origin, cross_check),
+        Err(error) => build::failed(sheet, origin, error),
+    };
+    cases::join(&mut outcome, sheet, solved.as_ref().ok(), &answers, origin);
+    Some(outcome)
+}
