@@ -56,6 +56,9 @@ pub(super) enum Task {
         /// Give up after so many seconds
         #[arg(long, value_name = "SECONDS", value_parser = seconds)]
         time_limit: Option<f64>,
+        /// Solve again whenever the sheet or one of its data files changes, until Ctrl-C
+        #[arg(long)]
+        watch: bool,
     },
     /// Read a sheet, count, check dimensions, show the problem as understood; solve nothing
     Check {
@@ -76,6 +79,24 @@ pub(super) enum Task {
         #[arg(long, value_name = "SECONDS", value_parser = seconds)]
         time_limit: Option<f64>,
     },
+    /// Write a commented starting sheet that solves as it stands
+    New {
+        /// What is to be calculated
+        #[arg(value_enum)]
+        kind: Kind,
+        /// The file to write; without it the sheet goes to standard output
+        file: Option<PathBuf>,
+    },
+    /// Print the JSON Schema of the sheet, for editors
+    Schema,
+    /// Print completions for a shell
+    Completions {
+        /// The shell
+        #[arg(value_enum)]
+        shell: clap_complete::Shell,
+    },
+    /// Print the manual page, for man
+    Manual,
     /// Set two records side by side: differences against their bars
     Compare {
         /// The folder of a record
@@ -86,6 +107,25 @@ pub(super) enum Task {
         #[arg(long)]
         json: bool,
     },
+}
+
+/// Kinds of starting sheets.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub(super) enum Kind {
+    /// Beam on two supports
+    Beam,
+    /// Column with a bow under its load
+    Column,
+    /// Pin fin in an air stream
+    Fin,
+    /// Pipe that loses heat to the ground
+    Pipe,
+    /// Tubular reactor with axial dispersion
+    Reactor,
+    /// Stepped shaft under torsion
+    Shaft,
+    /// Wall of two layers
+    Wall,
 }
 
 /// A time that can be waited for.

@@ -5,11 +5,13 @@
 //! be read or written.
 
 mod arguments;
+mod extras;
 mod faults;
 mod files;
 mod progress;
 mod recheck;
 mod solving;
+mod watch;
 
 use crate::record::build::{self, Origin};
 use crate::record::digests::{self, digest};
@@ -46,15 +48,28 @@ pub fn main() -> ExitCode {
     };
     let colour = arguments.colour;
     let code = match &arguments.task {
-        Task::Solve { sheet, json, record, cross_check, time_limit } => {
+        Task::Solve { sheet, json, record, cross_check, time_limit, watch } => {
             let limit = time_limit.map(Duration::from_secs_f64);
+            progress::listen();
             let wish = Wish { json: *json, record: record.as_deref(), cross_check: *cross_check, limit, colour };
-            solve(sheet, &wish)
+            if *watch {
+                watch::watch(sheet, &wish)
+            } else {
+                progress::deadline(limit);
+                solve(sheet, &wish)
+            }
         }
         Task::Check { sheet, json } => check(sheet, *json, colour),
         Task::Recheck { record, json, time_limit } => {
-            recheck::recheck(record, *json, time_limit.map(Duration::from_secs_f64))
+            let limit = time_limit.map(Duration::from_secs_f64);
+            progress::listen();
+            progress::deadline(limit);
+            recheck::recheck(record, *json, limit)
         }
+        Task::New { kind, file } => extras::new(*kind, file.as_deref()),
+        Task::Schema => extras::schema(),
+        Task::Completions { shell } => extras::completions(*shell),
+        Task::Manual => extras::manual(),
         Task::Compare { first, second, json } => recheck::compare(first, second, *json),
     };
     ExitCode::from(code)
@@ -158,6 +173,7 @@ fn solve(name: &str, wish: &Wish<'_>) -> u8 {
     if let Some(folder) = wish.record {
         let mut files = crate::record::files(&outcome, &digest, VERSION);
         digests::seal(&mut files, &data);
+        let _whole = progress::writing();
         if let Err(failure) = files::write_record(folder, &files) {
             complain(&failure.message, failure.hint);
             code = NO_SENSE;

@@ -1,15 +1,68 @@
-//! Progress on standard error when a terminal watches and the work is long, and interruption by Ctrl-C.
+//! Progress on standard error when a terminal watches and the work is long; Ctrl-C and the time limit.
 
+use super::{GOOD, NOT_MET};
 use crate::solve;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
-use std::sync::OnceLock;
 use std::sync::atomic::{AtomicBool, Ordering};
+use std::sync::{Mutex, MutexGuard, OnceLock, PoisonError};
 use std::time::{Duration, Instant};
 
 /// Work shorter than this shows nothing.
 const PATIENCE: Duration = Duration::from_millis(500);
+/// Time for a solve to end in order after Ctrl-C.
+const GRACE: Duration = Duration::from_millis(50);
 
 static STOP: AtomicBool = AtomicBool::new(false);
+/// Whether nothing is done but waiting for a change.
+static WAITING: AtomicBool = AtomicBool::new(false);
+/// Held while files are written: the program is never ended in between.
+static WRITING: Mutex<()> = Mutex::new(());
+
+/// Whether Ctrl-C was pressed.
+pub(super) fn interrupted() -> bool {
+    STOP.load(Ordering::SeqCst)
+}
+
+/// Says whether the program is only waiting.
+pub(super) fn wait(waiting: bool) {
+    WAITING.store(waiting, Ordering::SeqCst);
+}
+
+/// Until the guard is dropped the program is not ended.
+pub(super) fn writing() -> MutexGuard<'static, ()> {
+    WRITING.lock().unwrap_or_else(PoisonError::into_inner)
+}
+
+/// From now on Ctrl-C ends the program at once, yet leaves nothing half-written.
+pub(super) fn listen() {
+    // A second handler cannot be set; then the default one ends the program, which is as good.
+    let _ = ctrlc::set_handler(|| {
+        STOP.store(true, Ordering::SeqCst);
+        if WAITING.load(Ordering::SeqCst) {
+            std::process::exit(GOOD.into());
+        }
+        std::thread::sleep(GRACE);
+        let _whole = writing();
+        eprintln!("error: interrupted: nothing was written");
+        std::process::exit(NOT_MET.into());
+    });
+}
+
+/// Ends the program when the time is over, whatever it is at.
+pub(super) fn deadline(limit: Option<Duration>) {
+    let Some(limit) = limit else { return };
+    std::thread::spawn(move || {
+        std::thread::sleep(limit + 2 * GRACE);
+        let _whole = writing();
+        eprintln!("error: {}", late(limit));
+        std::process::exit(NOT_MET.into());
+    });
+}
+
+/// What is said when the time is over.
+pub(super) fn late(limit: Duration) -> String {
+    format!("not solved within the {} s allowed: nothing was written", limit.as_secs_f64())
+}
 
 /// Watches one solve.
 pub(super) struct Progress {
@@ -18,16 +71,9 @@ pub(super) struct Progress {
     limit: Option<Duration>,
 }
 
-/// Whether Ctrl-C was pressed.
-pub(super) fn interrupted() -> bool {
-    STOP.load(Ordering::SeqCst)
-}
-
 impl Progress {
-    /// Starts watching; Ctrl-C from now on ends the solve in order.
+    /// Starts watching.
     pub fn start(limit: Option<Duration>) -> Self {
-        // A second handler cannot be set; then the default one ends the program, which is as good.
-        let _ = ctrlc::set_handler(|| STOP.store(true, Ordering::SeqCst));
         Self { start: Instant::now(), bar: OnceLock::new(), limit }
     }
 

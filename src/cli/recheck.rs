@@ -1,6 +1,6 @@
 //! Records once more: solved again, or beside each other.
 
-use super::{GOOD, NOT_MET, NO_SENSE, VERSION, complain, files, say, solving};
+use super::{GOOD, NO_SENSE, NOT_MET, VERSION, complain, files, say, solving};
 use crate::record::build::Origin;
 use crate::record::compare::{self, Compared, Record, Verdict};
 use crate::record::digests::{self, Digests, State, digest};
@@ -106,7 +106,10 @@ pub(super) fn recheck(name: &Path, as_json: bool, limit: Option<std::time::Durat
             return NO_SENSE;
         }
         None => {
-            complain(&format!("the record has no {}: nothing shows that its files belong together", digests::FILE), None);
+            complain(
+                &format!("the record has no {}: nothing shows that its files belong together", digests::FILE),
+                None,
+            );
             return NO_SENSE;
         }
     };

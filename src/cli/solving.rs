@@ -25,10 +25,7 @@ pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit:
     progress.finish();
     if stopped {
         match limit.filter(|_| !progress::interrupted()) {
-            Some(limit) => complain(
-                &format!("not solved within the {} s allowed: nothing was written", limit.as_secs_f64()),
-                Some("allow more with --time-limit, or ask for less accuracy"),
-            ),
+            Some(limit) => complain(&progress::late(limit), Some("allow more time, or ask for less accuracy")),
             None => complain("interrupted: nothing was written", None),
         }
         return None;

@@ -203,7 +203,8 @@ pub fn text(list: &[Compared], heads: [&str; 2]) -> String {
         Some(Recorded { value: None, .. }) => "none".to_owned(),
         Some(Recorded { value: Some(value), error, .. }) => concise(*value, *error),
     };
-    let mut rows = vec![["".into(), "".into(), heads[0].into(), heads[1].into(), "unit".into(), "apart, in bars".into()]];
+    let mut rows =
+        vec![["".into(), "".into(), heads[0].into(), heads[1].into(), "unit".into(), "apart, in bars".into()]];
     for c in list {
         let verdict = match c.verdict {
             Verdict::Agrees => "ok",
@@ -213,6 +214,7 @@ pub fn text(list: &[Compared], heads: [&str; 2]) -> String {
         };
         let unit = c.first.as_ref().or(c.second.as_ref()).map_or("", |r| r.unit.as_str());
         let bars = match (c.bars, c.difference) {
+            (Some(bars), _) if bars >= 1e4 => format!("{bars:.1e}"),
             (Some(bars), _) => format!("{bars:.2}"),
             (None, Some(difference)) if difference != 0.0 => format!("{difference:.1e} without bars"),
             _ => String::new(),
@@ -254,7 +256,10 @@ mod tests {
         let verdicts: Vec<Verdict> = list.iter().map(|c| c.verdict).collect();
         assert_eq!(verdicts, [Verdict::Agrees, Verdict::Agrees, Verdict::Missing, Verdict::Missing]);
         assert!((list[0].bars.expect("bars") - 0.75).abs() < 1e-9, "{list:?}");
-        assert_eq!(compare(&[number("y", 1.0, 0.0, "m")], &[number("y", 1.0, 0.0, "s")])[0].verdict, Verdict::Incomparable);
+        assert_eq!(
+            compare(&[number("y", 1.0, 0.0, "m")], &[number("y", 1.0, 0.0, "s")])[0].verdict,
+            Verdict::Incomparable
+        );
         assert_eq!(compare(&[number("y", 1.0, 0.0, "m")], &[number("y", 1.1, 0.0, "m")])[0].verdict, Verdict::Differs);
         assert!(text(&list, ["a", "b"]).contains("2 of 4 numbers do not agree"));
     }

@@ -14,6 +14,8 @@ pub mod envelope;
 pub mod compare;
 /// Digests of the files of a record.
 pub mod digests;
+/// The JSON Schema of the sheet.
+pub mod schema;
 /// Results for people, on a terminal.
 pub mod text;
 /// Results for programs.
@@ -30,6 +32,8 @@ pub(crate) mod mathematics;
 pub mod page;
 /// The solution along the span as a table.
 pub mod csv;
+/// The same as an array for NumPy.
+pub mod npy;
 
 use outcome::Outcome;
 
@@ -40,6 +44,7 @@ pub fn files(outcome: &Outcome, sha256: &str, version: &str) -> Vec<(String, Vec
         ("record.html".into(), page.into_bytes()),
         ("record.json".into(), json::document(outcome, sha256, version, true).into_bytes()),
         ("solution.csv".into(), csv::table(outcome).into_bytes()),
+        ("solution.npy".into(), npy::table(outcome)),
         ("sheet.toml".into(), outcome.sheet.clone().into_bytes()),
     ];
     if !outcome.envelopes.is_empty() {
