@@ -61,21 +61,19 @@ pub(super) fn manual() -> u8 {
     let mut text = Vec::new();
     let command = Arguments::command();
     let page = clap_mangen::Man::new(command.clone()).render(&mut text);
-    let tasks = command.get_subcommands().filter(|task| !task.is_hide_set());
-    let rest: std::io::Result<()> = tasks
-        .map(|task| {
-            // Each task with its options below the page of the whole.
-            let page = clap_mangen::Man::new(task.clone().bin_name(format!("spanwise {}", task.get_name())));
-            writeln!(text, ".SH \"TASK {}\"", task.get_name().to_uppercase())?;
-            let mut own = Vec::new();
-            page.render_synopsis_section(&mut own)?;
-            page.render_description_section(&mut own)?;
-            page.render_options_section(&mut own)?;
-            // Sections of a section.
-            text.extend(String::from_utf8_lossy(&own).replace(".SH ", ".SS ").into_bytes());
-            Ok(())
-        })
-        .collect();
+    let mut tasks = command.get_subcommands().filter(|task| !task.is_hide_set());
+    let rest: std::io::Result<()> = tasks.try_for_each(|task| {
+        // Each task with its options below the page of the whole.
+        let page = clap_mangen::Man::new(task.clone().bin_name(format!("spanwise {}", task.get_name())));
+        writeln!(text, ".SH \"TASK {}\"", task.get_name().to_uppercase())?;
+        let mut own = Vec::new();
+        page.render_synopsis_section(&mut own)?;
+        page.render_description_section(&mut own)?;
+        page.render_options_section(&mut own)?;
+        // Sections of a section.
+        text.extend(String::from_utf8_lossy(&own).replace(".SH ", ".SS ").into_bytes());
+        Ok(())
+    });
     if page.and(rest).is_err() {
         complain("the manual page cannot be made", None);
         return NO_SENSE;
