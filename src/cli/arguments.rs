@@ -1,7 +1,7 @@
 //! Arguments as typed.
 
 use clap::builder::styling::Styles;
-use clap::{Parser, Subcommand, ValueEnum};
+use clap::{CommandFactory, Parser, Subcommand, ValueEnum};
 use std::path::PathBuf;
 
 const EXAMPLE: &str = "\
@@ -36,6 +36,18 @@ pub(super) struct Arguments {
     /// Colours in messages
     #[arg(long = "color", value_enum, default_value_t = Colour::Auto, global = true)]
     pub colour: Colour,
+}
+
+impl Arguments {
+    /// The command with all its help.
+    pub fn command_with_limits() -> clap::Command {
+        let mut text = "Limits, beyond which a sheet is refused:\n".to_owned();
+        for (what, most) in crate::sheet::limits() {
+            text.push_str(&format!("  {most:>10} {what}\n"));
+        }
+        text.push_str("Time is limited by --time-limit of solve and recheck.");
+        Self::command().mut_subcommand("check", |task| task.after_help(text))
+    }
 }
 
 #[derive(Debug, Subcommand)]

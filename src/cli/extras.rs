@@ -3,7 +3,6 @@
 use super::arguments::{Arguments, Kind};
 use super::{GOOD, NO_SENSE, complain, say};
 use crate::record::schema;
-use clap::CommandFactory;
 use clap_complete::Shell;
 use std::fs::OpenOptions;
 use std::io::Write;
@@ -52,14 +51,14 @@ pub(super) fn schema() -> u8 {
 /// Completions for a shell.
 pub(super) fn completions(shell: Shell) -> u8 {
     let mut text = Vec::new();
-    clap_complete::generate(shell, &mut Arguments::command(), "spanwise", &mut text);
+    clap_complete::generate(shell, &mut Arguments::command_with_limits(), "spanwise", &mut text);
     say(&String::from_utf8_lossy(&text))
 }
 
 /// The manual page, for man.
 pub(super) fn manual() -> u8 {
     let mut text = Vec::new();
-    let command = Arguments::command();
+    let command = Arguments::command_with_limits();
     let page = clap_mangen::Man::new(command.clone()).render(&mut text);
     let mut tasks = command.get_subcommands().filter(|task| !task.is_hide_set());
     let rest: std::io::Result<()> = tasks.try_for_each(|task| {

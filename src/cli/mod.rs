@@ -19,7 +19,7 @@ use crate::record::outcome::Status;
 use crate::record::{json, text};
 use crate::sheet::{self, DataFile, Reading, Sheet};
 use arguments::{Arguments, Colour, Task};
-use clap::Parser;
+use clap::FromArgMatches;
 use std::io::{IsTerminal, Write};
 use std::path::Path;
 use std::process::ExitCode;
@@ -37,7 +37,8 @@ const VERSION: &str = env!("CARGO_PKG_VERSION");
 
 /// Runs the command.
 pub fn main() -> ExitCode {
-    let arguments = match Arguments::try_parse() {
+    let typed = Arguments::command_with_limits().try_get_matches();
+    let arguments = match typed.and_then(|typed| Arguments::from_arg_matches(&typed)) {
         Ok(arguments) => arguments,
         Err(error) => {
             let asked = !error.use_stderr();

@@ -21,6 +21,9 @@ const MOST_NAMES: usize = LINES.len();
 /// Deepest decade drawn below the largest.
 const DEEPEST: i32 = 20;
 
+/// Most curves that are drawn; all are in the table.
+const MOST_PLOTS: usize = 100;
+
 /// File of the drawing of the span.
 pub const SPAN: &str = "span.svg";
 
@@ -285,10 +288,10 @@ pub fn all(outcome: &Outcome) -> Vec<Plot> {
         plots.extend(svg.map(|svg| Plot { file, svg, words }));
     };
     keep(SPAN.into(), span(outcome), span_words(outcome));
-    for (k, one) in outcome.curves.iter().enumerate() {
+    for (k, one) in outcome.curves.iter().enumerate().take(MOST_PLOTS) {
         keep(format!("{:02}-{}.svg", k + 1, file_name(&one.name)), curve(one, outcome), curve_words(one, outcome));
     }
-    for (k, one) in outcome.envelopes.iter().enumerate() {
+    for (k, one) in outcome.envelopes.iter().enumerate().take(MOST_PLOTS) {
         let file = format!("envelope-{:02}-{}.svg", k + 1, file_name(&one.name));
         keep(file, curve(&one.curve(), outcome), one.words(outcome));
     }

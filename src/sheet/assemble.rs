@@ -17,7 +17,7 @@ use std::collections::HashSet;
 use std::ops::Range;
 
 /// Most unknowns of a sheet: the work grows with the cube of their number.
-const MOST_UNKNOWNS: usize = 200;
+pub(super) const MOST_UNKNOWNS: usize = 200;
 
 /// Reads a sheet.
 pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<Fault>> {
@@ -28,6 +28,10 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
         return Err(faults.finish(text));
     }
     let mut source = source::read(text, &mut faults);
+    super::limits::check(&source, &mut faults);
+    if faults.too_large() {
+        return Err(faults.finish(text));
+    }
     source.replace(reading.replaced, &mut faults);
     let mut sheet = Assembler::new(&source, reading, &mut faults).run();
     if sheet.is_none() && faults.is_empty() {

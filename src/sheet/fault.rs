@@ -57,6 +57,11 @@ impl Faults {
         self.more += other.more;
     }
 
+    /// Whether a limit is broken: then there is no use in reading on.
+    pub fn too_large(&self) -> bool {
+        self.list.iter().any(|f| f.code == "too large")
+    }
+
     /// Number of faults so far.
     pub fn len(&self) -> usize {
         self.list.len() + self.more

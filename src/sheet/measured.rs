@@ -15,7 +15,7 @@ use std::ops::Range;
 use std::sync::Arc;
 
 /// Most points of one datum.
-const MOST_MEASURED: usize = 2_000;
+pub(super) const MOST_MEASURED: usize = 2_000;
 
 /// Part of the measured range by which rounding may lead beyond it.
 const SLACK: f64 = 1e-9;

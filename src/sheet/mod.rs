@@ -22,6 +22,7 @@ mod draw;
 mod fault;
 mod functional;
 mod guard;
+mod limits;
 mod lower;
 mod measured;
 mod model;
@@ -38,6 +39,7 @@ mod statement;
 pub use cases::Case;
 pub use datafile::DataFile;
 pub use fault::Fault;
+pub use limits::limits;
 pub use model::SheetModel;
 pub use nature::{CONSTANTS, Constant};
 pub use source::MOST_BYTES;
@@ -274,12 +276,17 @@ impl Sheet {
         &self.cases
     }
 
+    fn settings<'a>(&self, watch: Option<crate::solve::Watch<'a>>) -> crate::solve::Settings<'a> {
+        let most_elements = limits::most_elements(&self.model.layout);
+        crate::solve::Settings { relative: self.relative, most_elements, watch }
+    }
+
     /// Solves the sheet to the accuracy asked.
     ///
     /// # Errors
     /// Those of [`crate::solve::boundary`].
     pub fn solve(&self, watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
-        let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
+        let settings = self.settings(watch);
         let solution = crate::solve::boundary(&self.model(), &settings)?;
         self.within_measured(&solution)?;
         Ok(solution)
@@ -299,7 +306,7 @@ impl Sheet {
     /// # Errors
     /// Those of [`crate::solve::boundary`].
     pub fn solve_held(&self, values: &[f64], watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
-        let settings = crate::solve::Settings { relative: self.relative, watch, ..Default::default() };
+        let settings = self.settings(watch);
         let mut solution = crate::solve::boundary(&self.model_at(values.to_vec()), &settings)?;
         solution.carry(values);
         self.within_measured(&solution)?;

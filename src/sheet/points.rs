@@ -11,7 +11,7 @@ use std::collections::BTreeSet;
 use std::ops::Range;
 
 /// Most points (ends and breaks) of a sheet.
-const MOST_POINTS: usize = 4_000;
+pub(super) const MOST_POINTS: usize = 4_000;
 
 /// Points nearer than this part of the span are one point.
 pub(super) const SAME_POINT: f64 = 1e-13;
