@@ -389,7 +389,27 @@ fn end_weights(tables: &Tables, side: Side) -> Vec<f64> {
     (0..tables.n).map(|l| legendre::series(&tables.modal(&unit(l)), s)).collect()
 }
 
-/// The elements of a mesh in words for tests and messages.
+/// Nodes of all elements.
 pub(crate) fn nodes(mesh: &Mesh) -> usize {
     mesh.elements.iter().map(|e: &Element| e.nodes).sum()
+}
+
+/// Eigenvalues of a small matrix given by rows, ascending by real part, then descending by imaginary part; NaN where
+/// there are none. The mean is taken off first, so that close ones are told apart as well as the entries allow.
+pub(crate) fn small_eigenvalues(matrix: &[Complex64], k: usize) -> Vec<Complex64> {
+    let mean = (0..k).map(|d| matrix[d * k + d]).sum::<Complex64>() / k as f64;
+    if k == 1 {
+        return vec![mean];
+    }
+    let entry = |r: usize, c: usize| matrix[r * k + c] - if r == c { mean } else { Complex64::ZERO };
+    let found = if matrix.iter().all(|v| v.im == 0.0) {
+        Mat::<f64>::from_fn(k, k, |r, c| entry(r, c).re).eigenvalues()
+    } else {
+        Mat::<c64>::from_fn(k, k, entry).eigenvalues()
+    };
+    let mut values = found.unwrap_or_default();
+    values.resize(k, Complex64::new(f64::NAN, f64::NAN));
+    values.iter_mut().for_each(|v| *v += mean);
+    values.sort_by(|a, b| a.re.total_cmp(&b.re).then(b.im.total_cmp(&a.im)));
+    values
 }

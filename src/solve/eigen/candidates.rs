@@ -20,6 +20,8 @@ const NODES: usize = 20;
 const MORE: usize = 4;
 /// Largest drift between two meshes, relative.
 const DRIFT: f64 = 1e-5;
+/// Candidates closer than this, relative, belong together.
+pub(super) const CLUSTER: f64 = 1e-5;
 /// Most rows of a dense matrix: some ten seconds.
 const MOST_ROWS: usize = 2600;
 
@@ -118,14 +120,12 @@ impl Task<'_> {
     }
 
     /// A seeded mesh for eigenvalues of a certain size, with at least so many nodes.
-    fn mesh(&self, about: f64, least: usize) -> Result<Mesh> {
+    pub(super) fn mesh(&self, about: f64, least: usize) -> Result<Mesh> {
         let held = Held::new(self.pencil.model, vec![about], true);
-        let step = if self.pencil.complex { 2 } else { 1 };
-        let scale: Vec<f64> = (0..step * self.scale.len()).map(|i| self.scale[i / step]).collect();
-        let seeded = seed::seed(&held, &scale, self.open, 400)?;
+        let seeded = seed::seed(&held, &self.doubled_scale(), self.open, 400)?;
         let mut elements: Vec<Element> = seeded.elements.into_iter().map(|e| Element { nodes: NODES, ..e }).collect();
         if elements.len() == 1 && least <= 2 * NODES {
-            elements[0].nodes = least;
+            elements[0].nodes = least.max(NODES);
         }
         while elements.iter().map(|e| e.nodes).sum::<usize>() < least {
             let longest = (0..elements.len()).max_by(|a, b| elements[*a].length().total_cmp(&elements[*b].length()));
@@ -166,7 +166,7 @@ impl Task<'_> {
 
     /// Values of the finer mesh in the order asked, each with its drift.
     fn sorted(&self, first: &Candidates, second: &Candidates) -> Vec<Ranked> {
-        let real = !self.pencil.complex;
+        let real = !self.pencil.complex && self.ask.paired();
         let mut sorted: Vec<Ranked> = second
             .found
             .iter()
@@ -200,7 +200,8 @@ impl Task<'_> {
 
     /// How often an eigenvalue counts: a conjugate pair of a real problem twice, but for pairs asked.
     fn weight(&self, value: Complex64) -> usize {
-        if !self.pencil.complex && value.im > 1e-8 * value.norm() { 2 } else { 1 }
+        let pair = !self.pencil.complex && self.ask.paired() && value.im > 0.0;
+        if pair { 2 } else { 1 }
     }
 
     fn total(&self, values: &[Complex64]) -> usize {
@@ -248,9 +249,9 @@ impl Task<'_> {
                 Ask::Pairs(_) => r.value.im > 1e-8 * r.value.norm(),
                 _ => true,
             };
-            let full = wanted.is_some_and(|n| count >= n);
+            let full = wanted.is_some_and(|n| count >= n) && !found.starts.last().is_some_and(|last| r.close_to(last));
             if !inside || full {
-                if r.agrees && found.beyond.len() < 4 {
+                if full && r.agrees && found.beyond.len() < 4 {
                     found.beyond.push(r.value);
                 }
                 if full && found.beyond.len() >= 4 {
@@ -267,6 +268,15 @@ impl Task<'_> {
             found.starts.push(Start { value: r.value, drift: (r.value - r.before).norm(), fields });
         }
         Ok(found)
+    }
+}
+
+impl Ranked {
+    /// Whether it belongs to the cluster of another: a cluster is never cut.
+    fn close_to(&self, last: &Start) -> bool {
+        let distance = (self.value - last.value).norm();
+        let drift = last.drift + (self.value - self.before).norm();
+        self.agrees && distance <= CLUSTER * self.value.norm() + 3.0 * drift
     }
 }
 

@@ -4,10 +4,13 @@ mod candidates;
 mod modes;
 mod polish;
 
+use super::solver::Solver;
 use super::{Settings, Solution};
 use crate::adapt::exponents;
 use crate::error::{Eigen, Error, Result};
+use crate::evidence::singular;
 use crate::field::Field;
+use crate::linear::{Library, Perturbation};
 use crate::model::{Held, Model};
 use crate::spectrum::pencil::Pencil;
 use num_complex::Complex64;
@@ -175,8 +178,36 @@ fn run(model: &dyn Model, complex: bool, ask: Ask, settings: &Settings<'_>) -> R
     let open = exponents::singular_ends(&held, &all)?;
     let scale = all.into_iter().step_by(if complex { 2 } else { 1 }).collect();
     let task = Task { pencil, settings, ask, scale, open };
+    task.refuse_everything()?;
     let found = task.candidates()?;
     task.modes(found)
+}
+
+impl Task<'_> {
+    /// Refuses a problem that has a solution whatever the parameter is.
+    fn refuse_everything(&self) -> Result<()> {
+        let mut why = String::new();
+        for factor in [0.7137, -0.3851, 1.9173] {
+            let parameter = factor * self.pencil.size;
+            let held = Held::new(self.pencil.model, vec![parameter], true);
+            let mesh = self.mesh(parameter.abs(), 0)?;
+            let depth = self.pencil.layout.orders().iter().copied().max().unwrap_or(0);
+            let (settings, scale) = (self.settings, self.doubled_scale());
+            let mut solver = Solver { model: &held, settings, scale, library: Library::new(depth), pass: 0 };
+            let pass = solver.solve_once(&mesh, None, &Perturbation::NONE)?;
+            if pass.free.is_empty() {
+                return Ok(());
+            }
+            why = singular::explain(&held, &pass.free, &pass.contradictions);
+        }
+        Err(Eigen::Everything { why }.into())
+    }
+
+    /// One size per unknown of the model.
+    fn doubled_scale(&self) -> Vec<f64> {
+        let copies = if self.pencil.complex { 2 } else { 1 };
+        self.scale.iter().flat_map(|s| std::iter::repeat_n(*s, copies)).collect()
+    }
 }
 
 fn check_ask(ask: Ask) -> Result<()> {
@@ -197,6 +228,11 @@ fn check_ask(ask: Ask) -> Result<()> {
 }
 
 impl Ask {
+    /// Whether eigenvalues of a real problem come as conjugate pairs, and not one by one.
+    fn paired(&self) -> bool {
+        !matches!(self, Ask::Near(z, _) if z.im != 0.0)
+    }
+
     /// How many eigenvalues are wanted, as far as known beforehand.
     fn wanted(&self) -> Option<usize> {
         match *self {

@@ -1,6 +1,6 @@
 //! From candidates to modes: clusters, polishing, one solution for each mode.
 
-use super::candidates::{Found, Start};
+use super::candidates::{CLUSTER, Found, Start};
 use super::polish::Basis;
 use super::{Ask, Count, Discarded, Method, Mode, Reason, Spectrum, Task};
 use crate::error::{Error, Result};
@@ -11,11 +11,10 @@ use crate::model::Layout;
 use crate::quantity::Estimate;
 use crate::solve::Solution;
 use crate::spectrum::block::Block;
+use crate::spectrum::dense::small_eigenvalues as eigenvalues;
 use nalgebra::DMatrix;
 use num_complex::Complex64;
 
-/// Candidates closer than this, relative, are polished together.
-const CLUSTER: f64 = 1e-6;
 /// Most columns of one block.
 const WIDEST: usize = 6;
 
@@ -23,21 +22,37 @@ impl Task<'_> {
     /// Polishes all candidates.
     pub(super) fn modes(&self, found: Found) -> Result<Spectrum> {
         let Found { starts, mut discarded, .. } = found;
-        let mut modes: Vec<Mode> = Vec::new();
-        for cluster in self.clusters(&starts) {
-            let members: Vec<&Start> = cluster.iter().map(|k| &starts[*k]).collect();
+        let mut groups: Vec<(Vec<usize>, Option<Vec<Mode>>)> =
+            self.clusters(&starts).into_iter().map(|c| (c, None)).collect();
+        // Groups that lead to the same place are joined and done again: each round leaves one less to do or one group less.
+        while let Some(at) = groups.iter().position(|g| g.1.is_none()) {
+            let members: Vec<&Start> = groups[at].0.iter().map(|k| &starts[*k]).collect();
+            let mut discard = |reason: Reason| {
+                discarded.extend(members.iter().map(|m| Discarded { value: m.value, reason }));
+            };
             match self.polished(&members) {
-                Ok(found) => modes.extend(found),
+                Ok(found) => match self.stray(&starts, &groups, at, &found) {
+                    None => groups[at].1 = Some(found),
+                    Some((other, _)) if groups[at].0.len() + groups[other].0.len() <= WIDEST => {
+                        let (joined, _) = groups.remove(at.max(other));
+                        let (kept, done) = &mut groups[at.min(other)];
+                        kept.extend(joined);
+                        *done = None;
+                    }
+                    Some((_, to)) => {
+                        discard(Reason::Moved { to });
+                        groups[at].1 = Some(Vec::new());
+                    }
+                },
                 Err(Error::Interrupted) => return Err(Error::Interrupted),
                 Err(error) => {
-                    let reason = match error {
-                        Error::Unresolved { .. } => Reason::Unresolved,
-                        _ => Reason::NoSolution,
-                    };
-                    discarded.extend(members.iter().map(|m| Discarded { value: m.value, reason }));
+                    let unresolved = matches!(error, Error::Unresolved { .. });
+                    discard(if unresolved { Reason::Unresolved } else { Reason::NoSolution });
+                    groups[at].1 = Some(Vec::new());
                 }
             }
         }
+        let mut modes: Vec<Mode> = groups.into_iter().filter_map(|g| g.1).flatten().collect();
         self.arrange(&mut modes);
         let count =
             Count { checked: None, found: modes.len(), counted: None, method: Method::None, region: [f64::NAN; 4] };
@@ -69,6 +84,36 @@ impl Task<'_> {
         self.pencil.complex || start.value.im.abs() > CLUSTER * start.value.norm() + 3.0 * start.drift
     }
 
+    /// The group whose candidate one of the modes found is nearer to than to any of its own, and where that mode went.
+    fn stray(
+        &self,
+        starts: &[Start],
+        groups: &[(Vec<usize>, Option<Vec<Mode>>)],
+        at: usize,
+        found: &[Mode],
+    ) -> Option<(usize, Complex64)> {
+        let distance = |k: usize, value: Complex64| {
+            let direct = (starts[k].value - value).norm();
+            if self.pencil.complex { direct } else { direct.min((starts[k].value.conj() - value).norm()) }
+        };
+        for mode in found {
+            let near = |g: &(Vec<usize>, Option<Vec<Mode>>)| {
+                g.0.iter().map(|k| distance(*k, mode.value)).fold(f64::INFINITY, f64::min)
+            };
+            let own = near(&groups[at]);
+            let drift = groups[at].0.iter().map(|k| starts[*k].drift).fold(0.0, f64::max);
+            let others = groups.iter().enumerate().filter(|(g, _)| *g != at).map(|(g, group)| (g, near(group)));
+            let nearest = others.min_by(|a, b| a.1.total_cmp(&b.1));
+            if let Some((other, distance)) = nearest
+                && distance < own
+                && own > 3.0 * drift + mode.error
+            {
+                return Some((other, mode.value));
+            }
+        }
+        None
+    }
+
     fn polished(&self, members: &[&Start]) -> Result<Vec<Mode>> {
         let complex = members.iter().any(|m| self.is_complex(m));
         let basis = match members {
@@ -77,23 +122,9 @@ impl Task<'_> {
         };
         let (block, solution) = self.polish(&basis)?;
         let mut modes = self.split(&block, &solution)?;
-        let spread = members.iter().map(|m| m.drift).fold(0.0, f64::max);
-        let size = self.pencil.size;
-        for mode in &modes {
-            let nearest = members
-                .iter()
-                .map(|m| {
-                    let direct = (m.value - mode.value).norm();
-                    direct.min((m.value.conj() - mode.value).norm())
-                })
-                .fold(f64::INFINITY, f64::min);
-            if nearest > 1e-3 * mode.value.norm() + 1e2 * spread + 1e-6 * size {
-                return Err(Error::NoSolution { tried: format!("the iteration led to {}", mode.value) });
-            }
-        }
         if !self.pencil.complex && block.complex() {
             // The conjugate of each, but where pairs are asked for once.
-            if !matches!(self.ask, Ask::Pairs(_)) {
+            if !matches!(self.ask, Ask::Pairs(_)) && self.ask.paired() {
                 let conjugates: Vec<Mode> = modes.iter().map(conjugate).collect();
                 modes.extend(conjugates);
             }
@@ -229,18 +260,6 @@ impl Task<'_> {
             let by_rank = if alike { std::cmp::Ordering::Equal } else { ra.total_cmp(&rb) };
             by_rank.then(b.value.im.total_cmp(&a.value.im)).then(ra.total_cmp(&rb))
         });
-        let wanted = match self.ask {
-            Ask::Pairs(n) => Some(n),
-            _ => self.ask.wanted(),
-        };
-        if let Some(n) = wanted.filter(|n| *n < modes.len()) {
-            // A conjugate pair is never cut.
-            let (last, next) = (&modes[n - 1], &modes[n]);
-            let pair = !self.pencil.complex
-                && last.complex
-                && (last.value - next.value.conj()).norm() <= last.error + next.error;
-            modes.truncate(if pair { n + 1 } else { n });
-        }
         let smallest = |modes: &[Mode]| {
             modes
                 .iter()
@@ -260,6 +279,18 @@ impl Task<'_> {
         let counts: Vec<usize> = modes.iter().map(|a| modes.iter().filter(|b| close(a, b)).count()).collect();
         for (index, (mode, multiplicity)) in modes.iter_mut().zip(counts).enumerate() {
             (mode.index, mode.multiplicity) = (index, multiplicity);
+        }
+        let wanted = match self.ask {
+            Ask::Pairs(n) => Some(n),
+            _ => self.ask.wanted(),
+        };
+        if let Some(n) = wanted.filter(|n| *n < modes.len()) {
+            // A conjugate pair is never cut.
+            let (last, next) = (&modes[n - 1], &modes[n]);
+            let pair = !self.pencil.complex
+                && last.complex
+                && (last.value - next.value.conj()).norm() <= last.error + next.error;
+            modes.truncate(if pair { n + 1 } else { n });
         }
     }
 }
@@ -297,25 +328,6 @@ fn basis(members: &[&Start], complex: bool) -> Basis {
         at += block.nrows();
     }
     Basis { vectors, matrix, complex }
-}
-
-/// Eigenvalues of a small matrix given by rows, ascending by real part, then descending by imaginary part.
-fn eigenvalues(matrix: &[Complex64], k: usize) -> Vec<Complex64> {
-    if k == 1 {
-        return vec![matrix[0]];
-    }
-    let real = matrix.iter().all(|v| v.im == 0.0);
-    let mut values: Vec<Complex64> = if real {
-        let matrix = DMatrix::from_fn(k, k, |r, c| matrix[r * k + c].re);
-        matrix.complex_eigenvalues().iter().copied().collect()
-    } else {
-        let matrix = DMatrix::from_row_slice(k, k, matrix);
-        let schur = nalgebra::linalg::Schur::try_new(matrix, f64::EPSILON, 1000);
-        schur.map_or_else(Vec::new, |s| s.unpack().1.diagonal().iter().copied().collect())
-    };
-    values.resize(k, Complex64::new(f64::NAN, f64::NAN));
-    values.sort_by(|a, b| a.re.total_cmp(&b.re).then(b.im.total_cmp(&a.im)));
-    values
 }
 
 /// The eigenvector, largest entry 1, by inverse iteration.

@@ -92,7 +92,8 @@ impl Task<'_> {
         let scale: Vec<f64> = (0..parts * block.width()).flat_map(|_| self.scale.iter().copied()).collect();
         let mesh = {
             let linear = Linearisation::new(&block, &coarse, &coarse);
-            seed::seed(&linear, &scale, self.open, self.settings.most_elements)?
+            // Some more nodes than a seed has: close eigenvalues must be told apart from the first step on.
+            seed::seed(&linear, &scale, self.open, self.settings.most_elements)?.enriched(ENRICH)
         };
         let field = start.on(&mesh, &mut library)?;
         let mut run = Run { task: self, block: &block, scale, field, library, passes: 0, condition: 1.0 };
@@ -217,7 +218,7 @@ impl Run<'_> {
         let size = states.clone().map(|(i, _)| next.size(i, 0) / self.scale[i]).fold(0.0, f64::max);
         let moved = states.map(|(i, _)| difference.size(i, 0) / self.scale[i]).fold(0.0, f64::max);
         let norm = |c: &[f64]| c[self.block.first()..].iter().map(|v| v * v).sum::<f64>().sqrt();
-        let floor = 1e-9 * self.task.pencil.size;
+        let floor = 1e-3 * self.task.pencil.size;
         (moved / size).max(norm(&difference.constants) / norm(&next.constants).max(floor))
     }
 
