@@ -11,6 +11,7 @@ const RIGHT: &[(f64, Side)] = &[(1.0, Side::Left)];
 #[track_caller]
 fn agrees(spectrum: &Spectrum, exact: &[f64], relative: f64) {
     assert_eq!(spectrum.modes.len(), exact.len(), "{:?}", spectrum.discarded);
+    assert_eq!(spectrum.count.checked, Some(true), "{:?}", spectrum.count);
     for (mode, exact) in spectrum.modes.iter().zip(exact) {
         let error = (mode.value - exact).norm();
         assert!(error <= mode.error, "mode {}: {} instead of {exact}, bar {:.1e}", mode.index, mode.value, mode.error);

@@ -13,6 +13,7 @@ use spanwise::solve::{Ask, Settings, Spectrum, eigen, eigen_complex};
 fn agrees(spectrum: &Spectrum, exact: &[Complex64], relative: f64) {
     let found: Vec<_> = spectrum.modes.iter().map(|m| (m.value, m.error)).collect();
     assert_eq!(spectrum.modes.len(), exact.len(), "{found:?} {:?}", spectrum.discarded);
+    assert_eq!(spectrum.count.checked, Some(true), "{:?}", spectrum.count);
     for (mode, exact) in spectrum.modes.iter().zip(exact) {
         let error = (mode.value - exact).norm();
         assert!(error <= mode.error, "mode {}: {} instead of {exact}, bar {:.1e}", mode.index, mode.value, mode.error);
@@ -178,7 +179,6 @@ fn narrow_cluster_of_coffey_and_evans() {
         [-1.0, 0.0, -2.0 * beta * (2.0 * x).cos() + (beta * (2.0 * x).sin()).powi(2), -1.0]
     });
     let spectrum = lowest(&model, 7);
-    for m in &spectrum.modes {}
     assert_eq!(spectrum.modes.len(), 7);
 }
 

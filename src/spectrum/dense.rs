@@ -83,6 +83,25 @@ impl<'a> Dense<'a> {
         Ok(dense)
     }
 
+    /// Columns of the highest derivatives of each element, and the number of all columns.
+    pub(super) fn inner_columns(&self) -> (Vec<std::ops::Range<usize>>, usize) {
+        let d = self.pencil.layout.unknowns();
+        let inner = self.columns.iter().zip(&self.mesh.elements).map(|(c, e)| c[0]..c[0] + d * e.nodes);
+        (inner.collect(), self.size)
+    }
+
+    /// All rows.
+    pub(super) fn rows(&self) -> &[Row] {
+        &self.rows
+    }
+
+    /// Rows of an element: collocation and ends.
+    pub(super) fn rows_of_element(&self, e: usize) -> std::ops::Range<usize> {
+        let of = |e: usize| self.pencil.layout.unknowns() * self.mesh.elements[e].nodes + self.pencil.layout.states();
+        let start = (0..e).map(of).sum();
+        start..start + of(e)
+    }
+
     /// Number of rows.
     pub fn size(&self) -> usize {
         self.size
@@ -302,7 +321,7 @@ impl<'a> Dense<'a> {
     }
 }
 
-type Row = Vec<(usize, [Complex64; POWERS])>;
+pub(super) type Row = Vec<(usize, [Complex64; POWERS])>;
 type Eigen = (Vec<Complex64>, Mat<c64>);
 
 /// The same for both kinds of numbers: faer's generics are not generic over them in this respect.

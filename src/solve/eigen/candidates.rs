@@ -47,10 +47,10 @@ pub(super) struct Found {
 
 impl Task<'_> {
     /// Looks for the wanted eigenvalues, on finer and finer meshes until two agree on all of them.
-    pub(super) fn candidates(&self) -> Result<Found> {
+    pub(super) fn candidates(&self, finer: usize) -> Result<Found> {
         let wanted = self.ask.wanted();
         let mut library = Library::new(self.pencil.layout.orders().iter().copied().max().unwrap_or(0));
-        let mut least = NODES_PER_MODE * wanted.unwrap_or(6) + NODES;
+        let mut least = finer * (NODES_PER_MODE * wanted.unwrap_or(6) + NODES);
         let mut about = self.pencil.size;
         let mut lowest: Option<f64> = None;
         let mut before: Vec<Complex64> = Vec::new();
@@ -114,7 +114,7 @@ impl Task<'_> {
         Err(Error::NoSolution { tried: "the candidates of an eigenproblem".into() })
     }
 
-    fn tick(&self, level: usize) -> Result<()> {
+    pub(super) fn tick(&self, level: usize) -> Result<()> {
         let progress = crate::solve::Progress { pass: level + 1, elements: 0, done: 0 };
         if self.settings.watch.is_none_or(|w| w(progress)) { Ok(()) } else { Err(Error::Interrupted) }
     }
