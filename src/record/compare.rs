@@ -112,7 +112,8 @@ fn number(quantity: &Value, name: &str, numbers: &mut Vec<Recorded>) {
     if numbers.len() >= MOST_NUMBERS {
         return;
     }
-    let error = quantity["error"].as_f64().unwrap_or(0.0);
+    // A bar has no sign.
+    let error = quantity["error"].as_f64().unwrap_or(0.0).abs();
     let unit = quantity["unit"].as_str().unwrap_or("1").to_owned();
     let value = quantity["value"].as_f64();
     numbers.push(Recorded { name: name.to_owned(), value, error, unit: unit.clone() });

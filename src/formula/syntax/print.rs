@@ -61,7 +61,12 @@ impl Display for Expression {
             Kind::Number { value, unit, .. } => {
                 let digits = format!("{value:?}");
                 f.write_str(digits.strip_suffix(".0").unwrap_or(&digits))?;
-                unit.as_ref().map_or(Ok(()), |u| write!(f, " {}", u.text))
+                match unit {
+                    // A bare 1 would be a second number.
+                    Some(u) if u.text == "1" => write!(f, " [1]"),
+                    Some(u) => write!(f, " {}", u.text),
+                    None => Ok(()),
+                }
             }
             Kind::Name(name) => f.write_str(name),
             Kind::Negate(a) => {
