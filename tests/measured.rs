@@ -77,6 +77,52 @@ fn beyond_the_last_point_nothing_is_made_up() {
     );
 }
 
+#[test]
+fn data_are_needed_only_where_they_are_used() {
+    // Of two layers the hot one alone is measured beyond 250 degC.
+    let text = |hot: &str, report: &str| {
+        format!(
+            r#"
+[given]
+ka = {{ against = "T", points = [["200 degC", "1.2 W/(m K)"], ["600 degC", "1.4 W/(m K)"]] }}
+kb = {{ against = "T", points = [["0 degC", "0.1 W/(m K)"], ["{hot}", "0.15 W/(m K)"]] }}
+k = {{ "0 m .. 0.1 m" = "ka", else = "kb" }}
+q = "-k*T'"
+[span]
+x = ["0 m", "0.15 m"]
+[unknowns]
+T = {{ unit = "degC", guess = "300 degC" }}
+[equations]
+e = "q' = 0"
+[conditions]
+a = "q(0 m) = 500 W/m^2"
+b = "T(0.15 m) = 30 degC"
+[report]
+"between" = "T(0.1 m) in degC"
+"asked" = "{report}"
+"#
+        )
+    };
+    let solved = |hot: &str, report: &str| {
+        let sheet = read(&text(hot, report));
+        sheet
+            .solve(None)
+            .map(|s| sheet.evaluate(&s)[0].printed().expect("a number").value)
+            .map_err(|e| sheet.reason(&e))
+    };
+    // T between the layers: integral of 0.1 + 0.05 T/250 from 30 to T = 500*0.05.
+    let between = solved("250 degC", "ka(0.02 m) in W/(m K)").expect("each is measured where it is used");
+    let integral = |t: f64| 0.1 * (t - 30.0) + 1e-4 * (t * t - 900.0);
+    assert!((integral(between) - 25.0).abs() < 1e-9, "{between}");
+    assert!(between > 200.0 && between < 250.0);
+    let reason = solved("190 degC", "ka(0.02 m) in W/(m K)").expect_err("the cold layer gets hotter than that");
+    assert!(reason.contains("needs `kb` at T = 2"), "{reason}");
+    let reason = solved("250 degC", "max(kb) in W/(m K)").expect_err("asked where it is not measured");
+    assert!(reason.contains("needs `kb`"), "{reason}");
+    let reason = solved("250 degC", "ka(0.15 m) in W/(m K)").expect_err("asked where it is not measured");
+    assert!(reason.contains("needs `ka` at T = 30 degC"), "{reason}");
+}
+
 const SOIL: &str = r#"
 [given]
 L = "4 m"

@@ -82,7 +82,8 @@ pub fn text(outcome: &Outcome) -> String {
         let width = case.quantities.iter().map(|q| q.name.chars().count()).max().unwrap_or(0);
         for q in &case.quantities {
             let gap = " ".repeat(width - q.name.chars().count());
-            let _ = writeln!(text, "  {}{gap}   {}", q.name, united(value(q), &q.unit));
+            let shown = if q.value.is_some() { united(value(q), &q.unit) } else { value(q) };
+            let _ = writeln!(text, "  {}{gap}   {shown}", q.name);
             if let Some(reason) = &q.reason {
                 let _ = writeln!(text, "      {reason}");
             }

@@ -551,7 +551,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let unknowns = orders.len();
         let curves = self.curves(unknowns, &points);
         let balances = self.balances(&equations, &orders, unknowns, &points);
-        let watched = self.watched(unknowns, &points);
+        let watched = self.watched(&nodes, unknowns, &points);
+        if !self.lowerer.faults.is_empty() {
+            return None;
+        }
         let Lowerer { mut graph, mut functionals, warnings, reduction, moves, .. } = self.lowerer;
         for functional in &mut functionals {
             functional.expression = reduction.reduce(&mut graph, functional.expression);

@@ -8,8 +8,9 @@ use super::absolute::Absolute;
 use super::call::FUNCTIONS;
 use super::fault::{Faults, nearest};
 use super::functional::Functional;
-use super::measured::{Declaration, Reach, Taken};
+use super::measured::{Declaration, Taken};
 use super::nature::{self, CONSTANTS, Constant};
+use super::reach::Reach;
 use super::reduce::Reduction;
 use super::source::Located;
 use crate::formula::graph::{Graph, NodeId};
@@ -45,8 +46,6 @@ pub(super) struct Cover {
     pub ends: [f64; 2],
     /// Places of the first and the last limit.
     pub places: [Range<usize>; 2],
-    /// What to do about a gap.
-    pub hint: &'static str,
 }
 
 impl Cover {
@@ -243,8 +242,8 @@ impl<'f> Lowerer<'f> {
         let faults = self.faults.len();
         let written = self.lower_parts(at, e);
         self.scalars = true;
-        debug_assert_eq!(faults, self.faults.len());
-        let Some(written) = written else { return typed };
+        // What equations could not hold is no flux of theirs; it has been noted as a fault all the same.
+        let Some(written) = written.filter(|_| self.faults.len() == faults) else { return typed };
         for k in 0..self.carried.len() {
             let Carried { written: flux, unknown } = self.carried[k];
             if let Some(ratio) = self.graph.ratio(written.node, flux) {

@@ -4,12 +4,11 @@ use super::absolute::Absolute;
 use super::assemble::Assembler;
 use super::datafile::{self, Columns, DataFile};
 use super::fault::Faults;
-use super::functional::{Functional, Kind, Memory, Reckoner};
-use super::lower::{Cover, Formula, Lowerer, Meaning, Typed};
+use super::lower::{Formula, Lowerer, Meaning, Typed};
+use super::reach::Reach;
 use super::source::{Located, Measured, Rows};
 use crate::formula::graph::{Graph, Inputs, NodeId};
 use crate::formula::table::{Table, Through};
-use crate::solve::Solution;
 use crate::unit::{Dimension, Unit};
 use std::ops::Range;
 use std::sync::Arc;
@@ -47,27 +46,6 @@ pub(super) struct Taken {
     table: u16,
     dimension: Option<Dimension>,
     absolute: Absolute,
-}
-
-/// What measured data are read at: it must stay inside the range.
-#[derive(Debug, Clone)]
-pub(super) struct Reach {
-    name: String,
-    /// As written.
-    against: String,
-    argument: NodeId,
-    table: u16,
-    unit: Unit,
-}
-
-/// The same, ready to be looked at on a solution.
-pub(super) struct Watched {
-    name: String,
-    against: String,
-    range: [f64; 2],
-    unit: Unit,
-    /// Smallest and largest argument.
-    ends: [Reckoner; 2],
 }
 
 impl Assembler<'_, '_> {
@@ -115,44 +93,6 @@ impl Assembler<'_, '_> {
             found.extend(crossings(graph, reach.argument, table.points(), span));
         }
         found
-    }
-
-    /// All arguments of measured data that a solution decides about.
-    pub(super) fn watched(&mut self, unknowns: usize, points: &[f64]) -> Vec<Watched> {
-        let mut watched = Vec::new();
-        for Reach { name, against, argument, table, unit } in self.lowerer.reaches.clone() {
-            let argument = self.lowerer.reduction.reduce(&mut self.lowerer.graph, argument);
-            let graph = &mut self.lowerer.graph;
-            let Some(table) = graph.tables().get(usize::from(table)).cloned() else { continue };
-            let depends = graph.depends_on(argument);
-            let coordinate = graph.coordinate();
-            if argument == coordinate || !(depends.varies() || depends.unknowns() || depends.held) {
-                continue;
-            }
-            let first = self.lowerer.functionals.len() as u32;
-            let mut ends = [argument; 2];
-            if depends.varies() {
-                for (k, kind) in [Kind::Minimum, Kind::Maximum].into_iter().enumerate() {
-                    self.lowerer.functionals.push(Functional {
-                        kind,
-                        expression: argument,
-                        points: Vec::new(),
-                        point_places: Vec::new(),
-                        side: None,
-                        place: 0..0,
-                        text: against.clone(),
-                        dimension: None,
-                        unit: None,
-                        reported: false,
-                    });
-                    ends[k] = self.lowerer.graph.slot(first + k as u32);
-                }
-            }
-            let (graph, functionals) = (&mut self.lowerer.graph, &self.lowerer.functionals);
-            let ends = ends.map(|node| Reckoner::new(graph, node, functionals, unknowns, points));
-            watched.push(Watched { name, against, range: table.range(), unit, ends });
-        }
-        watched
     }
 }
 
@@ -230,12 +170,9 @@ impl Lowerer<'_> {
         }
         let known = |r: &Reach| r.table == table && r.argument == argument.node;
         if !self.reaches.iter().any(known) {
-            if argument.node == self.graph.coordinate() {
-                let places = [declared.place.clone(), declared.place.clone()];
-                self.covers.push(Cover { name: name.to_owned(), ends: range, places, hint: OUTSIDE });
-            }
             let against = at.text.trim().to_owned();
-            self.reaches.push(Reach { name: name.to_owned(), against, argument: argument.node, table, unit });
+            let place = declared.place.clone();
+            self.reaches.push(Reach { name: name.to_owned(), against, argument: argument.node, table, unit, place });
         }
         Some(Typed { node, dimension, absolute })
     }
@@ -352,39 +289,18 @@ impl Lowerer<'_> {
 }
 
 /// What to do when data end too early.
-const OUTSIDE: &str = "nothing is made up beyond the last point: add points, or shorten what needs them";
+pub(super) const OUTSIDE: &str = "nothing is made up beyond the last point: add points, or shorten what needs them";
 
-fn shown(value: f64, unit: &Unit) -> String {
+pub(super) fn shown(value: f64, unit: &Unit) -> String {
     let number = super::short(unit.from_si(value));
     if unit.text == "1" { number } else { format!("{number} {}", unit.text) }
 }
 
-fn span(range: [f64; 2], unit: &Unit) -> String {
+pub(super) fn span(range: [f64; 2], unit: &Unit) -> String {
     format!("from {} to {} only", shown(range[0], unit), shown(range[1], unit))
 }
 
-fn within(value: f64, [low, high]: [f64; 2]) -> bool {
+pub(super) fn within(value: f64, [low, high]: [f64; 2]) -> bool {
     let slack = SLACK * (high - low);
     value >= low - slack && value <= high + slack
-}
-
-impl Watched {
-    /// Why a solution does not count: it needs values where nothing was measured.
-    pub fn refuses(&self, solution: &Solution) -> Option<String> {
-        let Self { name, against, range, unit, ends } = self;
-        for reckoner in ends {
-            let Ok(found) = reckoner.number(&solution.field, &Memory::default()) else {
-                return Some(format!("it cannot be seen whether `{against}` stays where `{name}` was measured"));
-            };
-            if !within(found.value, *range) {
-                return Some(format!(
-                    "the solution needs `{name}` at {against} = {}, but it is measured {}: nothing is made up beyond the \
-                     last point",
-                    shown(found.value, unit),
-                    span(*range, unit)
-                ));
-            }
-        }
-        None
-    }
 }

@@ -30,6 +30,7 @@ mod nature;
 mod piece;
 mod points;
 mod pole;
+mod reach;
 mod reduce;
 mod singular;
 mod source;
@@ -72,7 +73,7 @@ pub struct Sheet {
     report: Vec<Item>,
     curves: Vec<CurveItem>,
     balances: Vec<Balance>,
-    watched: Vec<measured::Watched>,
+    watched: Vec<reach::Watched>,
     cases: Vec<Case>,
 }
 

@@ -52,7 +52,7 @@ impl Lowerer<'_> {
             && sorted.len() == parts.len()
         {
             let places = [place(first.2[0]), place(last.2[1])];
-            self.covers.push(Cover { name: name.to_owned(), ends: [first.0, last.1], places, hint: Cover::HINT });
+            self.covers.push(Cover { name: name.to_owned(), ends: [first.0, last.1], places });
         }
         let mut dimension: Option<Option<Dimension>> = None;
         let mut first: Option<(&Formula, Typed)> = None;

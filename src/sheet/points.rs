@@ -92,14 +92,14 @@ impl Assembler<'_, '_> {
             }
         }
         for cover in std::mem::take(&mut self.lowerer.covers) {
-            let Cover { name, ends, places, hint } = cover;
+            let Cover { name, ends, places } = cover;
             if ends[0] > span[0] + small {
                 let message = format!("`{name}` has no value from {} to {}", shown(span[0]), shown(ends[0]));
-                self.lowerer.faults.add("piece", places[0].clone(), message, Some(hint.into()));
+                self.lowerer.faults.add("piece", places[0].clone(), message, Some(Cover::HINT.into()));
             }
             if ends[1] < span[1] - small {
                 let message = format!("`{name}` has no value from {} to {}", shown(ends[1]), shown(span[1]));
-                self.lowerer.faults.add("piece", places[1].clone(), message, Some(hint.into()));
+                self.lowerer.faults.add("piece", places[1].clone(), message, Some(Cover::HINT.into()));
             }
         }
         let mut used: BTreeSet<u32> = BTreeSet::new();
