@@ -4,6 +4,9 @@
 //! multiple shooting in double precision; sources: Roark, Timoshenko, Hetenyi, Incropera & DeWitt, Levenspiel and
 //! others, remembered, every formula derived anew).
 
+mod common;
+
+use common::sheets;
 use spanwise::evidence::nodal::nodal;
 use spanwise::sheet;
 use std::collections::BTreeMap;
@@ -34,7 +37,7 @@ fn reference() -> BTreeMap<String, Vec<Row>> {
 fn read(name: &str) -> sheet::Sheet {
     let path = format!("examples/sheets/{name}.toml");
     let text = std::fs::read_to_string(&path).expect("the sheet is there");
-    sheet::read(&text).unwrap_or_else(|faults| panic!("{name}: {faults:#?}"))
+    sheets::read(&text)
 }
 
 #[test]

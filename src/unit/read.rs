@@ -46,7 +46,7 @@ pub fn scan(text: &str) -> Result<Option<(Unit, usize)>, UnitError> {
     match reader.product(0) {
         // Of `1/x` no more than the 1 was a unit: then it is a number of the formula.
         Ok(parts) if parts.text == "1" => Ok(None),
-        Ok(parts) => Ok(Some((parts.unit(), reader.at))),
+        Ok(parts) => Ok(Some((parts.unit(reader.at)?, reader.at))),
         Err(Stop::NoUnit(_)) => Ok(None),
         Err(Stop::Fault(error)) => Err(*error),
     }
@@ -63,7 +63,7 @@ pub(super) fn whole(text: &str, star: bool) -> Result<Unit, UnitError> {
         });
     }
     match reader.product(0) {
-        Ok(parts) => Ok(parts.unit()),
+        Ok(parts) => parts.unit(text.len()),
         Err(Stop::NoUnit(error) | Stop::Fault(error)) => Err(*error),
     }
 }
@@ -93,8 +93,14 @@ struct Parts {
 }
 
 impl Parts {
-    fn unit(self) -> Unit {
-        Unit::new(self.text, self.scale, self.shift, self.dimension)
+    /// The whole, which took `used` bytes.
+    fn unit(self, used: usize) -> Result<Unit, UnitError> {
+        let unit = Unit::new(self.text, self.scale, self.shift, self.dimension);
+        if unit.factor.is_normal() {
+            return Ok(unit);
+        }
+        let message = "this unit is too small or too large to calculate with".into();
+        Err(UnitError { span: 0..used, message, hint: None })
     }
 
     fn absolute(&self) -> bool {

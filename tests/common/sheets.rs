@@ -2,10 +2,15 @@
 #![allow(dead_code)]
 
 use spanwise::model::Model;
-use spanwise::sheet::{self, Sheet};
+use spanwise::sheet::{self, DataFile, Reading, Sheet};
 
+/// Reads a sheet; data files lie beside the examples.
 pub fn read(text: &str) -> Sheet {
-    sheet::read(text).unwrap_or_else(|faults| panic!("{text}\n{faults:#?}"))
+    let content = |name: &String| std::fs::read_to_string(std::path::Path::new("examples/sheets").join(name));
+    let file = |name: String| DataFile { content: content(&name).map_err(|e| e.to_string()), name };
+    let files: Vec<DataFile> = sheet::files(text).into_iter().map(file).collect();
+    sheet::read_with(text, &Reading { files: &files, ..Reading::default() })
+        .unwrap_or_else(|faults| panic!("{text}\n{faults:#?}"))
 }
 
 /// Reads, checks order and carried orders, solves; then every asked number against the value given, in the unit

@@ -62,8 +62,8 @@ impl Display for Expression {
                 let digits = format!("{value:?}");
                 f.write_str(digits.strip_suffix(".0").unwrap_or(&digits))?;
                 match unit {
-                    // A bare 1 would be a second number.
-                    Some(u) if u.text == "1" => write!(f, " [1]"),
+                    // A 1 in front would be a second number.
+                    Some(u) if u.text.starts_with('1') && !u.text.starts_with("1/") => write!(f, " [{}]", u.text),
                     Some(u) => write!(f, " {}", u.text),
                     None => Ok(()),
                 }
