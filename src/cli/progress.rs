@@ -69,12 +69,15 @@ pub(super) struct Progress {
     start: Instant,
     bar: OnceLock<ProgressBar>,
     limit: Option<Duration>,
+    /// The pass at hand, when it began to be watched, and how many elements were done then.
+    began: Mutex<(usize, Instant, usize)>,
 }
 
 impl Progress {
     /// Starts watching.
     pub fn start(limit: Option<Duration>) -> Self {
-        Self { start: Instant::now(), bar: OnceLock::new(), limit }
+        let began = Mutex::new((0, Instant::now(), 0));
+        Self { start: Instant::now(), bar: OnceLock::new(), limit, began }
     }
 
     /// Takes in a step; false stops the solve.
@@ -87,10 +90,27 @@ impl Progress {
                 }
                 bar
             });
-            bar.set_message(format!("pass {}, element {} of {}", step.pass, step.done, step.elements));
+            let mut message = format!("pass {}, element {} of {}", step.pass, step.done, step.elements);
+            if let Some(left) = self.left(&step) {
+                message.push_str(&format!(", about {left} s to go in this pass"));
+            }
+            bar.set_message(message);
             bar.tick();
         }
         !interrupted() && self.limit.is_none_or(|limit| self.start.elapsed() < limit)
+    }
+
+    /// Seconds that this pass will still take, by the elements done; how many passes will follow nobody knows.
+    fn left(&self, step: &solve::Progress) -> Option<u64> {
+        let mut began = self.began.lock().unwrap_or_else(PoisonError::into_inner);
+        if began.0 != step.pass || step.done == 0 {
+            *began = (step.pass, Instant::now(), step.done);
+        }
+        let (_, since, first) = *began;
+        let done = step.done.checked_sub(first).filter(|done| *done > 0)?;
+        let each = since.elapsed().as_secs_f64() / done as f64;
+        let left = each * step.elements.saturating_sub(step.done) as f64;
+        (left >= 1.0).then(|| left.ceil() as u64)
     }
 
     /// Takes the line away.

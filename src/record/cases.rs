@@ -124,21 +124,17 @@ pub(super) fn section(outcome: &Outcome) -> Markup {
                     }
                 }
                 div class="wide" {
-                    table class="figures" {
-                        thead {
-                            tr {
-                                th { "Quantity" } th { "Unit" } th { (BASE) }
-                                @for case in &outcome.cases { th { (case.name) } }
-                            }
-                        }
-                        tbody {
-                            @for (k, q) in outcome.quantities.iter().enumerate() {
+                    table class="results" {
+                        thead { tr { th { "Quantity" } th { "Case" } th { "Value" } th { "Unit" } } }
+                        @for (k, q) in outcome.quantities.iter().enumerate() {
+                            tbody {
                                 tr {
-                                    th scope="row" { (q.name) }
-                                    td class="unit" { (unit(&q.unit)) }
-                                    td class="number" { (minus(value(q))) }
-                                    @for case in &outcome.cases {
-                                        td class="number" { (case.quantities.get(k).map(|q| minus(value(q))).unwrap_or_default()) }
+                                    th scope="rowgroup" rowspan=(outcome.cases.len() + 1) { (q.name) }
+                                    td { (BASE) } td class="number" { (minus(value(q))) } td class="unit" { (unit(&q.unit)) }
+                                }
+                                @for case in &outcome.cases {
+                                    @if let Some(q) = case.quantities.get(k) {
+                                        tr { td { (case.name) } td class="number" { (minus(value(q))) } td class="unit" { (unit(&q.unit)) } }
                                     }
                                 }
                             }

@@ -49,6 +49,10 @@ impl Lowerer<'_> {
     pub fn expect_place(&mut self, at: &Located, e: &Expression, typed: Typed) -> Option<()> {
         let pure = Some(Dimension::default());
         if self.coordinate_dimension == pure && typed.dimension.is_some() && typed.dimension != pure {
+            if std::mem::replace(&mut self.misplaced, true) {
+                // Said once: every place would be at fault.
+                return None;
+            }
             let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
             let found = typed.dimension.unwrap_or_default().describe();
             let name = &self.coordinate;

@@ -135,6 +135,8 @@ pub(super) struct Lowerer<'f> {
     pub moves: Cell<bool>,
     /// Names that were read as units somewhere.
     likened: HashSet<String>,
+    /// Whether it has been said that the ends of the span lack their unit.
+    pub misplaced: bool,
     /// Whether the graph has been found full.
     overfull: bool,
     states: [HashMap<String, State>; 2],
@@ -164,6 +166,7 @@ impl<'f> Lowerer<'f> {
             nature: Vec::new(),
             moves: Cell::new(false),
             likened: HashSet::new(),
+            misplaced: false,
             overfull: false,
             states: [HashMap::new(), HashMap::new()],
             stack: Vec::new(),
