@@ -282,3 +282,31 @@ fn what_makes_no_sense_is_refused() {
     let indefinite = second_order([-1.0, 1.0], [0, 0], |x| [1.0, 0.0, 0.0, x]);
     assert!(matches!(fault(&indefinite), Eigen::Unbounded { .. }));
 }
+
+#[test]
+fn ways_of_asking_agree() {
+    // u'' + lambda u = 0, u(0) = u(1) = 0: (n pi)^2.
+    let model = second_order([0.0, 1.0], [0, 0], |_| [1.0, 0.0, 0.0, 1.0]);
+    let exact: Vec<f64> = (1..=30).map(|n| (f64::from(n) * std::f64::consts::PI).powi(2)).collect();
+    let ask = |ask: Ask| eigen(&model, ask, &Settings::default()).expect("an eigenproblem");
+    agrees(&ask(Ask::Lowest(30)), &real(&exact), 1e-12);
+    agrees(&ask(Ask::Between(200.0, 1000.0)), &real(&exact[4..10]), 1e-12);
+    let near = [exact[6], exact[5], exact[7]];
+    agrees(&ask(Ask::Near(Complex64::from(480.0), 3)), &real(&near), 1e-12);
+    assert!(ask(Ask::Between(1.0, 2.0)).modes.is_empty());
+    // The other way round: u'' = lambda u.
+    let model = second_order([0.0, 1.0], [0, 0], |_| [1.0, 0.0, 0.0, -1.0]);
+    let spectrum = eigen(&model, Ask::LargestReal(4), &Settings::default()).expect("an eigenproblem");
+    agrees(&spectrum, &real(&exact[..4].iter().map(|v| -v).collect::<Vec<_>>()), 1e-12);
+}
+
+#[test]
+fn a_mode_is_scaled_with_its_bars() {
+    let model = second_order([0.0, 1.0], [0, 0], |_| [1.0, 0.0, 0.0, 1.0]);
+    let mode = &lowest(&model, 2).modes[1];
+    let scaled =
+        mode.scaled(|f| Ok(Complex64::from(f.value(0, 1, 0.0, Side::Right)))).expect("a slope that is not zero");
+    let value = scaled.solution.value(0, 0, 0.2385, Side::Left).expect("a value");
+    let exact = (2.0 * std::f64::consts::PI * 0.2385).sin() / (2.0 * std::f64::consts::PI);
+    assert!((value.value - exact).abs() <= value.error && value.error < 1e-12, "{value:?} {exact}");
+}

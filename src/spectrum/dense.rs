@@ -261,8 +261,8 @@ impl<'a> Dense<'a> {
         }
     }
 
-    /// Eigenvalues by (A(shift))^-1 A'(shift), among the vectors that meet all rows without the parameter.
-    pub fn eigenvalues(&self, shift: Complex64) -> Result<Candidates> {
+    /// Eigenvalues, with or without their vectors, by (A(shift))^-1 A'(shift), among the vectors that meet all rows without the parameter.
+    pub fn eigenvalues(&self, shift: Complex64, vectors: bool) -> Result<Candidates> {
         let s = self.pencil.size.max(shift.norm() * 1e-3);
         // With lambda = shift + s nu: B_0 + nu B_1 + nu^2 B_2.
         let shifted = |a: &[Complex64; POWERS]| {
@@ -273,9 +273,9 @@ impl<'a> Dense<'a> {
         let free = |row: &&Row| row.iter().all(|(_, a)| a[1] == Complex64::ZERO && a[2] == Complex64::ZERO);
         let (constraints, active): (Vec<&Row>, Vec<&Row>) = self.rows.iter().partition(free);
         let spectrum = if real {
-            real::spectrum(self.size, &constraints, &active, &|a, p| shifted(a)[p].re, quadratic)
+            real::spectrum(self.size, &constraints, &active, &|a, p| shifted(a)[p].re, [quadratic, vectors])
         } else {
-            complex::spectrum(self.size, &constraints, &active, &|a, p| shifted(a)[p], quadratic)
+            complex::spectrum(self.size, &constraints, &active, &|a, p| shifted(a)[p], [quadratic, vectors])
         };
         let Some((values, vectors)) = spectrum else {
             return Ok(Candidates { found: Vec::new(), finite: 0, regular: false });
@@ -287,7 +287,7 @@ impl<'a> Dense<'a> {
             finite += usize::from(mu.norm() > 1e-10 * largest);
             if mu.norm() > 1e-14 * largest {
                 let value = shift + s / mu;
-                found.push(Candidate { value, vector: (0..self.size).map(|r| vectors[(r, k)]).collect() });
+                found.push(Candidate { value, vector: (0..vectors.nrows()).map(|r| vectors[(r, k)]).collect() });
             }
         }
         // An eigenvalue at the shift itself spoils all others.
@@ -346,7 +346,7 @@ macro_rules! spectra {
                 constraints: &[&Row],
                 active: &[&Row],
                 pick: Pick<'_>,
-                quadratic: bool,
+                [quadratic, vectors]: [bool; 2],
             ) -> Option<Eigen> {
                 let n = active.len();
                 let basis: Mat<$number> = if constraints.is_empty() {
@@ -374,6 +374,9 @@ macro_rules! spectra {
                 let finite = (0..full.ncols()).all(|c| (0..full.nrows()).all(|r| full[(r, c)].is_finite()));
                 if !finite {
                     return None;
+                }
+                if !vectors {
+                    return Some((full.eigenvalues().ok()?, Mat::zeros(0, 0)));
                 }
                 let eigen = full.eigen().ok()?;
                 let lower = if quadratic { n } else { 0 };

@@ -5,7 +5,7 @@ use crate::adapt::seed;
 use crate::error::{Eigen, Error, Result};
 use crate::field::Field;
 use crate::linear::Library;
-use crate::mesh::{Element, Mesh};
+use crate::mesh::{Element, Mesh, Side};
 use crate::model::Held;
 use crate::spectrum::dense::{self, Candidates, Dense};
 use num_complex::Complex64;
@@ -16,6 +16,10 @@ const LEVELS: usize = 6;
 const NODES_PER_MODE: usize = 3;
 /// Nodes of an element.
 const NODES: usize = 20;
+/// From so many nodes on elements have more of them.
+const MANY: usize = 150;
+/// Nodes of an element then.
+const MOST_NODES: usize = 32;
 /// How many nodes the second mesh has more on each element.
 const MORE: usize = 4;
 /// Largest drift between two meshes, relative.
@@ -123,15 +127,25 @@ impl Task<'_> {
     pub(super) fn mesh(&self, about: f64, least: usize) -> Result<Mesh> {
         let held = Held::new(self.pencil.model, vec![about], true);
         let seeded = seed::seed(&held, &self.doubled_scale(), self.open, 400)?;
-        let mut elements: Vec<Element> = seeded.elements.into_iter().map(|e| Element { nodes: NODES, ..e }).collect();
-        if elements.len() == 1 && least <= 2 * NODES {
-            elements[0].nodes = least.max(NODES);
+        let length = self.pencil.length();
+        // Many waves are carried best by few elements of many nodes.
+        let nodes = if least > MANY { MOST_NODES } else { NODES };
+        if seeded.elements.len() == 1 && least <= 2 * NODES {
+            let elements = seeded.elements.into_iter().map(|e| Element { nodes: least.max(NODES), ..e }).collect();
+            return Ok(Mesh { elements });
         }
-        while elements.iter().map(|e| e.nodes).sum::<usize>() < least {
-            let longest = (0..elements.len()).max_by(|a, b| elements[*a].length().total_cmp(&elements[*b].length()));
-            let Some(longest) = longest else { break };
-            let halves = elements[longest].halves();
-            elements.splice(longest..=longest, halves);
+        let mut elements = Vec::new();
+        for element in seeded.elements {
+            let share = element.length() / length * least as f64 / nodes as f64;
+            let parts = (share - 1e-9).ceil().max(1.0) as usize;
+            let edge = |k: usize| element.left + element.length() * k as f64 / parts as f64;
+            elements.extend((0..parts).map(|k| Element {
+                left: if k == 0 { element.left } else { edge(k) },
+                right: if k + 1 == parts { element.right } else { edge(k + 1) },
+                nodes,
+                open: element.open.filter(|side| k == if *side == Side::Left { 0 } else { parts - 1 }),
+                ..element
+            }));
         }
         Ok(Mesh { elements })
     }
@@ -152,9 +166,9 @@ impl Task<'_> {
         // None of these is likely to be an eigenvalue, and not all of them are.
         for factor in [-0.1237, 0.2851, -1.713, 0.0631] {
             let shift = centre + factor * step;
-            let second = fine.eigenvalues(shift)?;
+            let second = fine.eigenvalues(shift, true)?;
             if second.regular {
-                let first = coarse.eigenvalues(shift)?;
+                let first = coarse.eigenvalues(shift, false)?;
                 if first.regular {
                     return Ok((first, second));
                 }

@@ -14,7 +14,10 @@ use crate::spectrum::block::Block;
 use crate::spectrum::dense::small_eigenvalues as eigenvalues;
 use nalgebra::DMatrix;
 use num_complex::Complex64;
+use std::collections::HashMap;
 
+/// From so many groups on it pays to use all cores.
+const MANY_GROUPS: usize = 12;
 /// Most columns of one block.
 const WIDEST: usize = 6;
 
@@ -22,15 +25,17 @@ impl Task<'_> {
     /// Polishes all candidates.
     pub(super) fn modes(&self, found: Found) -> Result<Spectrum> {
         let Found { starts, mut discarded, .. } = found;
-        let mut groups: Vec<(Vec<usize>, Option<Vec<Mode>>)> =
-            self.clusters(&starts).into_iter().map(|c| (c, None)).collect();
+        let clusters = self.clusters(&starts);
+        let mut ahead = self.polished_ahead(&starts, &clusters);
+        let mut groups: Vec<(Vec<usize>, Option<Vec<Mode>>)> = clusters.into_iter().map(|c| (c, None)).collect();
         // Groups that lead to the same place are joined and done again: each round leaves one less to do or one group less.
         while let Some(at) = groups.iter().position(|g| g.1.is_none()) {
             let members: Vec<&Start> = groups[at].0.iter().map(|k| &starts[*k]).collect();
             let mut discard = |reason: Reason| {
                 discarded.extend(members.iter().map(|m| Discarded { value: m.value, reason }));
             };
-            match self.polished(&members) {
+            let outcome = ahead.remove(&groups[at].0).unwrap_or_else(|| self.polished(&members));
+            match outcome {
                 Ok(found) => match self.stray(&starts, &groups, at, &found) {
                     None => groups[at].1 = Some(found),
                     Some((other, _)) if groups[at].0.len() + groups[other].0.len() <= WIDEST => {
@@ -57,6 +62,23 @@ impl Task<'_> {
         let count =
             Count { checked: None, found: modes.len(), counted: None, method: Method::None, region: [f64::NAN; 4] };
         Ok(Spectrum { modes, discarded, count })
+    }
+
+    /// Polishes many groups on all cores; few are done when their turn comes. The result does not depend on it.
+    fn polished_ahead(&self, starts: &[Start], clusters: &[Vec<usize>]) -> HashMap<Vec<usize>, Result<Vec<Mode>>> {
+        let workers = std::thread::available_parallelism().map_or(1, |n| n.get().min(8));
+        if workers < 2 || clusters.len() < MANY_GROUPS {
+            return HashMap::new();
+        }
+        let work = |first: usize| -> Vec<(Vec<usize>, Result<Vec<Mode>>)> {
+            let own = clusters.iter().skip(first).step_by(workers);
+            own.map(|c| (c.clone(), self.polished(&c.iter().map(|k| &starts[*k]).collect::<Vec<_>>()))).collect()
+        };
+        std::thread::scope(|scope| {
+            let threads: Vec<_> = (0..workers).map(|first| scope.spawn(move || work(first))).collect();
+            // A thread that panicked leaves its groups to be done in turn.
+            threads.into_iter().filter_map(|t| t.join().ok()).flatten().collect()
+        })
     }
 
     /// Groups of candidates that lie close together.
