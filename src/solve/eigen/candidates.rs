@@ -102,7 +102,7 @@ impl Task<'_> {
             // Those that drift stay in the way for ever where they are false: what agrees must be the same twice.
             let now: Vec<Complex64> =
                 sorted.iter().filter(|s| s.agrees).map(|s| s.value).take(wanted.unwrap_or(agreed)).collect();
-            let steady = level >= 2
+            let steady = level >= 1
                 && wanted.is_none_or(|n| self.total(&now) >= n)
                 && now.len() == before.len()
                 && now.iter().zip(&before).all(|(a, b)| (a - b).norm() <= 10.0 * DRIFT * a.norm().max(b.norm()));
@@ -111,9 +111,10 @@ impl Task<'_> {
                 return self.gather(sorted, second, &fine, &mut library);
             }
             let reach = wanted.unwrap_or(sorted.len()).min(sorted.len());
-            let likely = |s: &&Ranked| (s.value - s.before).norm() < 0.1 * s.value.norm();
-            about = sorted.iter().filter(likely).take(reach).map(|s| s.value.norm()).fold(about, f64::max);
-            least = nodes + nodes / 2 + NODES;
+            // Those that drift may be anything, false ones as large as the mesh allows.
+            let agreed = sorted.iter().filter(|s| s.agrees).take(reach);
+            about = agreed.map(|s| s.value.norm()).fold(about, f64::max);
+            least = nodes + nodes / 4 + NODES;
         }
         Err(Error::NoSolution { tried: "the candidates of an eigenproblem".into() })
     }
