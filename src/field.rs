@@ -66,6 +66,16 @@ impl Field {
         self.zip(other, |a, b| a + t * (b - a))
     }
 
+    /// self + t * other, on the same mesh.
+    pub(crate) fn plus(&self, other: &Field, t: f64) -> Field {
+        self.zip(other, |a, b| a + t * b)
+    }
+
+    /// t * self
+    pub(crate) fn scaled(&self, t: f64) -> Field {
+        self.zip(self, |a, _| t * a)
+    }
+
     /// self - other, for a field on the same mesh.
     pub(crate) fn minus(&self, other: &Field) -> Field {
         self.zip(other, |a, b| a - b)

@@ -4,11 +4,14 @@ mod boundary;
 mod eigen;
 mod march;
 mod nonlinear;
+mod path;
 mod solver;
 mod viscosity;
 
 pub use boundary::{boundary, on_mesh};
 pub use eigen::{Ask, Count, Discarded, Method, Mode, Reason, Spectrum, eigen, eigen_complex};
+
+pub use path::{Path, PathEnd, PathPoint, PathStep, Route, path};
 
 use crate::error::Result;
 use crate::evidence::bars::{self, Companions};
@@ -76,6 +79,29 @@ impl Solution {
     /// Those of `number`, and `NotFinite` when value or bar is not finite.
     pub fn estimate(&self, number: impl Fn(&Field) -> Result<Estimate>) -> Result<Estimate> {
         bars::estimate(&self.field, &self.companions, &number)
+    }
+
+    /// The same with all its fields replaced.
+    fn mapped(self, map: impl Fn(&Field) -> Field) -> Self {
+        let all = |fields: &[Field]| fields.iter().map(&map).collect();
+        let companions =
+            Companions { coarser: all(&self.companions.coarser), nudged: all(&self.companions.nudged) };
+        Self { field: map(&self.field), companions, ..self }
+    }
+
+    /// An unknown constant with its bar.
+    ///
+    /// # Errors
+    /// `Argument` if it does not exist, `NotFinite`.
+    pub fn constant(&self, index: usize) -> Result<Estimate> {
+        if index >= self.field.constants.len() {
+            return Err(crate::error::Error::Argument {
+                what: "constant",
+                value: index.to_string(),
+                range: "one that exists",
+            });
+        }
+        self.estimate(|field| Ok(Estimate { value: field.constants[index], error: 0.0 }))
     }
 
     /// Puts the values of held constants behind the unknown constants of all fields, for numbers that depend on them.

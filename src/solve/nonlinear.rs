@@ -135,8 +135,15 @@ fn seeded(model: &dyn Model, settings: &Settings<'_>, start: &Field) -> Result<S
     follow(model, settings, start, mesh)
 }
 
+/// A point of a path that need not be more than near: Newton's iteration and mesh adaptation to some six digits.
+pub(super) fn near(model: &dyn Model, settings: &Settings<'_>, start: &Field, mesh: Mesh) -> Result<Field> {
+    let mut run = Run::on(model, settings, start, mesh, BUDGET)?;
+    run.converge(start, 1e-6, 1e-8)?;
+    Ok(run.field)
+}
+
 /// Newton's iteration and mesh adaptation in turn, from a start and a mesh to the answer with its companions.
-fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field, mesh: Mesh) -> Result<Solution> {
+pub(super) fn follow(model: &dyn Model, settings: &Settings<'_>, start: &Field, mesh: Mesh) -> Result<Solution> {
     let mut run = Run::on(model, settings, start, mesh, BUDGET)?;
     let resolved = run.converge(start, wanted_tail(settings.relative), 1e-13)?;
     let passes = run.passes;
