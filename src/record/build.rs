@@ -121,7 +121,7 @@ pub fn solved(sheet: &Sheet, solution: &Solution, origin: Origin<'_>, second_rou
     let met = outcome.quantities.iter().all(|q| q.met);
     outcome.status = if met { Status::Solved } else { Status::Inaccurate };
     outcome.passes = solution.passes;
-    let found = residual(&sheet.model(), &solution.field).ok();
+    let found = residual(&sheet.model_of(&solution.field), &solution.field).ok();
     outcome.checks = checks(sheet, solution, found.as_ref());
     if second_route {
         outcome.checks.push(second(sheet, solution, &asked));
@@ -219,7 +219,7 @@ fn second(sheet: &Sheet, solution: &Solution, asked: &[Asked]) -> Check {
     if !sheet.statement.linear {
         return Check { name, result: "not made: it is for linear problems".into(), meaning, passed: None };
     }
-    match nodal(&sheet.model(), &solution.base().mesh) {
+    match nodal(&sheet.model_of(&solution.field), &solution.base().mesh) {
         Ok(field) => {
             let mut worst = 0.0f64;
             for (asked, other) in asked.iter().zip(sheet.plain_numbers(&field)) {

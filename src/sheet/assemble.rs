@@ -5,6 +5,7 @@ use super::condition::{Placed, Read};
 use super::fault::{Fault, Faults};
 use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
+use super::path::{FoldNames, MOST_FOLDS, PathAsked};
 use super::reduce::Reduction;
 use super::singular::{Expanded, Singular};
 use super::source::{self, Given, Located, MOST_BYTES, Source};
@@ -33,6 +34,7 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
         return Err(faults.finish(text));
     }
     source.replace(reading.replaced, &mut faults);
+    source.settle_path(&mut faults);
     let mut sheet = Assembler::new(&source, reading, &mut faults).run();
     if sheet.is_none() && faults.is_empty() {
         faults.add("not understood", 0..0, "the sheet is not understood, and it is not known why", None);
@@ -50,10 +52,17 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
     }
 }
 
+/// Data to be held: those asked for, the parameter of a path last.
+fn held_names<'s>(source: &'s Source, reading: &Reading<'s>) -> Vec<&'s str> {
+    let parameter = source.path.as_ref().map(|follow| follow.parameter.text.as_str());
+    let others = reading.held.iter().copied().filter(|name| Some(*name) != parameter);
+    others.chain(parameter).collect()
+}
+
 pub(super) struct Assembler<'s, 'f> {
     pub source: &'s Source,
     /// Names of the data to be held.
-    held: &'s [&'s str],
+    held: Vec<&'s str>,
     /// Data files of the sheet.
     files: &'s [DataFile],
     pub lowerer: Lowerer<'f>,
@@ -77,7 +86,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
     pub fn new(source: &'s Source, reading: &Reading<'s>, faults: &'f mut Faults) -> Self {
         Self {
             source,
-            held: reading.held,
+            held: held_names(source, reading),
             files: reading.files,
             lowerer: Lowerer::new(faults),
             singular: Vec::new(),
@@ -93,6 +102,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         self.lowerer.scalars = true;
         self.lowerer.carried = fluxes.iter().map(|f| Carried { written: f.written, unknown: f.unknown }).collect();
         self.names();
+        let path = self.path();
         let reads = self.conditions();
         self.lowerer.reporting = true;
         let wanted = self.report();
@@ -108,7 +118,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             return None;
         }
         let ((equations, fluxes), (nodes, names), points) = (equations?, understood?, points?);
-        self.build(equations, fluxes, nodes, names, reads, wanted, points)
+        self.build(equations, fluxes, nodes, names, reads, wanted, points, path)
     }
 
     /// Gives every name its meaning.
@@ -163,8 +173,13 @@ impl<'s, 'f> Assembler<'s, 'f> {
             add(&mut self.lowerer, name, span, Meaning::Faulty);
         }
         let first = self.lowerer.constants.len() as u16;
-        self.lowerer.graph.hold(first, self.held.len());
-        for name in self.held {
+        let folds = if source.path.is_some() { MOST_FOLDS } else { 0 };
+        self.lowerer.graph.hold(first, self.held.len() + folds);
+        if folds > 0 {
+            let first = first + self.held.len() as u16;
+            self.lowerer.folds = Some(FoldNames { first, parameter: None });
+        }
+        for name in &self.held {
             if !source.given.iter().any(|entry| entry.name == *name) {
                 let message = format!("`{name}` is not among the data of this sheet");
                 self.lowerer.faults.add("held", 0..0, message, Some("only names of [given] can be held".into()));
@@ -411,12 +426,12 @@ impl<'s, 'f> Assembler<'s, 'f> {
     fn held_data(&mut self) -> Vec<HeldDatum> {
         let first = self.lowerer.constants.len() as u16;
         let mut data = Vec::with_capacity(self.held.len());
-        for (k, name) in self.held.iter().enumerate() {
+        for (k, name) in self.held.clone().into_iter().enumerate() {
             let typed = syntax::name(name).and_then(|name| self.lowerer.named(&name));
             let value = self.lowerer.graph.held(first + k as u16).map_or(f64::NAN, |held| held.value);
             let unit = Unit::si(typed.and_then(|t| t.dimension).unwrap_or_default());
             let unit = self.written_unit(name).unwrap_or(unit);
-            data.push(HeldDatum { name: (*name).to_owned(), unit, value });
+            data.push(HeldDatum { name: name.to_owned(), unit, value });
         }
         data
     }
@@ -462,6 +477,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         reads: Option<Vec<Read>>,
         wanted: Vec<Wanted>,
         points: Vec<f64>,
+        path: Option<PathAsked>,
     ) -> Option<Sheet> {
         let given = self.lowerer.functions.len() + fluxes.len();
         let mut orders = vec![0u8; given];
@@ -515,6 +531,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         }
         let orders: Vec<usize> = orders.iter().map(|m| usize::from(*m)).collect();
         let held = self.held_data();
+        self.check_path(&nodes, &placed);
         let layout = Layout::new(&orders, self.lowerer.constants.len() + held.len());
         let linear = self.linear(&nodes, &placed, [points[0], points[points.len() - 1]]);
         let statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
@@ -555,12 +572,12 @@ impl<'s, 'f> Assembler<'s, 'f> {
         if !self.lowerer.faults.is_empty() {
             return None;
         }
-        let Lowerer { mut graph, mut functionals, warnings, reduction, moves, .. } = self.lowerer;
+        let Lowerer { mut graph, mut functionals, warnings, reduction, moves, folds, .. } = self.lowerer;
         for functional in &mut functionals {
             functional.expression = reduction.reduce(&mut graph, functional.expression);
         }
         let report: Vec<Item> =
-            wanted.into_iter().map(|w| w.item(&mut graph, &functionals, unknowns, &points)).collect();
+            wanted.into_iter().map(|w| w.item(&mut graph, &functionals, unknowns, &points, folds)).collect();
         Some(Sheet {
             title: self.source.title.clone(),
             note: self.source.note.clone(),
@@ -575,6 +592,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             balances,
             watched,
             cases: Vec::new(),
+            path,
         })
     }
 }

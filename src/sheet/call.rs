@@ -11,7 +11,7 @@ use crate::unit::Dimension;
 use std::ops::Range;
 
 /// Names of all functions, for suggestions.
-pub(super) const FUNCTIONS: [&str; 36] = [
+pub(super) const FUNCTIONS: [&str; 37] = [
     "sqrt",
     "exp",
     "ln",
@@ -45,6 +45,7 @@ pub(super) const FUNCTIONS: [&str; 36] = [
     "at",
     "jump",
     "release",
+    "fold",
     "if",
     "pi",
     "inf",
@@ -149,7 +150,7 @@ impl Lowerer<'_> {
             }
             ("release", _) => self.fault("release", at, &e.span, "`release` stands alone, as a condition", ""),
             ("regular", _) => self.fault("regular", at, &e.span, "`regular` stands alone, as a condition", ""),
-            ("fold", _) => self.fault("not yet", at, name_span, "`fold`: paths are not part of this version", ""),
+            ("fold", _) => self.fold(at, e, name_span, arguments),
             _ => self.undefined(at, name, name_span),
         }
     }

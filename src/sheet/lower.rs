@@ -10,6 +10,7 @@ use super::fault::{Faults, nearest};
 use super::functional::Functional;
 use super::measured::{Declaration, Taken};
 use super::nature::{self, CONSTANTS, Constant};
+use super::path::FoldNames;
 use super::reach::Reach;
 use super::reduce::Reduction;
 use super::source::Located;
@@ -133,6 +134,8 @@ pub(super) struct Lowerer<'f> {
     pub nature: Vec<&'static Constant>,
     /// Whether a held datum decided about points, exponents or the like: with another value the sheet is another one.
     pub moves: Cell<bool>,
+    /// What `fold(n)` stands for, where there is a path.
+    pub folds: Option<FoldNames>,
     /// Names that were read as units somewhere.
     likened: HashSet<String>,
     /// Whether it has been said that the ends of the span lack their unit.
@@ -159,6 +162,7 @@ impl<'f> Lowerer<'f> {
             reduction: Reduction::default(),
             scalars: false,
             reporting: false,
+            folds: None,
             limits: Vec::new(),
             covers: Vec::new(),
             taken: HashMap::new(),

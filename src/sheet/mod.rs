@@ -27,6 +27,7 @@ mod lower;
 mod measured;
 mod model;
 mod nature;
+mod path;
 mod piece;
 mod points;
 mod pole;
@@ -43,6 +44,7 @@ pub use fault::Fault;
 pub use limits::limits;
 pub use model::SheetModel;
 pub use nature::{CONSTANTS, Constant};
+pub use path::{AskedAlong, AskedAt, PathAsked};
 pub use source::MOST_BYTES;
 pub use statement::{Datum, Feature, Line, Role, Statement};
 
@@ -75,6 +77,7 @@ pub struct Sheet {
     balances: Vec<Balance>,
     watched: Vec<reach::Watched>,
     cases: Vec<Case>,
+    path: Option<PathAsked>,
 }
 
 impl std::fmt::Debug for Sheet {
@@ -89,6 +92,8 @@ struct Item {
     formula: String,
     unit: Unit,
     reckoner: Reckoner,
+    /// Folds that it is made from, counted from 0.
+    folds: Vec<usize>,
 }
 
 /// Something that can be drawn along the span.
@@ -253,6 +258,15 @@ impl Sheet {
     /// ([`Sheet::moves_points`]).
     pub fn model_at(&self, values: Vec<f64>) -> Held<'_> {
         Held::new(&self.model, values, self.statement.linear)
+    }
+
+    /// The same with the values that a solution carries behind its unknown constants, where it does.
+    pub fn model_of(&self, field: &Field) -> Held<'_> {
+        let own = self.model.layout.constants() - self.held.len();
+        match field.constants.get(own..own + self.held.len()) {
+            Some(values) => self.model_at(values.to_vec()),
+            None => self.model(),
+        }
     }
 
     /// The problem with held data left open: constants behind the unknown ones, in the order of [`Sheet::held`]. It has as
@@ -444,8 +458,16 @@ struct Wanted {
 }
 
 impl Wanted {
-    fn item(self, graph: &mut Graph, functionals: &[Functional], unknowns: usize, points: &[f64]) -> Item {
+    fn item(
+        self,
+        graph: &mut Graph,
+        functionals: &[Functional],
+        unknowns: usize,
+        points: &[f64],
+        folds: Option<path::FoldNames>,
+    ) -> Item {
+        let folds = folds.map_or_else(Vec::new, |folds| folds.in_formula(graph, self.node, functionals));
         let reckoner = Reckoner::new(graph, self.node, functionals, unknowns, points);
-        Item { label: self.label, formula: self.formula, unit: self.unit, reckoner }
+        Item { label: self.label, formula: self.formula, unit: self.unit, reckoner, folds }
     }
 }

@@ -7,6 +7,7 @@ use toml::de::{DeTable, DeValue};
 
 mod cases;
 mod measured;
+mod path;
 
 pub(super) use cases::Changes;
 pub(super) use measured::{Measured, Rows, files};
@@ -136,6 +137,8 @@ pub(super) struct Source {
     pub conditions: Vec<Entry<Vec<Located>>>,
     pub report: Vec<Entry<Located>>,
     pub relative: Option<(f64, Range<usize>)>,
+    /// A parameter to follow.
+    pub path: Option<path::Follow>,
     /// Load cases: data changed in each.
     pub cases: Vec<Entry<Changes>>,
     /// Names whose entry is at fault: they are declared all the same.
@@ -160,10 +163,9 @@ impl Source {
 const SECTIONS: [&str; 8] = ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];
 
 /// Sections that belong to parts of the contract that are not built yet.
-const LATER: [(&str, &str); 5] = [
+const LATER: [(&str, &str); 4] = [
     ("eigen", "eigenproblems"),
     ("solutions", "a search for several solutions"),
-    ("path", "following a parameter"),
     ("sweep", "sweeps over data"),
     ("complex", "complex sheets"),
 ];
@@ -225,12 +227,7 @@ impl Reader<'_, '_> {
             }
             let message = format!("`{key}`: {what} are not part of this version");
             let message = message.replace("a search for several solutions are", "a search for several solutions is");
-            self.faults.add(
-                "not yet",
-                span,
-                message.replace("following a parameter are", "following a parameter is"),
-                None,
-            );
+            self.faults.add("not yet", span, message, None);
             return;
         }
         match key {
@@ -254,10 +251,11 @@ impl Reader<'_, '_> {
                 };
                 source.conditions.push(Entry { name, name_span, value });
             }),
+            "path" => self.path(source, span, value),
             "cases" => self.each(value, |r, entry, value| r.case(source, entry, value)),
             "accuracy" => self.each(value, |r, entry, value| r.accuracy(source, entry, value)),
             _ => {
-                let known = SECTIONS.into_iter().chain(["accuracy", "cases"]);
+                let known = SECTIONS.into_iter().chain(["accuracy", "cases", "path"]);
                 let hint = nearest(key, known).map(|k| format!("did you mean `{k}`?")).unwrap_or_else(|| {
                     "the sections are given, span, unknowns, equations, conditions, report, accuracy".into()
                 });
