@@ -44,6 +44,7 @@ fn made(pieces: Vec<Vec<(f64, f64)>>, span: (f64, f64)) -> Outcome {
         stations: Vec::new(),
         residual: Vec::new(),
         features: Vec::new(),
+        path: None,
         cases: Vec::new(),
         envelopes: Vec::new(),
         decay_names: Vec::new(),

@@ -12,6 +12,14 @@ use std::time::Duration;
 pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit: Option<Duration>) -> Option<Outcome> {
     let progress = progress::Progress::start(limit);
     let watch = |step| progress.step(step);
+    if let Some(path) = sheet.follow(Some(&watch)) {
+        progress.finish();
+        if matches!(path, Err(Error::Interrupted)) {
+            stopped_early(limit);
+            return None;
+        }
+        return Some(crate::record::path::followed(sheet, &path, origin, cross_check));
+    }
     let solved = sheet.solve(Some(&watch));
     let mut answers: Vec<cases::Answer<'_>> = Vec::new();
     let mut stopped = matches!(solved, Err(Error::Interrupted));
@@ -24,10 +32,7 @@ pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit:
     }
     progress.finish();
     if stopped {
-        match limit.filter(|_| !progress::interrupted()) {
-            Some(limit) => complain(&progress::late(limit), Some("allow more time, or ask for less accuracy")),
-            None => complain("interrupted: nothing was written", None),
-        }
+        stopped_early(limit);
         return None;
     }
     let mut outcome = match &solved {
@@ -36,4 +41,12 @@ pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit:
     };
     cases::join(&mut outcome, sheet, solved.as_ref().ok(), &answers, origin);
     Some(outcome)
+}
+
+/// Says why nothing was finished.
+fn stopped_early(limit: Option<Duration>) {
+    match limit.filter(|_| !progress::interrupted()) {
+        Some(limit) => complain(&progress::late(limit), Some("allow more time, or ask for less accuracy")),
+        None => complain("interrupted: nothing was written", None),
+    }
 }

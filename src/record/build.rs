@@ -63,6 +63,7 @@ pub fn unsolved(sheet: &Sheet, origin: Origin<'_>) -> Outcome {
         stations: Vec::new(),
         residual: Vec::new(),
         features: features.collect(),
+        path: None,
         cases: Vec::new(),
         envelopes: Vec::new(),
         decay_names: s.carried.clone(),
@@ -135,7 +136,7 @@ pub fn solved(sheet: &Sheet, solution: &Solution, origin: Origin<'_>, second_rou
     outcome
 }
 
-fn asked_quantity(asked: &Asked, relative: f64) -> Quantity {
+pub(super) fn asked_quantity(asked: &Asked, relative: f64) -> Quantity {
     let printed = asked.printed();
     let limit = relative * asked.unit.difference_from_si(asked.scale).abs();
     let met = printed.is_some_and(|p| p.error <= limit || p.error == 0.0);

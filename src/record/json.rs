@@ -1,7 +1,7 @@
 //! Results for programs.
 
 use super::outcome::{
-    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, Outcome, Peak, Quantity, Status,
+    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, Outcome, PathResult, PathRow, Peak, Quantity, Status,
 };
 use crate::sheet::Fault;
 use serde::Serialize;
@@ -23,10 +23,30 @@ struct Document<'a> {
     problem: Option<Problem<'a>>,
     mesh: Mesh,
     warnings: &'a [String],
+    #[serde(skip_serializing_if = "Option::is_none")]
+    path: Option<PathLine<'a>>,
     #[serde(skip_serializing_if = "Vec::is_empty")]
     cases: Vec<CaseLine<'a>>,
     #[serde(skip_serializing_if = "Vec::is_empty")]
     envelopes: Vec<EnvelopeLine<'a>>,
+}
+
+/// The asked numbers along a parameter.
+#[derive(Serialize)]
+struct PathLine<'a> {
+    parameter: &'a str,
+    unit: &'a str,
+    verdict: &'a str,
+    points: Vec<PathRowLine<'a>>,
+    folds: Vec<PathRowLine<'a>>,
+}
+
+#[derive(Serialize)]
+struct PathRowLine<'a> {
+    parameter: Number<'a>,
+    /// Folds passed before.
+    branch: usize,
+    quantities: Vec<Number<'a>>,
 }
 
 #[derive(Serialize)]
@@ -170,6 +190,24 @@ fn status(status: Status) -> &'static str {
     }
 }
 
+fn path(p: &PathResult) -> PathLine<'_> {
+    PathLine {
+        parameter: &p.parameter,
+        unit: &p.unit,
+        verdict: &p.verdict,
+        points: p.points.iter().map(path_row).collect(),
+        folds: p.folds.iter().map(path_row).collect(),
+    }
+}
+
+fn path_row(r: &PathRow) -> PathRowLine<'_> {
+    PathRowLine {
+        parameter: number(&r.parameter),
+        branch: r.branch,
+        quantities: r.quantities.iter().map(number).collect(),
+    }
+}
+
 fn case(c: &CaseResult) -> CaseLine<'_> {
     CaseLine {
         name: &c.name,
@@ -216,6 +254,7 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
         problem,
         mesh: mesh(outcome),
         warnings: &outcome.warnings,
+        path: outcome.path.as_ref().map(path),
         cases: outcome.cases.iter().map(case).collect(),
         envelopes: outcome.envelopes.iter().map(envelope).collect(),
     };

@@ -10,6 +10,8 @@ pub mod number;
 pub mod cases;
 /// Envelopes over load cases.
 pub mod envelope;
+/// Paths along a parameter.
+pub mod path;
 /// Records read back and set side by side.
 pub mod compare;
 /// Digests of the files of a record.
@@ -50,6 +52,7 @@ pub fn files(outcome: &Outcome, sha256: &str, version: &str) -> Vec<(String, Vec
     if !outcome.envelopes.is_empty() {
         files.push(("envelope.csv".into(), envelope::table(outcome).into_bytes()));
     }
+    files.extend(outcome.path.as_ref().map(|p| ("path.csv".to_owned(), path::table(p).into_bytes())));
     files.extend(plots.into_iter().map(|p| (format!("plots/{}", p.file), p.svg.into_bytes())));
     files
 }

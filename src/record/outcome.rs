@@ -176,6 +176,34 @@ pub struct Envelope {
     pub high: Option<Peak>,
 }
 
+/// The asked numbers at a point or fold of a path.
+#[derive(Debug, Clone, PartialEq)]
+pub struct PathRow {
+    /// Value of the parameter.
+    pub parameter: Quantity,
+    /// Folds passed before.
+    pub branch: usize,
+    /// Asked numbers.
+    pub quantities: Vec<Quantity>,
+}
+
+/// A path.
+#[derive(Debug, Clone, PartialEq)]
+pub struct PathResult {
+    /// Name of the parameter.
+    pub parameter: String,
+    /// Its unit.
+    pub unit: String,
+    /// At the asked values of the parameter, in the order of the path.
+    pub points: Vec<PathRow>,
+    /// At its folds.
+    pub folds: Vec<PathRow>,
+    /// All steps: relative length of the path so far, parameter, elements.
+    pub steps: Vec<(f64, f64, usize)>,
+    /// How it ended.
+    pub verdict: String,
+}
+
 /// Everything a record shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Outcome {
@@ -218,6 +246,8 @@ pub struct Outcome {
     pub residual: Vec<Curve>,
     /// Supports, jumps, breaks.
     pub features: Vec<Feature>,
+    /// The path, where a parameter was followed.
+    pub path: Option<PathResult>,
     /// Load cases.
     pub cases: Vec<CaseResult>,
     /// What each curve reaches over base and cases.

@@ -34,6 +34,7 @@ pub fn render(outcome: &Outcome, plots: &[Plot], sha256: &str, version: &str) ->
                         }
                     }
                     (results(outcome))
+                    (super::path::section(outcome))
                     (super::cases::section(outcome))
                     (statement(outcome, plots))
                     (checks(outcome))

@@ -295,6 +295,9 @@ pub fn all(outcome: &Outcome) -> Vec<Plot> {
         let file = format!("envelope-{:02}-{}.svg", k + 1, file_name(&one.name));
         keep(file, curve(&one.curve(), outcome), one.words(outcome));
     }
+    for (name, one, over) in super::path::pictures(outcome) {
+        keep(format!("{}.svg", file_name(&name)), curve(&one, &over), curve_words(&one, &over));
+    }
     if !outcome.residual.is_empty() {
         keep("residual.svg".into(), residual(outcome), residual_words(outcome));
     }

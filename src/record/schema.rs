@@ -123,7 +123,17 @@ fn sections() -> Value {
             &["parameter"],
         ),
         "solutions": named("a search for several solutions: up_to = 4", json!({})),
-        "path": named("a parameter to follow: parameter, from, to, through_folds", json!({})),
+        "path": closed(
+            "a parameter to follow",
+            json!({
+                "parameter": text("name of a datum, or of an unknown constant"),
+                "from": formula("its value at the start"),
+                "to": formula("its value at the end"),
+                "points": { "type": "integer", "minimum": 2, "maximum": 1000, "description": "evenly spaced values" },
+                "through_folds": yes("go on where the parameter turns back"),
+            }),
+            &["parameter", "from", "to"],
+        ),
         "sweep": named(
             "data to vary",
             json!({ "anyOf": [axis, { "type": "array", "items": { "type": ["string", "number"] }, "minItems": 1 }] }),

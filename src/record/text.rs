@@ -12,6 +12,7 @@ pub fn results(outcome: &Outcome) -> String {
     }
     if let Some(reason) = outcome.reason.as_ref().filter(|_| outcome.status == Status::Failed) {
         let _ = writeln!(text, "not solved: {reason}");
+        text.push_str(&super::path::text(outcome));
         return text;
     }
     let rows: Vec<[String; 3]> = outcome.quantities.iter().map(row).collect();
@@ -38,6 +39,7 @@ pub fn results(outcome: &Outcome) -> String {
             let _ = writeln!(text, "{verdict}  {}{gap}   {}", check.name, check.result);
         }
     }
+    text.push_str(&super::path::text(outcome));
     text.push_str(&super::cases::text(outcome));
     text
 }

@@ -44,7 +44,13 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
         && reading.held.is_empty()
         && reading.replaced.is_empty()
     {
-        sheet.cases = super::cases::read(&source, reading, &mut faults);
+        match source.cases.first().filter(|_| source.path.is_some()) {
+            Some(case) => {
+                let message = "load cases and a path in one sheet are not part of this version";
+                faults.add("not yet", case.name_span.clone(), message, None);
+            }
+            None => sheet.cases = super::cases::read(&source, reading, &mut faults),
+        }
     }
     match sheet {
         Some(sheet) if faults.is_empty() => Ok(sheet),
