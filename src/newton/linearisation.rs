@@ -141,6 +141,18 @@ impl Model for Linearisation<'_> {
         self.model.releases()
     }
 
+    fn equation_rounding(&self, batch: &Batch<'_>, out: &mut Linearised) -> bool {
+        let jets = self.jets(self.residual, batch);
+        let at = Batch { jets: &jets, constants: &self.residual.constants, ..*batch };
+        self.model.equation_rounding(&at, out)
+    }
+
+    fn condition_rounding(&self, index: usize, _jets: &[f64], _constants: &[f64], out: &mut ConditionValue) -> bool {
+        let places = &self.model.conditions()[index].places;
+        let own: Vec<f64> = places.iter().flat_map(|p| self.place_jets(self.residual, p)).collect();
+        self.model.condition_rounding(index, &own, &self.residual.constants, out)
+    }
+
     fn written_out(&self, equation: usize) -> bool {
         self.model.written_out(equation)
     }

@@ -138,21 +138,33 @@ impl PathResult {
         })
     }
 
-    /// Heads of the columns: the parameter, then the asked numbers; name and unit.
-    fn heads(&self) -> Vec<(&str, &str)> {
+    /// Asked numbers that differ along the path; those made of folds and data alone do not.
+    fn varying(&self) -> Vec<usize> {
+        let count = self.points.first().map_or(0, |p| p.quantities.len());
+        let differs = |k: &usize| {
+            let mut values = self.rows().filter_map(|(_, row)| row.quantities.get(*k)).map(|q| q.value);
+            let first = values.next().flatten();
+            values.any(|v| v != first)
+        };
+        (0..count).filter(differs).collect()
+    }
+
+    /// Heads of the columns: the parameter, then the asked numbers given; name and unit.
+    fn heads(&self, columns: &[usize]) -> Vec<(&str, &str)> {
         let asked = self.points.first().map_or(&[][..], |p| &p.quantities);
         std::iter::once((self.parameter.as_str(), self.unit.as_str()))
-            .chain(asked.iter().map(|q| (q.name.as_str(), q.unit.as_str())))
+            .chain(columns.iter().filter_map(|k| asked.get(*k)).map(|q| (q.name.as_str(), q.unit.as_str())))
             .collect()
     }
 
     /// Curves over the parameter, and the parameter over the length of the path.
     fn curves(&self) -> Vec<Curve> {
-        let heads = self.heads();
+        let columns = self.varying();
+        let heads = self.heads(&columns);
         heads[1..]
             .iter()
-            .enumerate()
-            .map(|(k, (name, unit))| {
+            .zip(&columns)
+            .map(|((name, unit), &k)| {
                 let at = |row: &PathRow| Some((row.parameter.value?, row.quantities.get(k)?.value?));
                 let line = self.rows().filter_map(|(_, row)| at(row)).collect();
                 let marks = self.folds.iter().enumerate().filter_map(|(n, row)| {
@@ -202,7 +214,8 @@ pub(super) fn pictures(outcome: &Outcome) -> Vec<(String, Curve, Outcome)> {
 /// For a terminal.
 pub fn text(outcome: &Outcome) -> String {
     let Some(path) = &outcome.path else { return String::new() };
-    let heads = path.heads().into_iter().map(|(n, u)| if u == "1" { n.to_owned() } else { format!("{n} [{u}]") });
+    let columns = path.varying();
+    let heads = path.heads(&columns).into_iter().map(|(n, u)| if u == "1" { n.to_owned() } else { format!("{n} [{u}]") });
     let mut rows: Vec<Vec<String>> = vec![std::iter::once(String::new()).chain(heads).collect()];
     let mut fold = 0;
     for (folds, row) in path.rows() {
@@ -211,7 +224,7 @@ pub fn text(outcome: &Outcome) -> String {
         let cell = |q: &Quantity| q.value.map_or_else(|| "none".to_owned(), |v| concise(v, q.error));
         rows.push(
             std::iter::once(first)
-                .chain(std::iter::once(&row.parameter).chain(&row.quantities).map(cell))
+                .chain(std::iter::once(&row.parameter).chain(columns.iter().map(|k| &row.quantities[*k])).map(cell))
                 .collect(),
         );
     }
@@ -231,6 +244,7 @@ pub fn text(outcome: &Outcome) -> String {
 /// For the page.
 pub(super) fn section(outcome: &Outcome) -> Markup {
     let unit = |text: &str| if text == "1" { String::new() } else { pretty(text) };
+    let columns = outcome.path.as_ref().map_or_else(Vec::new, PathResult::varying);
     let value = |q: &Quantity| q.value.map_or_else(|| "none".to_owned(), |v| concise(v, q.error).replace('-', "−"));
     html! {
         @if let Some(path) = &outcome.path {
@@ -242,7 +256,7 @@ pub(super) fn section(outcome: &Outcome) -> Markup {
                         thead {
                             tr {
                                 th { "" }
-                                @for (name, own) in path.heads() { th { (name) " " span class="unit" { (unit(own)) } } }
+                                @for (name, own) in path.heads(&columns) { th { (name) " " span class="unit" { (unit(own)) } } }
                             }
                         }
                         tbody {
@@ -250,7 +264,7 @@ pub(super) fn section(outcome: &Outcome) -> Markup {
                                 tr {
                                     th scope="row" { @if fold { "fold " (number) } }
                                     td class="number" { (value(&row.parameter)) }
-                                    @for q in &row.quantities { td class="number" { (value(q)) } }
+                                    @for k in &columns { td class="number" { (value(&row.quantities[*k])) } }
                                 }
                             }
                         }
@@ -279,7 +293,8 @@ pub fn table(path: &PathResult) -> String {
         if text.contains([',', '"', '\n']) { format!("\"{}\"", text.replace('"', "\"\"")) } else { text }
     };
     let mut text = "fold".to_owned();
-    for (name, unit) in path.heads() {
+    let all: Vec<usize> = (0..path.points.first().map_or(0, |p| p.quantities.len())).collect();
+    for (name, unit) in path.heads(&all) {
         let head = if unit == "1" { name.to_owned() } else { format!("{name} [{unit}]") };
         let _ = write!(text, ",{},{}", quoted(head), quoted(format!("bar of {name}")));
     }

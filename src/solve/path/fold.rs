@@ -236,6 +236,40 @@ impl Model for Extended<'_> {
         &self.releases
     }
 
+    fn equation_rounding(&self, batch: &Batch<'_>, out: &mut Linearised) -> bool {
+        let open = self.model.layout();
+        let (d, j, c, n) = (open.unknowns(), open.jets(), open.constants(), batch.x.len());
+        let all = self.layout.constants();
+        let mut own = Linearised::default();
+        own.reset(open, n);
+        let at = Batch { jets: &batch.jets[..j * n], constants: &batch.constants[..c], ..*batch };
+        if !self.model.equation_rounding(&at, &mut own) {
+            return false;
+        }
+        for e in 0..d {
+            for node in 0..n {
+                out.residual[e * n + node] = own.residual[e * n + node];
+                let mut sum = 0.0;
+                for k in 0..j {
+                    let bound = own.jets[(e * j + k) * n + node];
+                    out.jets[(e * 2 * j + k) * n + node] = bound;
+                    out.jets[((d + e) * 2 * j + j + k) * n + node] = bound;
+                    sum += bound * batch.jets[(j + k) * n + node].abs();
+                }
+                for q in 0..c {
+                    let bound = own.constants[(e * c + q) * n + node];
+                    out.constants[(e * all + q) * n + node] = bound;
+                    if q + 1 < c {
+                        out.constants[((d + e) * all + c + q) * n + node] = bound;
+                        sum += bound * batch.constants[c + q].abs();
+                    }
+                }
+                out.residual[(d + e) * n + node] = sum;
+            }
+        }
+        true
+    }
+
     fn written_out(&self, equation: usize) -> bool {
         self.model.written_out(equation % self.model.layout().unknowns())
     }

@@ -25,7 +25,7 @@ use fold::{Extended, first_part};
 /// Most steps of a path.
 const STEPS: usize = 3000;
 /// Most steps from one asked value of the parameter to the next.
-const BETWEEN: usize = 120;
+const BETWEEN: usize = 80;
 /// Longest and shortest step, relative to the sizes of the solution.
 const LENGTHS: [f64; 2] = [1e-6, 0.5];
 /// Cosine of the largest change of direction in a step, and of one after which steps may grow.
@@ -75,7 +75,7 @@ pub struct PathStep {
 pub enum PathEnd {
     /// At the value asked.
     Reached,
-    /// Back at the value where it began, after folds.
+    /// It came back to the value where it began, after folds, and found no way to the value asked from there.
     Returned,
     /// At a fold: there is no solution beyond it nearby.
     Fold,
@@ -173,9 +173,14 @@ fn levels(model: &dyn Model, route: &Route) -> Result<Vec<f64>> {
     let at = |k: usize| match k {
         0 => route.from,
         k if k == last => route.to,
-        k => route.from + (route.to - route.from) * (k as f64 / last as f64),
+        k => short(route.from + (route.to - route.from) * (k as f64 / last as f64)),
     };
     Ok((0..=last).map(at).collect())
+}
+
+/// The nearest number of 15 digits: values between the ends need not be spaced more evenly, and read better.
+fn short(value: f64) -> f64 {
+    format!("{value:.14e}").parse().unwrap_or(value)
 }
 
 /// Refuses a parameter that neither an equation nor a condition depends on, at the solution or beside it.
@@ -337,22 +342,26 @@ impl<'a> Walk<'a> {
     }
 
     fn lost(mut self, reason: String) -> Path {
-        self.path.end = PathEnd::Lost { parameter: self.at.parameter(), reason };
+        let returned = self.path.points.len() > 1 && self.path.points.last().is_some_and(|p| p.parameter == self.route.from);
+        self.path.end = match returned {
+            true => PathEnd::Returned,
+            false => PathEnd::Lost { parameter: self.at.parameter(), reason },
+        };
         self.path
     }
 
-    /// Whether the last step came to an end of the path.
+    /// Whether the last step came to an end of the path: `to`, a fold that ends it, or as far behind `from` as `to` lies
+    /// before it (a path that comes back may turn once more there).
     fn ended(&self) -> Option<PathEnd> {
         if !self.path.folds.is_empty() && !self.route.through_folds {
             return Some(PathEnd::Fold);
         }
+        let Route { from, to, .. } = *self.route;
+        let far = (self.at.parameter() - from) / (to - from) < -1.0;
         let point = self.path.points.last().filter(|_| self.path.points.len() > 1)?;
-        if point.parameter == self.route.to {
-            Some(PathEnd::Reached)
-        } else if point.parameter == self.route.from {
-            Some(PathEnd::Returned)
-        } else {
-            None
+        match point.parameter == to {
+            true => Some(PathEnd::Reached),
+            false => far.then_some(PathEnd::Returned),
         }
     }
 
@@ -395,13 +404,12 @@ impl<'a> Walk<'a> {
                     return Ok(Tried::TooLong(format!("no solution was found at the value {level}")));
                 };
                 points.push(PathPoint { parameter: level, branch: branch + passed, solution });
-                if level == self.route.to || level == self.route.from {
+                if level == self.route.to {
                     break;
                 }
             }
         }
-        let ending = |p: &PathPoint| p.parameter == self.route.to || p.parameter == self.route.from;
-        if let Some(end) = points.iter().position(ending) {
+        if let Some(end) = points.iter().position(|p| p.parameter == self.route.to) {
             points.truncate(end + 1);
             // A fold behind the end is none of this path.
             if points[end].branch == branch {
