@@ -48,7 +48,8 @@ fn bratus_path_goes_through_its_fold() {
     assert!((middle.value - 1.186_842_168_634_389_1).abs() <= middle.error && middle.error < 1e-11, "{middle:?}");
     let turn = 1.199_678_640_257_734;
     for point in &path.points {
-        let a = if point.branch == 0 { branch(point.parameter, 0.0, turn) } else { branch(point.parameter, turn, 20.0) };
+        let a =
+            if point.branch == 0 { branch(point.parameter, 0.0, turn) } else { branch(point.parameter, turn, 20.0) };
         let slope = point.solution.value(0, 1, 0.0, Side::Right).expect("a value");
         let off = (slope.value - exact(a).1).abs();
         assert!(off <= slope.error && slope.error < 1e-11 * slope.value, "{} {slope:?} {off}", point.parameter);

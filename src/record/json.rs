@@ -1,7 +1,8 @@
 //! Results for programs.
 
 use super::outcome::{
-    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, Outcome, PathResult, PathRow, Peak, Quantity, Status,
+    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, Outcome, PathResult, PathRow, Peak, Quantity,
+    Status,
 };
 use crate::sheet::Fault;
 use serde::Serialize;

@@ -77,9 +77,10 @@ pub fn followed(sheet: &Sheet, path: &Result<Path>, origin: Origin<'_>, second_r
         Check {
             name: format!("path of `{name}`"),
             result: verdict.clone(),
-            meaning: "each point was solved with the parameter held, each fold as a solution of the extended system, both \
+            meaning:
+                "each point was solved with the parameter held, each fold as a solution of the extended system, both \
                       to the same bars as any boundary problem"
-                .into(),
+                    .into(),
             passed,
         },
     );
@@ -170,12 +171,7 @@ impl PathResult {
                 let marks = self.folds.iter().enumerate().filter_map(|(n, row)| {
                     at(row).map(|(x, value)| Mark { x, value, label: format!("fold {}", n + 1) })
                 });
-                Curve {
-                    name: (*name).to_owned(),
-                    unit: (*unit).to_owned(),
-                    pieces: vec![line],
-                    marks: marks.collect(),
-                }
+                Curve { name: (*name).to_owned(), unit: (*unit).to_owned(), pieces: vec![line], marks: marks.collect() }
             })
             .collect()
     }
@@ -215,7 +211,8 @@ pub(super) fn pictures(outcome: &Outcome) -> Vec<(String, Curve, Outcome)> {
 pub fn text(outcome: &Outcome) -> String {
     let Some(path) = &outcome.path else { return String::new() };
     let columns = path.varying();
-    let heads = path.heads(&columns).into_iter().map(|(n, u)| if u == "1" { n.to_owned() } else { format!("{n} [{u}]") });
+    let heads =
+        path.heads(&columns).into_iter().map(|(n, u)| if u == "1" { n.to_owned() } else { format!("{n} [{u}]") });
     let mut rows: Vec<Vec<String>> = vec![std::iter::once(String::new()).chain(heads).collect()];
     let mut fold = 0;
     for (folds, row) in path.rows() {

@@ -7,9 +7,9 @@ use super::lower::{Lowerer, Typed};
 use super::source::Located;
 use super::{Asked, Item, Sheet};
 use crate::error::Result;
+use crate::field::Field;
 use crate::formula::graph::{Graph, NodeId};
 use crate::formula::syntax::{Argument, Expression, Kind, Span};
-use crate::field::Field;
 use crate::model::Model;
 use crate::quantity::Estimate;
 use crate::solve::{Path, Route, Settings, Solution, Watch};
@@ -93,7 +93,13 @@ impl Lowerer<'_> {
     ) -> Option<Typed> {
         let Some(folds) = self.folds else {
             let hint = "[path] with parameter, from, to and through_folds = true follows the solutions to their folds";
-            return self.fault("fold", at, name_span, "`fold` asks for a fold of a path, and the sheet has no [path]", hint);
+            return self.fault(
+                "fold",
+                at,
+                name_span,
+                "`fold` asks for a fold of a path, and the sheet has no [path]",
+                hint,
+            );
         };
         if !self.reporting {
             let message = "`fold` is known when the path has been followed: it belongs into [report]";
@@ -160,7 +166,8 @@ impl Assembler<'_, '_> {
                 "`{name}` moves an end or a break of the span (or decides an exponent): a path cannot follow it in this \
                  version"
             );
-            let hint = "scale the coordinate so that the span stays as it is: x = [\"0\", \"1\"] with lengths as factors";
+            let hint =
+                "scale the coordinate so that the span stays as it is: x = [\"0\", \"1\"] with lengths as factors";
             self.lowerer.faults.add("path", place, message, Some(hint.into()));
             return;
         }

@@ -84,8 +84,7 @@ impl Solution {
     /// The same with all its fields replaced.
     fn mapped(self, map: impl Fn(&Field) -> Field) -> Self {
         let all = |fields: &[Field]| fields.iter().map(&map).collect();
-        let companions =
-            Companions { coarser: all(&self.companions.coarser), nudged: all(&self.companions.nudged) };
+        let companions = Companions { coarser: all(&self.companions.coarser), nudged: all(&self.companions.nudged) };
         Self { field: map(&self.field), companions, ..self }
     }
 

@@ -32,11 +32,8 @@ pub(super) fn end_jets(field: &Field) -> Vec<f64> {
 impl Form {
     /// The form that picks one component of the states at the ends (below `2 * layout.jets()`) or one constant (behind).
     pub fn one(layout: &Layout, points: usize, component: usize) -> Self {
-        let mut form = Self {
-            places: ends(points),
-            jets: vec![0.0; 2 * layout.jets()],
-            constants: vec![0.0; layout.constants()],
-        };
+        let mut form =
+            Self { places: ends(points), jets: vec![0.0; 2 * layout.jets()], constants: vec![0.0; layout.constants()] };
         let count = form.jets.len();
         if component < count {
             form.jets[component] = 1.0;
@@ -80,13 +77,19 @@ impl Metric {
         Self { jets: vec![0.0; layout.jets()], constants }
     }
 
-    /// Takes in the sizes of a field times `factor`.
-    pub fn grow(&mut self, field: &Field, factor: f64) {
+    /// Takes in the sizes of a field times `factor`. What is far smaller than the rest of its unknown or, measured by
+    /// `scale`, than the other unknowns may be nothing but rounding, and must not count as if it were not.
+    pub fn grow(&mut self, field: &Field, factor: f64, scale: &[f64]) {
         let layout = &field.layout;
+        let length = field.mesh.length();
+        let whole = |i: usize, m: usize| (0..m).map(|k| field.size(i, k) * length.powi(k as i32)).fold(0.0, f64::max);
+        let wholes: Vec<f64> = layout.orders().iter().enumerate().map(|(i, &m)| whole(i, m)).collect();
+        let largest = wholes.iter().zip(scale).map(|(w, s)| w / s).fold(0.0, f64::max);
         for (i, &m) in layout.orders().iter().enumerate() {
+            let least = (1e-3 * wholes[i]).max(1e-6 * largest * scale[i]);
             for k in 0..m {
                 let size = &mut self.jets[layout.jet(i, k)];
-                *size = size.max(factor * field.size(i, k));
+                *size = size.max(factor * field.size(i, k).max(least / length.powi(k as i32)));
             }
         }
         let own = self.constants.len() - 1;

@@ -36,11 +36,8 @@ impl<'a> Extended<'a> {
         let component = metric.leading(tangent);
         let (j, c) = (open.jets(), open.constants());
         // The component among both ends' jets of the doubled unknowns, or behind the constants of the model.
-        let doubled = if component < 2 * j {
-            (component / j) * 2 * j + j + component % j
-        } else {
-            4 * j + c + component - 2 * j
-        };
+        let doubled =
+            if component < 2 * j { (component / j) * 2 * j + j + component % j } else { 4 * j + c + component - 2 * j };
         let form = Form::one(&layout, model.points().len(), doubled);
         let start = doubled_field(&layout, field, tangent);
         let value = form.on(&start);

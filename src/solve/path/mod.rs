@@ -19,15 +19,18 @@ use crate::field::Field;
 use crate::linear::{Library, Perturbation, transfer};
 use crate::mesh::Mesh;
 use crate::model::{Batch, ConditionValue, Held, Linearised, Model};
+use crate::newton::Linearisation;
 use arc::{Closed, Form, Homogeneous, Metric};
 use fold::{Extended, first_part};
 
 /// Most steps of a path.
 const STEPS: usize = 3000;
-/// Most steps from one asked value of the parameter to the next.
-const BETWEEN: usize = 80;
+/// Longest way, relative to the sizes of the solution, from one asked value of the parameter to the next, and most steps on
+/// it: a way without end runs to infinity.
+const BETWEEN: f64 = 15.0;
+const BETWEEN_STEPS: usize = 400;
 /// Longest and shortest step, relative to the sizes of the solution.
-const LENGTHS: [f64; 2] = [1e-6, 0.5];
+const LENGTHS: [f64; 2] = [1e-5, 0.5];
 /// Cosine of the largest change of direction in a step, and of one after which steps may grow.
 const TURNS: [f64; 2] = [0.9, 0.98];
 /// Most points that can be asked.
@@ -262,6 +265,8 @@ struct Walk<'a> {
     settings: &'a Settings<'a>,
     levels: &'a [f64],
     metric: Metric,
+    /// What the equations make of the sizes of the unknowns, one against the other.
+    scale: Vec<f64>,
     at: Station,
     path: Path,
     length: f64,
@@ -295,11 +300,12 @@ impl<'a> Walk<'a> {
                     .into(),
             ),
         })?;
-        metric.grow(&field, 1.0);
-        metric.grow(&tangent, 0.1);
+        let scale = exponents::scales(&Linearisation::new(model, &field, &field))?;
+        metric.grow(&field, 1.0, &scale);
+        metric.grow(&tangent, 0.1, &scale);
         let library = Library::suited(&Closed::new(model, metric.along(&tangent, model.points().len()), 0.0));
         let at = Station { tangent: tangent.scaled(1.0 / metric.length(&tangent)), field };
-        let mut walk = Self { model, route, settings, levels, metric, at, path, length: 0.0, library };
+        let mut walk = Self { model, route, settings, levels, metric, scale, at, path, length: 0.0, library };
         walk.note();
         Ok(walk)
     }
@@ -312,7 +318,7 @@ impl<'a> Walk<'a> {
     fn run(mut self) -> Result<Path> {
         let spacing = (self.levels[1] - self.levels[0]).abs();
         let mut step = (spacing / self.at.rising().abs().max(f64::MIN_POSITIVE)).clamp(1e-3, 0.25);
-        let mut idle = 0;
+        let (mut idle, mut since) = (0, 0.0);
         for _ in 0..STEPS {
             let before = self.path.points.len();
             match self.attempt(step)? {
@@ -321,7 +327,8 @@ impl<'a> Walk<'a> {
                         self.path.end = end;
                         return Ok(self.path);
                     }
-                    idle = if self.path.points.len() > before { 0 } else { idle + 1 };
+                    let reached = self.path.points.len() > before;
+                    (idle, since) = if reached { (0, self.length) } else { (idle + 1, since) };
                     if turn > TURNS[1] {
                         step = (1.5 * step).min(LENGTHS[1]);
                     }
@@ -333,16 +340,16 @@ impl<'a> Walk<'a> {
                     }
                 }
             }
-            if idle > BETWEEN {
-                let reason = format!("the parameter hardly moves any more: {BETWEEN} steps without a value asked");
-                return Ok(self.lost(reason));
+            if self.length - since > BETWEEN || idle > BETWEEN_STEPS {
+                return Ok(self.lost("the solution goes on and on, and the parameter hardly moves any more".into()));
             }
         }
         Ok(self.lost(format!("{STEPS} steps")))
     }
 
     fn lost(mut self, reason: String) -> Path {
-        let returned = self.path.points.len() > 1 && self.path.points.last().is_some_and(|p| p.parameter == self.route.from);
+        let returned =
+            self.path.points.len() > 1 && self.path.points.last().is_some_and(|p| p.parameter == self.route.from);
         self.path.end = match returned {
             true => PathEnd::Returned,
             false => PathEnd::Lost { parameter: self.at.parameter(), reason },
@@ -419,7 +426,7 @@ impl<'a> Walk<'a> {
         self.path.points.extend(points);
         self.path.folds.extend(fold.map(|(_, found)| found));
         self.length += step;
-        self.metric.grow(&next.field, 1.0);
+        self.metric.grow(&next.field, 1.0, &self.scale);
         let length = self.metric.length(&next.tangent);
         self.at = Station { tangent: next.tangent.scaled(1.0 / length), field: next.field };
         self.note();
