@@ -5,7 +5,7 @@ use super::condition::{Placed, Read};
 use super::fault::{Fault, Faults};
 use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
-use super::path::{FoldNames, MOST_FOLDS, PathAsked};
+use super::path::{FoldNames, MOST_FOLDS, PathAsked, held_names};
 use super::reduce::Reduction;
 use super::singular::{Expanded, Singular};
 use super::source::{self, Given, Located, MOST_BYTES, Source};
@@ -56,13 +56,6 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
         Some(sheet) if faults.is_empty() => Ok(sheet),
         _ => Err(faults.finish(text)),
     }
-}
-
-/// Data to be held: those asked for, the parameter of a path last.
-fn held_names<'s>(source: &'s Source, reading: &Reading<'s>) -> Vec<&'s str> {
-    let parameter = source.path.as_ref().map(|follow| follow.parameter.text.as_str());
-    let others = reading.held.iter().copied().filter(|name| Some(*name) != parameter);
-    others.chain(parameter).collect()
 }
 
 pub(super) struct Assembler<'s, 'f> {

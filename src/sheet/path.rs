@@ -4,8 +4,8 @@ use super::assemble::Assembler;
 use super::condition::Placed;
 use super::functional::{Functional, Memory};
 use super::lower::{Lowerer, Typed};
-use super::source::Located;
-use super::{Asked, Item, Sheet};
+use super::source::{Located, Source};
+use super::{Asked, Item, Reading, Sheet};
 use crate::error::Result;
 use crate::field::Field;
 use crate::formula::graph::{Graph, NodeId};
@@ -63,6 +63,13 @@ pub(super) struct FoldNames {
     pub first: u16,
     /// What the parameter measures.
     pub parameter: Option<Typed>,
+}
+
+/// Data to be held: those asked for, the parameter of a path last.
+pub(super) fn held_names<'s>(source: &'s Source, reading: &Reading<'s>) -> Vec<&'s str> {
+    let parameter = source.path.as_ref().map(|follow| follow.parameter.text.as_str());
+    let others = reading.held.iter().copied().filter(|name| Some(*name) != parameter);
+    others.chain(parameter).collect()
 }
 
 impl FoldNames {

@@ -167,9 +167,10 @@ impl Model for Extended<'_> {
                     out.constants[(e * all + q) * n + node] = a;
                     let second = difference(self.step, [0, 1, 2, 3].map(|s: usize| near[s].constants[from]));
                     out.constants[((d + e) * all + q) * n + node] = second;
-                    if q + 1 < c {
+                    // The parameter, the last, has no part in phi.
+                    if let Some(psi) = psi.get(q) {
                         out.constants[((d + e) * all + c + q) * n + node] = a;
-                        sum += a * psi[q];
+                        sum += a * psi;
                     }
                 }
                 out.residual[(d + e) * n + node] = sum;
