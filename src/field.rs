@@ -176,6 +176,22 @@ impl Field {
         sizes
     }
 
+    /// Sizes of all states on an interval inside the span, seen at three points.
+    pub(crate) fn local_states(&self, left: f64, right: f64) -> Vec<f64> {
+        let mut sizes = vec![0.0f64; self.layout.states()];
+        for (x, side) in [(left, Side::Right), (0.5 * (left + right), Side::Right), (right, Side::Left)] {
+            let element = self.locate(x, side);
+            let jets = self.jets(element, self.element(element).reference(x), self.layout.orders());
+            for (i, &m) in self.layout.orders().iter().enumerate() {
+                for k in 0..m {
+                    let size = &mut sizes[self.layout.state(i, k)];
+                    *size = size.max(jets[self.layout.jet(i, k)].abs());
+                }
+            }
+        }
+        sizes
+    }
+
     /// Bound of |u_i^(k)| on the span, k <= m_i: largest sum of coefficient sizes on any element.
     pub fn size(&self, unknown: usize, order: usize) -> f64 {
         let sizes = (0..self.series.len()).map(|e| self.series(e, unknown, order).iter().map(|c| c.abs()).sum::<f64>());

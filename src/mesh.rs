@@ -96,6 +96,10 @@ impl Mesh {
 
     /// The same elements, open at singular ends of the span.
     pub(crate) fn opened(mut self, open: [bool; 2]) -> Self {
+        // An element remembers one open end only.
+        if let (true, [only]) = (open == [true; 2], &self.elements[..]) {
+            self.elements = only.halves().to_vec();
+        }
         if let (true, Some(first)) = (open[0], self.elements.first_mut()) {
             first.open = Some(Side::Left);
         }

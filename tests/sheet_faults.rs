@@ -526,10 +526,6 @@ fn what_is_not_built_yet_is_refused_in_one_sentence() {
         ],
     );
     expect(
-        &with(BASE, &[("x = [\"0 m\", \"L\"]", "x = [\"0 m\", \"inf\"]")]),
-        &[(7, 14, "`inf`: infinite spans are not part of this version")],
-    );
-    expect(
         &with(
             BASE,
             &[

@@ -136,10 +136,10 @@ pub(crate) fn open_ends(model: &dyn Model, scale: &[f64]) -> Result<[bool; 2]> {
         };
         Ok(DMatrix::from_fn(d, d, entry).determinant())
     };
-    let mut open = [false; 2];
+    let mut open = model.open();
     for (open, (piece, x)) in open.iter_mut().zip([(0, points[0]), (last - 1, points[last])]) {
         let inside = determinant(piece, 0.5 * (points[piece] + points[piece + 1]))?;
-        *open = match determinant(piece, x) {
+        *open |= match determinant(piece, x) {
             Ok(at) => at.abs() <= 1e-15 * inside.abs(),
             Err(Error::NotFinite { .. }) => true,
             Err(error) => return Err(error),

@@ -3,13 +3,17 @@
 use super::exponents::sample;
 use crate::error::Result;
 use crate::field::Field;
-use crate::mesh::{Element, Mesh};
+use crate::mesh::{Element, Mesh, Side};
 use crate::model::Model;
 use crate::tolerance;
 use nalgebra::{DMatrix, DVector};
 
 /// Most nodes that refinement gives an element.
 const MOST_NODES: usize = 32;
+/// Rungs of the ladder that takes the place of an element at a singular end, and their ratio. What is not smooth there is
+/// most often a power of the distance (a square root, say), and only elements that shrink towards the end resolve it.
+const RUNGS: usize = 4;
+const RATIO: f64 = 0.25;
 /// Nodes of the parts of a split element lie in this range.
 const SPLIT_NODES: (usize, usize) = (16, 24);
 
@@ -24,6 +28,8 @@ pub(crate) enum Action {
     Raise(usize),
     /// Only shorter elements will do.
     Split,
+    /// Only elements that shrink towards a singular end will do.
+    Grade,
 }
 
 /// How well an element is resolved.
@@ -70,9 +76,39 @@ pub(crate) fn indicators(model: &dyn Model, field: &Field, wanted: f64) -> Resul
             let action = judge(series, factor, tail, limit, element.nodes);
             worst = worse(worst, Indicator { tail: if tail <= limit { 0.0 } else { tail }, action });
         }
+        if worst.action == Action::Split && weakly_singular(model, field, e)? {
+            worst.action = Action::Grade;
+        }
         all.push(worst);
     }
     Ok(all)
+}
+
+/// Whether an element lies at a singular end at which the solution stays as smooth as its equation of that order makes it: the
+/// lower terms, over the distance from the end, vanish there beside the highest derivatives. Where they do not (the centre of a
+/// disc) there are solutions that grow without bound, and no grading must come near those.
+fn weakly_singular(model: &dyn Model, field: &Field, element: usize) -> Result<bool> {
+    let layout = model.layout();
+    let place = field.element(element);
+    let Some(side) = place.open else { return Ok(false) };
+    let distance = 1e-6 * place.length();
+    let x = if side == Side::Left { place.left + distance } else { place.right - distance };
+    let Ok(equations) = sample(model, place.piece, x) else { return Ok(false) };
+    let entry = |e: usize, i: usize, k: usize| equations.jets[e * layout.jets() + layout.jet(i, k)];
+    let d = layout.unknowns();
+    let leading = DMatrix::from_fn(d, d, |e, i| entry(e, i, layout.orders()[i]));
+    let Some(inverse) = leading.try_inverse() else { return Ok(false) };
+    let mut largest = 0.0f64;
+    for (i, &m) in layout.orders().iter().enumerate() {
+        for k in 0..m {
+            for row in 0..d {
+                let sum: f64 = (0..d).map(|e| (inverse[(row, e)] * entry(e, i, k)).abs()).sum();
+                let top = layout.orders()[row].max(m);
+                largest = largest.max(sum * distance.powi((top - k) as i32));
+            }
+        }
+    }
+    Ok(largest < 0.05)
 }
 
 /// Size of the last coefficients; two of them, for even and odd functions.
@@ -104,7 +140,8 @@ fn worse(a: Indicator, b: Indicator) -> Indicator {
         Action::Spare => 0,
         Action::Keep => 1,
         Action::Raise(n) => n,
-        Action::Split => usize::MAX,
+        Action::Split => usize::MAX - 1,
+        Action::Grade => usize::MAX,
     };
     let action = if rank(b.action) > rank(a.action) { b.action } else { a.action };
     Indicator { tail: a.tail.max(b.tail), action }
@@ -183,10 +220,39 @@ pub(crate) fn next(mesh: &Mesh, indicators: &[Indicator]) -> Option<Mesh> {
                 let nodes = element.nodes.clamp(SPLIT_NODES.0, SPLIT_NODES.1);
                 elements.extend(element.halves().map(|half| Element { nodes, ..half }));
             }
+            Action::Grade => {
+                let nodes = element.nodes.clamp(SPLIT_NODES.0, SPLIT_NODES.1);
+                elements.extend(ladder(element, element.open.unwrap_or(Side::Left), nodes));
+            }
         }
         spare_before = spare;
     }
     Some(Mesh { elements })
+}
+
+/// An element at a singular end as a ladder that grows away from it.
+fn ladder(element: &Element, side: Side, nodes: usize) -> Vec<Element> {
+    let length = element.length();
+    let rung = |k: usize| length * RATIO.powi((RUNGS - k) as i32);
+    let mut edges: Vec<f64> = match side {
+        Side::Left => (0..=RUNGS).map(|k| element.left + rung(k)).collect(),
+        Side::Right => (0..=RUNGS).map(|k| element.right - rung(RUNGS - k)).rev().collect::<Vec<_>>(),
+    };
+    match side {
+        Side::Left => edges.insert(0, element.left),
+        Side::Right => {
+            edges.sort_by(f64::total_cmp);
+            edges.push(element.right);
+        }
+    }
+    edges.dedup();
+    let last = edges.len() - 1;
+    (edges[0], edges[last]) = (element.left, element.right);
+    let open = |k: usize| match side {
+        Side::Left => (k == 0).then_some(side),
+        Side::Right => (k + 1 == last).then_some(side),
+    };
+    (0..last).map(|k| Element { left: edges[k], right: edges[k + 1], nodes, open: open(k), ..*element }).collect()
 }
 
 #[cfg(test)]

@@ -7,7 +7,7 @@
 
 use super::exponents::exponents;
 use crate::error::Result;
-use crate::mesh::{Element, Mesh, Side};
+use crate::mesh::{Element, Mesh};
 use crate::model::Model;
 use num_complex::Complex64;
 
@@ -63,13 +63,7 @@ pub(crate) fn seed(model: &dyn Model, scale: &[f64], open: [bool; 2], most: usiz
         let edges = piece_edges(model, scale, piece, ends, most)?;
         elements.extend(edges.windows(2).map(|e| Element { left: e[0], right: e[1], nodes: NODES, piece, open: None }));
     }
-    if let (true, Some(first)) = (open[0], elements.first_mut()) {
-        first.open = Some(Side::Left);
-    }
-    if let (true, Some(last)) = (open[1], elements.last_mut()) {
-        last.open = Some(Side::Right);
-    }
-    Ok(Mesh { elements })
+    Ok(Mesh { elements }.opened(open))
 }
 
 /// Element ends within one piece, both ends of the piece included.

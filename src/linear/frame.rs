@@ -6,7 +6,7 @@ use super::condition::{LinearCondition, linear_condition};
 use super::element::width;
 use super::nudge::Perturbation;
 use crate::error::{Error, Result};
-use crate::mesh::{Element, Mesh};
+use crate::mesh::Mesh;
 use crate::model::{Layout, Model, Place, Side};
 use nalgebra::{DMatrix, DVector};
 
@@ -25,7 +25,7 @@ enum Treatment {
 pub(super) struct Frame {
     layout: Layout,
     /// Expected sizes of the states, divided by the common scale, on each element.
-    ends: Vec<Vec<f64>>,
+    pub ends: Vec<Vec<f64>>,
     treatments: Vec<Treatment>,
     /// Links to insert at local points.
     local: Vec<Option<Vec<f64>>>,
@@ -41,20 +41,15 @@ pub(super) struct Frame {
 }
 
 impl Frame {
+    /// `ends` holds expected sizes of the states, divided by the common scale, on each element.
     pub fn new(
         model: &dyn Model,
         mesh: &Mesh,
         scale: &[f64],
-        sizes: &[Vec<f64>],
+        ends: Vec<Vec<f64>>,
         perturbation: &Perturbation,
     ) -> Result<Self> {
         let layout = model.layout().clone();
-        let end = |element: &Element, sizes: &[f64]| -> Vec<f64> {
-            let half = 0.5 * element.length();
-            let of = |(i, &m): (usize, &usize)| (0..m).map(move |k| sizes[i] / scale[i] / half.powi(k as i32));
-            layout.orders().iter().enumerate().flat_map(of).collect()
-        };
-        let ends: Vec<Vec<f64>> = mesh.elements.iter().zip(sizes).map(|(e, s)| end(e, s)).collect();
         let points = model.points().len();
         let conditions = model.conditions();
         let needed = layout.states() + layout.constants() + model.releases().len();

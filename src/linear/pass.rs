@@ -1,6 +1,6 @@
 //! One linear solve on one mesh.
 
-use super::element::{Condensed, Sizes, Workspace, check_finite, condense};
+use super::element::{Condensed, Sizes, Workspace, check_finite, condense, width};
 use super::frame::Frame;
 use super::nudge::Perturbation;
 use super::tables::Library;
@@ -38,7 +38,8 @@ pub(crate) fn solve(
 ) -> Result<Pass> {
     let layout = model.layout();
     let sizes = local_sizes(mesh, scale, before);
-    let mut frame = Frame::new(model, mesh, scale, &sizes, perturbation)?;
+    let ends = state_sizes(layout, mesh, scale, &sizes, before);
+    let mut frame = Frame::new(model, mesh, scale, ends, perturbation)?;
     let mut responses: Vec<Response> = Vec::with_capacity(mesh.elements.len());
     let mut work = Workspace::default();
     let mut equations = Linearised::default();
@@ -56,11 +57,15 @@ pub(crate) fn solve(
         check_finite(model, &x, &equations)?;
         perturbation.apply(model, &batch, &mut equations);
         let local = Sizes { common: scale, local: &sizes[index] };
-        let Condensed { rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
-        responses.push(Response {
-            values: response,
-            ratios: ratios(layout, element, library.lobatto(), x.len(), &equations),
-        });
+        let Condensed { mut rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
+        let ratios = ratios(layout, x.len(), &equations);
+        if weak(layout, 0.5 * element.length(), &ratios) {
+            balance(&mut rows, width(layout), &frame.ends[index]);
+        }
+        // The last coefficient is visible at Gauss and Radau nodes: nothing is to be dropped there.
+        let blind = library.lobatto() && element.open.is_none();
+        let ratios = if blind { ratios } else { vec![0.0; ratios.len()] };
+        responses.push(Response { values: response, ratios });
         frame.push(&rows);
         let at_break = mesh.elements.get(index + 1).is_some_and(|next| next.piece != element.piece);
         if at_break {
@@ -90,6 +95,70 @@ fn local_sizes(mesh: &Mesh, scale: &[f64], before: Option<&Field>) -> Vec<Vec<f6
             let usable = largest.is_finite() && largest > f64::MIN_POSITIVE * 1e30;
             let floor = if usable { 1e-12 * largest } else { 1.0 };
             sizes.iter().zip(scale).map(|(s, u)| if usable { s.max(floor * u) } else { *u }).collect()
+        })
+        .collect()
+}
+
+/// Whether the lower terms of the equations hardly matter over an element: the solution is all but a polynomial there, and
+/// its derivatives are not tied to its size by any exponent.
+fn weak(layout: &Layout, half: f64, ratios: &[f64]) -> bool {
+    let states = layout.states();
+    let own = |k: usize, m: usize| half.powi((m - k) as i32);
+    ratios.chunks_exact(states.max(1)).zip(layout.orders()).all(|(row, &top)| {
+        layout
+            .orders()
+            .iter()
+            .enumerate()
+            .all(|(i, &m)| (0..m).all(|k| row[layout.state(i, k)] * own(k, m.max(top)) <= tolerance::WEAK))
+    })
+}
+
+/// Divides each row of an element by its largest entry, states counted in the sizes that they have there.
+fn balance(rows: &mut [f64], width: usize, sizes: &[f64]) {
+    for row in rows.chunks_exact_mut(width) {
+        let (left, rest) = row.split_at(sizes.len());
+        let entries = left.iter().zip(sizes).chain(rest.iter().zip(sizes));
+        let size = entries.fold(0.0f64, |s, (a, z)| s.max((a * z).abs()));
+        if size > 0.0 && size.is_finite() {
+            row.iter_mut().for_each(|a| *a /= size);
+        }
+    }
+}
+
+/// Sizes of all states on each element, divided by the common scale: what the field of an earlier pass has there, else what
+/// the size of the unknown and the length of the element allow. On a short element that is far too much for a derivative
+/// of ordinary size, and rows balanced by it would lose that.
+fn state_sizes(
+    layout: &Layout,
+    mesh: &Mesh,
+    scale: &[f64],
+    sizes: &[Vec<f64>],
+    before: Option<&Field>,
+) -> Vec<Vec<f64>> {
+    let largest: Vec<f64> = match before {
+        Some(field) => {
+            let of = |(i, &m): (usize, &usize)| (0..m).map(move |k| field.size(i, k));
+            layout.orders().iter().enumerate().flat_map(of).collect()
+        }
+        None => vec![f64::INFINITY; layout.states()],
+    };
+    mesh.elements
+        .iter()
+        .zip(sizes)
+        .map(|(element, sizes)| {
+            let half = 0.5 * element.length();
+            let own = before.map(|field| field.local_states(element.left, element.right));
+            let mut ends = Vec::with_capacity(layout.states());
+            for (i, &m) in layout.orders().iter().enumerate() {
+                for k in 0..m {
+                    let state = layout.state(i, k);
+                    let most = (sizes[i] / half.powi(k as i32)).min(largest[state].max(f64::MIN_POSITIVE));
+                    // Where a state vanishes rows still need a yardstick.
+                    let size = own.as_ref().map_or(most, |own| own[state].max(1e-10 * most));
+                    ends.push(size / scale[i]);
+                }
+            }
+            ends
         })
         .collect()
 }
@@ -147,13 +216,9 @@ struct Response {
     ratios: Vec<f64>,
 }
 
-fn ratios(layout: &Layout, element: &Element, lobatto: bool, n: usize, equations: &Linearised) -> Vec<f64> {
+fn ratios(layout: &Layout, n: usize, equations: &Linearised) -> Vec<f64> {
     let (d, j, states) = (layout.unknowns(), layout.jets(), layout.states());
     let mut ratios = vec![0.0f64; d * states];
-    if element.open.is_some() || !lobatto {
-        // The last coefficient is visible at Gauss and Radau nodes.
-        return ratios;
-    }
     for node in [0, n / 2, n - 1] {
         let entry = |e: usize, jet: usize| equations.jets[(e * j + jet) * n + node];
         let leading = DMatrix::from_fn(d, d, |e, i| entry(e, layout.jet(i, layout.orders()[i])));

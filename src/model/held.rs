@@ -149,6 +149,10 @@ impl Model for Held<'_> {
         known
     }
 
+    fn open(&self) -> [bool; 2] {
+        self.model.open()
+    }
+
     fn written_out(&self, equation: usize) -> bool {
         self.model.written_out(equation)
     }

@@ -196,6 +196,11 @@ pub trait Model: Sync {
         let _ = equation;
         false
     }
+    /// Whether the equations are not to be asked at the ends of the span themselves: an infinite end, where the unknowns
+    /// reach the limit of what the equations allow.
+    fn open(&self) -> [bool; 2] {
+        [false; 2]
+    }
     /// Whether jets at x lie where the equations are meant to hold (`above`, `below` of a sheet).
     fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
         let _ = (x, jets, constants);

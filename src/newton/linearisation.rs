@@ -153,6 +153,10 @@ impl Model for Linearisation<'_> {
         self.model.condition_rounding(index, &own, &self.residual.constants, out)
     }
 
+    fn open(&self) -> [bool; 2] {
+        self.model.open()
+    }
+
     fn written_out(&self, equation: usize) -> bool {
         self.model.written_out(equation)
     }

@@ -122,8 +122,23 @@ pub fn solved(sheet: &Sheet, solution: &Solution, origin: Origin<'_>, second_rou
     let met = outcome.quantities.iter().all(|q| q.met);
     outcome.status = if met { Status::Solved } else { Status::Inaccurate };
     outcome.passes = solution.passes;
+    if sheet.infinite() {
+        let unit = &sheet.statement.coordinate_unit;
+        let [from, to] = solution.field.mesh.span().map(|x| unit.from_si(x));
+        outcome.span = (from, to);
+    }
     let found = residual(&sheet.model_of(&solution.field), &solution.field).ok();
     outcome.checks = checks(sheet, solution, found.as_ref());
+    if sheet.infinite() {
+        let (from, to) = outcome.span;
+        let unit = if outcome.coordinate_unit == "1" { "" } else { &outcome.coordinate_unit };
+        outcome.checks.push(Check {
+            name: "infinite end".into(),
+            result: format!("cut to {from:.4} .. {to:.4} {unit}").trim_end().to_owned(),
+            meaning: "twice the span on which no asked number moved any more; the difference is in the bars".into(),
+            passed: None,
+        });
+    }
     if second_route {
         outcome.checks.push(second(sheet, solution, &asked));
     }

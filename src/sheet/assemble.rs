@@ -2,6 +2,7 @@
 
 use super::carry::{Carrier, Flux};
 use super::condition::{Placed, Read};
+use super::far::Again;
 use super::fault::{Fault, Faults};
 use super::lower::{Carried, Lowerer, Meaning, Unknown};
 use super::model::{Equations, SheetModel, Tie};
@@ -11,6 +12,7 @@ use super::singular::{Expanded, Singular};
 use super::source::{self, Given, Located, MOST_BYTES, Source};
 use super::{DataFile, HeldDatum, Item, Reading, Sheet, Wanted};
 use crate::formula::graph::{Node, NodeId};
+use crate::formula::number::Rounded;
 use crate::formula::syntax::{self, Expression, Kind};
 use crate::model::{Condition, Layout};
 use crate::unit::Unit;
@@ -36,6 +38,23 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
     source.replace(reading.replaced, &mut faults);
     source.settle_path(&mut faults);
     let mut sheet = Assembler::new(&source, reading, &mut faults).run();
+    if source.infinite() && reading.far.is_none() && faults.only("outside") {
+        // Points named further out than the first cut: begin beyond them.
+        let mut far = source.first_cut();
+        for _ in 0..60 {
+            far *= 4.0;
+            let mut others = Faults::default();
+            let reading = Reading { far: Some(far), ..*reading };
+            let longer = Assembler::new(&source, &reading, &mut others).run();
+            if !others.only("outside") {
+                (sheet, faults) = (longer, others);
+                break;
+            }
+        }
+    }
+    if let Some(sheet) = sheet.as_mut().filter(|sheet| sheet.far.is_some()) {
+        sheet.again = Some(Again::new(text, reading));
+    }
     if sheet.is_none() && faults.is_empty() {
         faults.add("not understood", 0..0, "the sheet is not understood, and it is not known why", None);
     }
@@ -64,6 +83,8 @@ pub(super) struct Assembler<'s, 'f> {
     held: Vec<&'s str>,
     /// Data files of the sheet.
     files: &'s [DataFile],
+    /// Where infinite ends are cut.
+    far: Option<f64>,
     pub lowerer: Lowerer<'f>,
     /// Equations that are singular at an end, and the fluxes of those, which are not carried.
     pub singular: Vec<Singular>,
@@ -86,6 +107,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         Self {
             source,
             held: held_names(source, reading),
+            far: source.infinite().then(|| reading.far.unwrap_or_else(|| source.first_cut())),
             files: reading.files,
             lowerer: Lowerer::new(faults),
             singular: Vec::new(),
@@ -172,10 +194,15 @@ impl<'s, 'f> Assembler<'s, 'f> {
             add(&mut self.lowerer, name, span, Meaning::Faulty);
         }
         let first = self.lowerer.constants.len() as u16;
+        let behind = first + self.held.len() as u16;
         let folds = if source.path.is_some() { MOST_FOLDS } else { 0 };
-        self.lowerer.graph.hold(first, self.held.len() + folds);
+        self.lowerer.graph.hold(first, self.held.len() + usize::from(self.far.is_some()) + folds);
+        if let Some(far) = self.far {
+            self.lowerer.graph.set_held(behind, Rounded::exact(far));
+            self.lowerer.far = Some(behind);
+        }
         if folds > 0 {
-            let first = first + self.held.len() as u16;
+            let first = behind + u16::from(self.far.is_some());
             self.lowerer.folds = Some(FoldNames { first, parameter: None });
         }
         for name in &self.held {
@@ -531,7 +558,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let orders: Vec<usize> = orders.iter().map(|m| usize::from(*m)).collect();
         let held = self.held_data();
         self.check_path(&nodes, &placed);
-        let layout = Layout::new(&orders, self.lowerer.constants.len() + held.len());
+        let layout = Layout::new(&orders, self.lowerer.constants.len() + held.len() + usize::from(self.far.is_some()));
         let linear = self.linear(&nodes, &placed, [points[0], points[points.len() - 1]]);
         let statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
         let [limits, constant_limits] = self.limits();
@@ -544,7 +571,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             equations: Equations::new(graph, &nodes, &layout, &points),
             conditions: placed.iter().map(|p| Condition { name: p.name.clone(), places: p.places.clone() }).collect(),
             ties: placed.iter().map(|p| Tie::new(graph, p.formula, &p.reads, &layout)).collect(),
-            linear: linear && held.is_empty(),
+            linear: linear && held.is_empty() && self.far.is_none(),
             releases,
             unknown_names: statement
                 .carried
@@ -553,6 +580,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
                 .chain(running.iter().map(|_| "an integral".into()))
                 .collect(),
             equation_names,
+            infinite: self.source.infinite_ends(),
             written_out: singular.iter().map(|s| s.equation).collect(),
             limits,
             constant_limits,
@@ -590,6 +618,8 @@ impl<'s, 'f> Assembler<'s, 'f> {
             curves,
             balances,
             watched,
+            far: self.far,
+            again: None,
             cases: Vec::new(),
             path,
         })

@@ -77,6 +77,11 @@ impl Faults {
         self.list.is_empty()
     }
 
+    /// Whether there are faults, all of one kind.
+    pub fn only(&self, code: &str) -> bool {
+        !self.list.is_empty() && self.list.iter().all(|fault| fault.code == code)
+    }
+
     /// All faults in the order of the sheet, with lines and columns.
     pub fn finish(mut self, sheet: &str) -> Vec<Fault> {
         // Where a line is no TOML, what was made of it is guesswork.

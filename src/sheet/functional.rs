@@ -77,7 +77,6 @@ pub(super) struct Reckoner {
     /// Needed functionals in order, with the expression along the span and the formulas of the points.
     parts: Vec<Part>,
     slots: usize,
-    span: [f64; 2],
 }
 
 struct Part {
@@ -132,8 +131,7 @@ impl Reckoner {
             }
         });
         let parts = parts.collect();
-        let span = [points[0], points[points.len() - 1]];
-        Self { formula: Tape::compile(graph, &[formula]), parts, slots: functionals.len(), span }
+        Self { formula: Tape::compile(graph, &[formula]), parts, slots: functionals.len() }
     }
 
     /// The number on a field, with the rounding of its own making.
@@ -149,7 +147,7 @@ impl Reckoner {
     fn fill(&self, field: &Field, memory: &Memory) -> Result<Vec<Rounded>> {
         let mut slots = vec![Rounded::exact(f64::NAN); self.slots];
         for part in &self.parts {
-            let found = part.evaluate(field, &slots, self.span, memory)?;
+            let found = part.evaluate(field, &slots, field.mesh.span(), memory)?;
             slots[part.index] = Rounded { value: found.value, error: found.error };
         }
         Ok(slots)
@@ -161,7 +159,7 @@ impl Reckoner {
         let memory = Memory::default();
         let mut slots = self.fill(field, &memory)?;
         let own = scalar(&self.formula, &slots, field).value.abs();
-        let [from, to] = self.span;
+        let [from, to] = field.mesh.span();
         for part in &self.parts {
             let size = match part.kind {
                 Kind::PlaceOfMaximum | Kind::PlaceOfMinimum | Kind::Root(_) => to - from,
@@ -191,7 +189,7 @@ impl Reckoner {
     /// The extreme behind a number that is just one, for remarks on sides and ties.
     pub fn extreme(&self, field: &Field) -> Option<Extreme> {
         let [part] = &self.parts[..] else { return None };
-        let ends = part.ends(field, &[], self.span).ok()?;
+        let ends = part.ends(field, &[], field.mesh.span()).ok()?;
         match part.kind {
             Kind::Maximum | Kind::PlaceOfMaximum => quantity::maximum(field, &part.along, ends[0], ends[1], None).ok(),
             Kind::Minimum | Kind::PlaceOfMinimum => quantity::minimum(field, &part.along, ends[0], ends[1], None).ok(),

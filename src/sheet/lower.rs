@@ -136,6 +136,8 @@ pub(super) struct Lowerer<'f> {
     pub moves: Cell<bool>,
     /// What `fold(n)` stands for, where there is a path.
     pub folds: Option<FoldNames>,
+    /// The constant whose value is the place where infinite ends are cut.
+    pub far: Option<u16>,
     /// Names that were read as units somewhere.
     likened: HashSet<String>,
     /// Whether it has been said that the ends of the span lack their unit.
@@ -169,6 +171,7 @@ impl<'f> Lowerer<'f> {
             reaches: Vec::new(),
             nature: Vec::new(),
             moves: Cell::new(false),
+            far: None,
             likened: HashSet::new(),
             misplaced: false,
             overfull: false,
@@ -329,7 +332,18 @@ impl<'f> Lowerer<'f> {
                 return self.plain(node, Dimension::default());
             }
             if name == "inf" {
-                return self.fault("not yet", at, span, "`inf`: infinite spans are not part of this version", "");
+                let Some(far) = self.far else {
+                    let hint = "write it as an end of the span first: x = [\"0 m\", \"inf\"]";
+                    return self.fault(
+                        "infinite",
+                        at,
+                        span,
+                        "`inf` stands for an infinite end, and this span has none",
+                        hint,
+                    );
+                };
+                let node = self.graph.constant(far);
+                return Some(Typed { node, dimension: None, absolute: Absolute::NONE });
             }
             if name.eq_ignore_ascii_case("nan") {
                 return self.fault("not finite", at, span, "nan is not a number to calculate with", "");

@@ -19,6 +19,7 @@ mod count;
 mod datafile;
 mod describe;
 mod draw;
+mod far;
 mod fault;
 mod functional;
 mod guard;
@@ -76,6 +77,9 @@ pub struct Sheet {
     curves: Vec<CurveItem>,
     balances: Vec<Balance>,
     watched: Vec<reach::Watched>,
+    /// Where infinite ends are cut, and how to cut them elsewhere.
+    far: Option<f64>,
+    again: Option<far::Again>,
     cases: Vec<Case>,
     path: Option<PathAsked>,
 }
@@ -201,6 +205,8 @@ pub struct Reading<'a> {
     pub replaced: &'a [(&'a str, &'a str)],
     /// The data files that the sheet names ([`files`]).
     pub files: &'a [DataFile],
+    /// Where infinite ends of the span are cut (SI), at first; otherwise a place is chosen.
+    pub far: Option<f64>,
 }
 
 /// A datum whose value may be changed.
@@ -257,7 +263,7 @@ impl Sheet {
     /// The same with other values (SI) of the data held. A problem whose points they move must be read again instead
     /// ([`Sheet::moves_points`]).
     pub fn model_at(&self, values: Vec<f64>) -> Held<'_> {
-        Held::new(&self.model, values, self.statement.linear)
+        Held::new(&self.model, self.behind(&values), self.statement.linear)
     }
 
     /// The same with the values that a solution carries behind its unknown constants, where it does.
@@ -286,6 +292,11 @@ impl Sheet {
         self.moves_points
     }
 
+    /// Whether an end of the span is infinite: a solution then shows where it was cut.
+    pub fn infinite(&self) -> bool {
+        self.far.is_some()
+    }
+
     /// The load cases: each the sheet with changed data.
     pub fn cases(&self) -> &[Case] {
         &self.cases
@@ -301,10 +312,8 @@ impl Sheet {
     /// # Errors
     /// Those of [`crate::solve::boundary`].
     pub fn solve(&self, watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
-        let settings = self.settings(watch);
-        let solution = crate::solve::boundary(&self.model(), &settings)?;
-        self.within_measured(&solution)?;
-        Ok(solution)
+        let values: Vec<f64> = self.held.iter().map(|held| held.value).collect();
+        self.solve_held(&values, watch)
     }
 
     /// Refuses a solution that needs measured data where nothing was measured.
@@ -322,8 +331,14 @@ impl Sheet {
     /// Those of [`crate::solve::boundary`].
     pub fn solve_held(&self, values: &[f64], watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
         let settings = self.settings(watch);
-        let mut solution = crate::solve::boundary(&self.model_at(values.to_vec()), &settings)?;
-        solution.carry(values);
+        let solution = match &self.again {
+            Some(again) => far::solve(self, again, values, watch)?,
+            None => {
+                let mut solution = crate::solve::boundary(&self.model_at(values.to_vec()), &settings)?;
+                solution.carry(values);
+                solution
+            }
+        };
         self.within_measured(&solution)?;
         Ok(solution)
     }

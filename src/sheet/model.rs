@@ -186,6 +186,8 @@ pub struct SheetModel {
     pub(super) releases: Vec<Release>,
     pub(super) unknown_names: Vec<String>,
     pub(super) equation_names: Vec<String>,
+    /// Infinite ends.
+    pub(super) infinite: [bool; 2],
     /// Equations that are singular at an end and written out.
     pub(super) written_out: Vec<usize>,
     /// Limits of unknowns: index, lower and upper bound, both exclusive.
@@ -257,6 +259,10 @@ impl Model for SheetModel {
     fn condition_rounding(&self, index: usize, jets: &[f64], constants: &[f64], out: &mut ConditionValue) -> bool {
         self.ties[index].rounding(&self.layout, jets, constants, out);
         true
+    }
+
+    fn open(&self) -> [bool; 2] {
+        self.infinite
     }
 
     fn written_out(&self, equation: usize) -> bool {

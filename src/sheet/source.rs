@@ -1,6 +1,7 @@
 //! The sheet's file as sections of located texts: TOML and nothing else; no formula is read here.
 
 use super::fault::{Faults, NOT_TOML, nearest};
+use crate::formula::syntax::{self, Kind};
 use std::ops::Range;
 use toml::Spanned;
 use toml::de::{DeTable, DeValue};
@@ -146,6 +147,30 @@ pub(super) struct Source {
 }
 
 impl Source {
+    /// Whether an end of the span is infinite.
+    pub fn infinite(&self) -> bool {
+        self.infinite_ends().contains(&true)
+    }
+
+    /// Which ends are.
+    pub fn infinite_ends(&self) -> [bool; 2] {
+        let infinite = |end: &Located| end.text.trim().trim_start_matches('-').trim() == "inf";
+        self.coordinate.as_ref().map_or([false; 2], |c| [infinite(&c.value[0]), infinite(&c.value[1])])
+    }
+
+    /// Where infinite ends are cut at first: ten times the unit or the size of a finite end.
+    pub fn first_cut(&self) -> f64 {
+        let ends = self.coordinate.iter().flat_map(|c| &c.value);
+        let size = ends.into_iter().filter_map(|end| match syntax::parse(&end.text).ok()?.kind {
+            Kind::Number { value, unit, .. } => {
+                let scale = unit.as_ref().map_or(1.0, |unit| unit.difference_from_si(1.0).recip());
+                Some(scale.abs() * value.abs().max(1.0))
+            }
+            _ => None,
+        });
+        10.0 * size.fold(None, |s: Option<f64>, v| Some(s.map_or(v, |s| s.max(v)))).unwrap_or(1.0)
+    }
+
     /// Puts other formulas in place of data.
     pub fn replace(&mut self, replaced: &[(&str, &str)], faults: &mut Faults) {
         for (name, text) in replaced {

@@ -112,6 +112,11 @@ impl Solution {
         }
     }
 
+    /// Adds a companion: another approximation of the same solution, from which no number may differ unnoticed.
+    pub fn accompany(&mut self, field: Field) {
+        self.companions.coarser.push(field);
+    }
+
     /// The solution with fewer nodes an element that the answer is compared with.
     pub fn base(&self) -> &Field {
         &self.companions.coarser[0]

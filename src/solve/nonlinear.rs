@@ -62,7 +62,7 @@ pub(super) fn nonlinear(model: &dyn Model, settings: &Settings<'_>) -> Result<So
 /// Fields to start from: constant ones at which the equations make sense, and what one linear solve makes of
 /// each, which meets all linear conditions.
 fn starts(model: &dyn Model, settings: &Settings<'_>) -> Result<Vec<Field>> {
-    let closed = Mesh::uniform(model.points(), 2, 16);
+    let closed = Mesh::uniform(model.points(), 1, 16);
     let mut library = Library::suited(model);
     let mut starts = Vec::new();
     starts.extend(guessed(model, &mut library)?);
@@ -418,6 +418,10 @@ impl Model for Homotopy<'_> {
 
     fn releases(&self) -> &[Release] {
         self.model.releases()
+    }
+
+    fn open(&self) -> [bool; 2] {
+        self.model.open()
     }
 
     fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {

@@ -14,14 +14,17 @@ pub(super) const PASSES: usize = 40;
 /// How many nodes the answer has more than the mesh it was adapted on.
 pub(super) const ENRICH: usize = 4;
 
-/// Whether a field lies within the limits of its model, seen at seven points of each element.
+/// Whether a field lies within the limits of its model, seen at more points of each element than it has nodes, close to its
+/// ends too.
 pub(super) fn admissible(model: &dyn Model, field: &Field) -> bool {
     let inside = |e: usize, s: f64| {
         let jets = field.jets(e, s, field.layout.orders());
         model.admissible(field.element(e).coordinate(s), &jets, &field.constants)
     };
-    let points = [-0.99, -0.7, -0.3, 0.0, 0.3, 0.7, 0.99];
-    (0..field.mesh.elements.len()).all(|e| points.iter().all(|s| inside(e, *s)))
+    (0..field.mesh.elements.len()).all(|e| {
+        let count = 2 * field.element(e).nodes + 1;
+        (0..count).all(|k| inside(e, -(std::f64::consts::PI * (k as f64 + 0.5) / count as f64).cos()))
+    })
 }
 
 /// How small the last coefficients must be for a given accuracy.

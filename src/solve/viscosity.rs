@@ -94,6 +94,10 @@ impl Model for Viscous<'_> {
         self.model.releases()
     }
 
+    fn open(&self) -> [bool; 2] {
+        self.model.open()
+    }
+
     fn admissible(&self, x: f64, jets: &[f64], constants: &[f64]) -> bool {
         self.model.admissible(x, jets, constants)
     }

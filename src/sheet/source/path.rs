@@ -75,6 +75,13 @@ impl Source {
     /// An unknown constant that a path follows is a datum that is held: its value is that at the start.
     pub fn settle_path(&mut self, faults: &mut Faults) {
         let Some(follow) = &self.path else { return };
+        if self.infinite() {
+            let message = "a path along an infinite span is not part of this version";
+            let hint = "cut the span where the solution has settled";
+            faults.add("not yet", follow.parameter.span.clone(), message, Some(hint.into()));
+            self.path = None;
+            return;
+        }
         let name = &follow.parameter.text;
         let constant = |e: &Entry<Declared>| e.value.constant && e.name == *name;
         if let Some(index) = self.unknowns.iter().position(constant) {
