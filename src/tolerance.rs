@@ -49,6 +49,9 @@ pub const FINEST_TAIL: f64 = 2e-15;
 /// Lower terms of the equations that add less than this to the highest derivatives over an element are weak.
 pub const WEAK: f64 = 1e-2;
 
+/// An element over which a derivative changes its unknown by less than this is short.
+pub const SHORT: f64 = 1e-4;
+
 /// A last coefficient that adds less than a certain share of the possible size of the terms to an equation is dropped
 /// as rounding if it stands out: the share is this times the ratio of the element to the shortest one ...
 pub const INVISIBLE_GROWTH: f64 = 100.0 * ROUNDOFF;

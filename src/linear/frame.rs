@@ -25,7 +25,7 @@ enum Treatment {
 pub(super) struct Frame {
     layout: Layout,
     /// Expected sizes of the states, divided by the common scale, on each element.
-    pub ends: Vec<Vec<f64>>,
+    ends: Vec<Vec<f64>>,
     treatments: Vec<Treatment>,
     /// Links to insert at local points.
     local: Vec<Option<Vec<f64>>>,

@@ -39,7 +39,7 @@ pub(crate) fn solve(
     let layout = model.layout();
     let sizes = local_sizes(mesh, scale, before);
     let ends = state_sizes(layout, mesh, scale, &sizes, before);
-    let mut frame = Frame::new(model, mesh, scale, ends, perturbation)?;
+    let mut frame = Frame::new(model, mesh, scale, ends.clone(), perturbation)?;
     let mut responses: Vec<Response> = Vec::with_capacity(mesh.elements.len());
     let mut work = Workspace::default();
     let mut equations = Linearised::default();
@@ -60,7 +60,7 @@ pub(crate) fn solve(
         let Condensed { mut rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
         let ratios = ratios(layout, x.len(), &equations);
         if weak(layout, 0.5 * element.length(), &ratios) {
-            balance(&mut rows, width(layout), &frame.ends[index]);
+            balance(&mut rows, width(layout), &ends[index]);
         }
         // The last coefficient is visible at Gauss and Radau nodes: nothing is to be dropped there.
         let blind = library.lobatto() && element.open.is_none();
@@ -148,16 +148,17 @@ fn state_sizes(
         .map(|(element, sizes)| {
             let half = 0.5 * element.length();
             let own = before.map(|field| field.local_states(element.left, element.right));
-            let mut ends = Vec::with_capacity(layout.states());
-            for (i, &m) in layout.orders().iter().enumerate() {
-                for k in 0..m {
-                    let state = layout.state(i, k);
-                    let most = (sizes[i] / half.powi(k as i32)).min(largest[state].max(f64::MIN_POSITIVE));
-                    // Where a state vanishes rows still need a yardstick.
-                    let size = own.as_ref().map_or(most, |own| own[state].max(1e-10 * most));
-                    ends.push(size / scale[i]);
-                }
-            }
+            let states = || layout.orders().iter().enumerate().flat_map(|(i, &m)| (0..m).map(move |k| (i, k)));
+            let whole: Vec<f64> = states().map(|(i, k)| sizes[i] / scale[i] / half.powi(k as i32)).collect();
+            let Some(own) = own else { return whole };
+            let ordinary = states().enumerate().map(|(state, (i, _))| {
+                let most = whole[state].min(largest[state].max(f64::MIN_POSITIVE) / scale[i]);
+                // Where a state vanishes rows still need a yardstick.
+                (own[state] / scale[i]).max(1e-10 * most)
+            });
+            let ordinary: Vec<f64> = ordinary.collect();
+            let short = ordinary.iter().zip(&whole).any(|(own, whole)| *own < tolerance::SHORT * whole);
+            let ends = if short { ordinary } else { whole };
             ends
         })
         .collect()
