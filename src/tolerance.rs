@@ -49,7 +49,9 @@ pub const FINEST_TAIL: f64 = 2e-15;
 /// Lower terms of the equations that add less than this to the highest derivatives over an element are weak.
 pub const WEAK: f64 = 1e-2;
 
-/// An element over which a derivative changes its unknown by less than this is short.
+/// An element below this share of the span, over which a derivative changes its unknown by less than [`SHORT`], is short.
+pub const SHORT_SHARE: f64 = 1e-3;
+/// See [`SHORT_SHARE`].
 pub const SHORT: f64 = 1e-4;
 
 /// A last coefficient that adds less than a certain share of the possible size of the terms to an equation is dropped

@@ -59,7 +59,7 @@ pub(crate) fn solve(
         let local = Sizes { common: scale, local: &sizes[index] };
         let Condensed { mut rows, response } = condense(layout, element, &tables, &equations, local, &mut work)?;
         let ratios = ratios(layout, x.len(), &equations);
-        if weak(layout, 0.5 * element.length(), &ratios) {
+        if element.length() < tolerance::SHORT_SHARE * mesh.length() && weak(layout, 0.5 * element.length(), &ratios) {
             balance(&mut rows, width(layout), &ends[index]);
         }
         // The last coefficient is visible at Gauss and Radau nodes: nothing is to be dropped there.
@@ -157,7 +157,8 @@ fn state_sizes(
                 (own[state] / scale[i]).max(1e-10 * most)
             });
             let ordinary: Vec<f64> = ordinary.collect();
-            let short = ordinary.iter().zip(&whole).any(|(own, whole)| *own < tolerance::SHORT * whole);
+            let short = element.length() < tolerance::SHORT_SHARE * mesh.length();
+            let short = short && ordinary.iter().zip(&whole).any(|(own, whole)| *own < tolerance::SHORT * whole);
             let ends = if short { ordinary } else { whole };
             ends
         })
