@@ -191,8 +191,7 @@ fn a_constant_without_a_condition() {
         p = "p"
     "#,
     )
-    .err()
-    .expect("refused");
+    .expect_err("refused");
     let text: Vec<&str> = faults.iter().map(|f| f.message.as_str()).collect();
     assert!(
         text.iter().any(|t| t.contains("3 conditions are needed (order 2, 1 unknown constant), 2 given")),
