@@ -62,7 +62,8 @@ fn run(from: u64, count: u64) {
         let mut random = Sequence(seed * 7919 + 2385);
         let model = problem(&mut random);
         let n = 1 + (random.next() * 12.0) as usize;
-        let spectrum = eigen(&model, Ask::Lowest(n), &Settings::default()).expect("an eigenproblem");
+        let spectrum = eigen(&model, Ask::Lowest(n), &Settings::default())
+            .unwrap_or_else(|error| panic!("problem {seed}: {error}"));
         assert_eq!(spectrum.modes.len(), n, "problem {seed}: {:?}", spectrum.discarded);
         assert_eq!(spectrum.count.method, Method::Oscillation, "problem {seed}");
         assert_eq!(spectrum.count.checked, Some(true), "problem {seed}: {:?}", spectrum.count);

@@ -91,8 +91,8 @@ impl Task<'_> {
                 {
                     return Err(Eigen::Unbounded { seen: now }.into());
                 }
-                // A negative one may be the first of many: one more look with a finer mesh.
-                let first_look = lowest.is_none();
+                // A negative one may be the first of many: one more look with a finer mesh, where it can be had.
+                let first_look = lowest.is_none() && 2 * fine.size() < MOST_ROWS;
                 lowest = now.or(lowest);
                 if first_look && now.is_some_and(|v| v < 0.0) && level + 1 < LEVELS {
                     least = 2 * nodes;

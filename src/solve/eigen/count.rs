@@ -97,9 +97,9 @@ impl Task<'_> {
         count.region = region.bounds();
         count.method = Method::Argument;
         if let Some(turns) = turns {
-            // Rows may be turned around, which does not matter; zeros count positively.
+            // Turns the wrong way are a sign of a contour that was not followed: no count.
             count.counted = usize::try_from(turns).ok();
-            count.checked = Some(count.counted == Some(count.found));
+            count.checked = count.counted.map(|counted| counted == count.found);
         }
         Ok(count)
     }

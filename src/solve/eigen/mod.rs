@@ -186,8 +186,11 @@ fn run(model: &dyn Model, complex: bool, ask: Ask, settings: &Settings<'_>) -> R
         return Ok(first);
     }
     // The count disagrees: once more on a mesh twice as fine.
-    let second = task.spectrum(2)?;
-    Ok(if second.count.checked == Some(false) && second.modes.len() < first.modes.len() { first } else { second })
+    match task.spectrum(2) {
+        Ok(second) if second.count.checked != Some(false) || second.modes.len() >= first.modes.len() => Ok(second),
+        Err(Error::Interrupted) => Err(Error::Interrupted),
+        _ => Ok(first),
+    }
 }
 
 impl Task<'_> {

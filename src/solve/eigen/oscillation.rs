@@ -8,12 +8,17 @@
 
 use super::Task;
 use crate::error::{Error, Result};
-use crate::field::Field;
-use crate::model::{Batch, Condition, ConditionValue, Held, Layout, Linearised, Model, Place, Release, Side};
-use crate::solve::{Settings, boundary};
+use crate::legendre;
+use crate::linear::Library;
+use crate::linear::tables::Tables;
+use crate::mesh::Element;
 use crate::spectrum::pencil::Pencil;
-use nalgebra::DMatrix;
+use nalgebra::{DMatrix, DVector};
 
+/// Nodes of an element of the march.
+const NODES: usize = 24;
+/// Relative size of the last coefficients at which an element is resolved well enough for an angle.
+const TAIL: f64 = 1e-7;
 /// Samples of each piece.
 const SAMPLES: usize = 9;
 
@@ -73,50 +78,101 @@ impl Oscillator {
         })
     }
 
-    /// Number of eigenvalues up to a parameter.
+    /// Number of eigenvalues up to a parameter. The solution is marched from element to element by collocation of z' = G z
+    /// and made of size 1 again after each, so that no growth is too large: only its angle counts.
     pub fn count(&self, task: &Task<'_>, parameter: f64) -> Result<usize> {
-        let held = Held::new(task.pencil.model, vec![parameter], true);
-        let [z1, z2] = if self.left[0] == 0.0 { [0.0, 1.0] } else { self.left };
-        let place = vec![Place { point: 0, side: Side::Right }];
-        let conditions = (0..2).map(|_| Condition { name: "start".into(), places: place.clone() }).collect();
-        let march = March { held: &held, states: self.states, start: [z1, self.sign * z2], conditions };
-        let settings = Settings { relative: 1e-8, ..*task.settings };
-        let field = boundary(&march, &settings)?.field;
-        let zeros = self.zeros(&field)?;
-        let end = field.mesh.span()[1];
-        let [mut w1, mut w2] = self.states.map(|(i, k)| field.value(i, k, end, Side::Left));
-        w2 *= self.sign;
+        let span = task.pencil.length();
+        let mut library = Library::new(1);
+        let mut z = [self.left[0], self.sign * self.left[1]];
+        if z[0] == 0.0 {
+            z[1] = self.sign;
+        }
+        let (mut zeros, mut before) = (0, 0.0f64);
+        let mut ahead: Vec<Element> = task.mesh(parameter, 0)?.elements.into_iter().rev().collect();
+        while let Some(element) = ahead.pop() {
+            task.tick(0)?;
+            let element = Element { nodes: NODES, open: None, ..element };
+            let tables = library.get(&element)?;
+            let step = self.step(&task.pencil, &element, &tables, parameter, z)?;
+            if step.tail > TAIL && element.length() > 1e-5 * span {
+                let [left, right] = element.halves();
+                ahead.extend([right, left]);
+                continue;
+            }
+            let count = 6 * NODES;
+            for k in 1..count {
+                let s = -(std::f64::consts::PI * k as f64 / count as f64).cos();
+                let value = legendre::series(&step.first, s);
+                zeros += usize::from(value * before < 0.0);
+                // Sizes do not matter, and products must not underflow.
+                before = if value == 0.0 { before } else { value.signum() };
+            }
+            let size = step.end[0].abs().max(step.end[1].abs());
+            z = step.end.map(|v| v / size);
+            if !z.iter().all(|v| v.is_finite()) {
+                return Err(Error::NotFinite { what: "the solution of the count".into(), x: element.left });
+            }
+        }
+        let [mut w1, mut w2] = [z[0], self.sign * z[1]];
         if w1 < 0.0 {
             (w1, w2) = (-w1, -w2);
         }
         // Angle in (0, pi] against that of the condition, by their cotangents.
-        let past = if self.right[0] == 0.0 { w1 == 0.0 } else { w1 == 0.0 || w2 / w1 <= self.right[1] / self.right[0] };
+        let past = w1 == 0.0 || (self.right[0] != 0.0 && w2 / w1 <= self.right[1] / self.right[0]);
         Ok(zeros + usize::from(past))
     }
 
-    /// Changes of sign of z_1 inside the span.
-    fn zeros(&self, field: &Field) -> Result<usize> {
-        let (mut zeros, mut before) = (0, 0.0f64);
-        let mut tops = vec![0; field.layout.unknowns()];
-        tops[self.states[0].0] = self.states[0].1;
-        let index = self.states[0].0 + self.states[0].1;
-        for e in 0..field.mesh.elements.len() {
-            let count = 6 * field.element(e).nodes;
-            for k in 1..count {
-                let s = -(std::f64::consts::PI * k as f64 / count as f64).cos();
-                let value = field.jets(e, s, &tops)[index];
-                if !value.is_finite() {
-                    return Err(Error::NotFinite {
-                        what: "the solution of the count".into(),
-                        x: field.element(e).left,
-                    });
+    /// z over one element from z at its left end: slopes v_i at the nodes with z_i = z_i(left) + (h/2) Q v_i.
+    fn step(
+        &self,
+        pencil: &Pencil<'_>,
+        element: &Element,
+        tables: &Tables,
+        parameter: f64,
+        start: [f64; 2],
+    ) -> Result<Step> {
+        let (n, half) = (tables.n, 0.5 * element.length());
+        let undetermined = || Error::SingularPoint { x: element.left };
+        let mut matrix = DMatrix::<f64>::identity(2 * n, 2 * n);
+        let mut right = DVector::<f64>::zeros(2 * n);
+        for (j, s) in tables.nodes.iter().enumerate() {
+            let x = element.coordinate(*s);
+            let g = companion(pencil, &self.states, element.piece, x, parameter).ok_or_else(undetermined)?;
+            for (i, k) in [(0, 0), (0, 1), (1, 0), (1, 1)] {
+                right[i * n + j] += g[(i, k)] * start[k];
+                for l in 0..n {
+                    matrix[(i * n + j, k * n + l)] -= g[(i, k)] * half * tables.integrals[0][l * n + j];
                 }
-                zeros += usize::from(value * before.signum() < 0.0 && before != 0.0);
-                before = if value == 0.0 { before } else { value };
             }
         }
-        Ok(zeros)
+        let slopes = matrix.lu().solve(&right).ok_or_else(undetermined)?;
+        let part = |i: usize| &slopes.as_slice()[i * n..(i + 1) * n];
+        let end = [0, 1].map(|i| {
+            let sum: f64 = part(i).iter().zip(&tables.ends[0]).map(|(v, q)| v * q).sum();
+            start[i] + half * sum
+        });
+        let tail = |i: usize| {
+            let modal = tables.modal(part(i));
+            let largest = modal.iter().fold(0.0f64, |s, c| s.max(c.abs()));
+            let last = modal[n - 1].abs().max(modal[n - 2].abs());
+            // A slope too small to move anything need not be resolved.
+            let size = largest.max(1e-8 * start[i].abs().max(end[i].abs()) / half);
+            if size > 0.0 { last / size } else { 0.0 }
+        };
+        let mut first = legendre::integrate_series(&tables.modal(part(0)));
+        first.iter_mut().for_each(|c| *c *= half);
+        first[0] += start[0];
+        Ok(Step { first, end, tail: tail(0).max(tail(1)) })
     }
+}
+
+/// The solution on one element.
+struct Step {
+    /// Legendre series of z_1.
+    first: Vec<f64>,
+    end: [f64; 2],
+    /// Relative size of the last coefficients.
+    tail: f64,
 }
 
 /// Matrix of z' = G z at a point; none where the highest derivatives are not determined.
@@ -142,46 +198,4 @@ fn companion(
         if k + 1 < layout.orders()[i] { f64::from(u8::from(states[c] == (i, k + 1))) } else { highest[(i, c)] }
     });
     result.iter().all(|v| v.is_finite()).then_some(result)
-}
-
-/// The equations of a model with the state given at the left end.
-struct March<'a> {
-    held: &'a Held<'a>,
-    states: [(usize, usize); 2],
-    start: [f64; 2],
-    conditions: Vec<Condition>,
-}
-
-impl Model for March<'_> {
-    fn layout(&self) -> &Layout {
-        self.held.layout()
-    }
-
-    fn points(&self) -> &[f64] {
-        self.held.points()
-    }
-
-    fn linear(&self) -> bool {
-        true
-    }
-
-    fn equations(&self, batch: &Batch<'_>, out: &mut Linearised) -> Result<()> {
-        self.held.equations(batch, out)
-    }
-
-    fn conditions(&self) -> &[Condition] {
-        &self.conditions
-    }
-
-    fn condition(&self, index: usize, jets: &[f64], _constants: &[f64], out: &mut ConditionValue) -> Result<()> {
-        let (i, k) = self.states[index];
-        let jet = self.layout().jet(i, k);
-        out.residual = jets[jet] - self.start[index];
-        out.jets[jet] = 1.0;
-        Ok(())
-    }
-
-    fn releases(&self) -> &[Release] {
-        &[]
-    }
 }
