@@ -514,15 +514,14 @@ fn what_is_not_built_yet_is_refused_in_one_sentence() {
             &[
                 ("title = \"Bench\"", "title = \"Bench\"\ncomplex = true"),
                 ("x = [\"0 m\", \"L\"]", "x = [\"0 m\", \"L\"]\nuntil = \"y = 0\""),
-                ("[report]", "[eigen]\n[solutions]\n[sweep]\n[report]"),
+                ("[report]", "[solutions]\n[sweep]\n[report]"),
             ],
         ),
         &[
             (2, 1, "`complex`: complex sheets are not part of this version"),
             (9, 1, "`until`: marching to an event is not part of this version"),
-            (17, 2, "`eigen`: eigenproblems are not part of this version"),
-            (18, 2, "`solutions`: a search for several solutions is not part of this version"),
-            (19, 2, "`sweep`: sweeps over data are not part of this version"),
+            (17, 2, "`solutions`: a search for several solutions is not part of this version"),
+            (18, 2, "`sweep`: sweeps over data are not part of this version"),
         ],
     );
     expect(

@@ -139,7 +139,13 @@ fn check(name: &str, as_json: bool, colour: Colour) -> u8 {
     }
     let s = &sheet.statement;
     let conditions = s.order + s.constants + s.releases;
-    let kind = if s.linear { "linear" } else { "nonlinear" };
+    let kind = if sheet.eigen().is_some() {
+        "an eigenproblem"
+    } else if s.linear {
+        "linear"
+    } else {
+        "nonlinear"
+    };
     let count = format!("\norder {}, {conditions} conditions, {kind}; nothing was solved\n", s.order);
     say(&(text::statement(&outcome) + &count))
 }

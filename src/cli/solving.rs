@@ -3,8 +3,8 @@
 use super::{complain, progress};
 use crate::error::Error;
 use crate::record::build::{self, Origin};
-use crate::record::cases;
 use crate::record::outcome::Outcome;
+use crate::record::{cases, modes};
 use crate::sheet::Sheet;
 use std::time::Duration;
 
@@ -15,10 +15,18 @@ pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit:
     if let Some(path) = sheet.follow(Some(&watch)) {
         progress.finish();
         if matches!(path, Err(Error::Interrupted)) {
-            stopped_early(limit);
-            return None;
+            return stopped_early(limit);
         }
         return Some(crate::record::path::followed(sheet, &path, origin, cross_check));
+    }
+    if let Some(eigen) = sheet.eigen() {
+        let found = sheet.solve_modes(Some(&watch));
+        progress.finish();
+        return match &found {
+            Err(Error::Interrupted) => stopped_early(limit),
+            Ok(spectrum) => Some(modes::solved(sheet, eigen, spectrum, origin)),
+            Err(error) => Some(build::failed(sheet, origin, error)),
+        };
     }
     let solved = sheet.solve(Some(&watch));
     let mut answers: Vec<cases::Answer<'_>> = Vec::new();
@@ -32,8 +40,7 @@ pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit:
     }
     progress.finish();
     if stopped {
-        stopped_early(limit);
-        return None;
+        return stopped_early(limit);
     }
     let mut outcome = match &solved {
         Ok(solution) => build::solved(sheet, solution, origin, cross_check),
@@ -44,9 +51,10 @@ pub(super) fn solve(sheet: &Sheet, origin: Origin<'_>, cross_check: bool, limit:
 }
 
 /// Says why nothing was finished.
-fn stopped_early(limit: Option<Duration>) {
+fn stopped_early(limit: Option<Duration>) -> Option<Outcome> {
     match limit.filter(|_| !progress::interrupted()) {
         Some(limit) => complain(&progress::late(limit), Some("allow more time, or ask for less accuracy")),
         None => complain("interrupted: nothing was written", None),
     }
+    None
 }

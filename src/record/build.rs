@@ -66,6 +66,9 @@ pub fn unsolved(sheet: &Sheet, origin: Origin<'_>) -> Outcome {
         path: None,
         cases: Vec::new(),
         envelopes: Vec::new(),
+        modes: Vec::new(),
+        count_checked: None,
+        count_region: [f64::NAN; 4],
         decay_names: s.carried.clone(),
         mesh: Vec::new(),
         passes: 0,
@@ -258,6 +261,15 @@ fn residual_curve(sheet: &Sheet, found: &Residual) -> Curve {
     let pieces = found.points.iter().step_by(step);
     let pieces = pieces.map(|p| p.iter().map(|(x, r)| (unit.from_si(*x), *r)).collect()).collect();
     Curve { name: "residual, relative".into(), unit: "1".into(), pieces, marks: Vec::new() }
+}
+
+/// The first unknown along the span.
+pub(super) fn first_curve(sheet: &Sheet, solution: &Solution) -> Option<Curve> {
+    let x_unit = &sheet.statement.coordinate_unit;
+    let (name, unit, profile) = sheet.curves().next()?;
+    let pieces = pieces(&solution.field, profile, x_unit, unit);
+    let marks = marks(&solution.field, profile, x_unit, unit);
+    Some(Curve { name: name.to_owned(), unit: unit.text.clone(), pieces, marks })
 }
 
 /// Unknowns and named expressions along the span, extremes marked.

@@ -1,8 +1,8 @@
 //! Results for programs.
 
 use super::outcome::{
-    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, Outcome, PathResult, PathRow, Peak, Quantity,
-    Status,
+    CaseResult, Check, Entry, Envelope, Feature, FeatureKind, MeshRow, ModeNumber, ModeResult, Outcome, PathResult,
+    PathRow, Peak, Quantity, Status,
 };
 use crate::sheet::Fault;
 use serde::Serialize;
@@ -26,6 +26,12 @@ struct Document<'a> {
     warnings: &'a [String],
     #[serde(skip_serializing_if = "Option::is_none")]
     path: Option<PathLine<'a>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    modes: Option<Vec<ModeLine<'a>>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    count_checked: Option<Option<bool>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    count_region: Option<[Option<f64>; 4]>,
     #[serde(skip_serializing_if = "Vec::is_empty")]
     cases: Vec<CaseLine<'a>>,
     #[serde(skip_serializing_if = "Vec::is_empty")]
@@ -48,6 +54,38 @@ struct PathRowLine<'a> {
     /// Folds passed before.
     branch: usize,
     quantities: Vec<Number<'a>>,
+}
+
+#[derive(Serialize)]
+struct ModeLine<'a> {
+    index: usize,
+    mode: usize,
+    multiplicity: usize,
+    parameter: ComplexNumber<'a>,
+    quantities: Vec<ComplexNumber<'a>>,
+}
+
+#[derive(Serialize)]
+struct ComplexNumber<'a> {
+    #[serde(flatten)]
+    number: Number<'a>,
+    imaginary: f64,
+}
+
+fn complex_number(number_of: &ModeNumber) -> ComplexNumber<'_> {
+    let imaginary = if number_of.imaginary.is_finite() { number_of.imaginary } else { 0.0 };
+    ComplexNumber { number: number(&number_of.quantity), imaginary }
+}
+
+fn mode(m: &ModeResult) -> ModeLine<'_> {
+    let ModeResult { index, mode, multiplicity, parameter, quantities } = m;
+    ModeLine {
+        index: *index,
+        mode: *mode,
+        multiplicity: *multiplicity,
+        parameter: complex_number(parameter),
+        quantities: quantities.iter().map(complex_number).collect(),
+    }
 }
 
 #[derive(Serialize)]
@@ -241,6 +279,7 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
     let evidence =
         outcome.checks.iter().map(|Check { name, result, passed, .. }| Evidence { name, result, passed: *passed });
     let checks = evidence.collect();
+    let eigen = !outcome.modes.is_empty();
     let document = Document {
         program: "spanwise",
         version,
@@ -250,12 +289,15 @@ pub fn document(outcome: &Outcome, sha256: &str, version: &str, problem: bool) -
         sheet: &outcome.source,
         sha256,
         relative: outcome.relative,
-        quantities: outcome.quantities.iter().map(number).collect(),
+        quantities: if eigen { Vec::new() } else { outcome.quantities.iter().map(number).collect() },
         checks,
         problem,
         mesh: mesh(outcome),
         warnings: &outcome.warnings,
         path: outcome.path.as_ref().map(path),
+        modes: eigen.then(|| outcome.modes.iter().map(mode).collect()),
+        count_checked: eigen.then_some(outcome.count_checked),
+        count_region: eigen.then(|| outcome.count_region.map(|v| Some(v).filter(|v| v.is_finite()))),
         cases: outcome.cases.iter().map(case).collect(),
         envelopes: outcome.envelopes.iter().map(envelope).collect(),
     };

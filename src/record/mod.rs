@@ -6,6 +6,8 @@ pub mod outcome;
 pub mod build;
 /// Values with uncertain digits.
 pub mod number;
+/// Eigenvalues and modes.
+pub mod modes;
 /// Load cases.
 pub mod cases;
 /// Envelopes over load cases.

@@ -204,6 +204,30 @@ pub struct PathResult {
     pub verdict: String,
 }
 
+/// A number of a mode.
+#[derive(Debug, Clone, PartialEq)]
+pub struct ModeNumber {
+    /// Its real part.
+    pub quantity: Quantity,
+    /// Its imaginary part, in the same unit; the bar holds for the complex number.
+    pub imaginary: f64,
+}
+
+/// An eigenvalue and the numbers asked of its mode.
+#[derive(Debug, Clone, PartialEq)]
+pub struct ModeResult {
+    /// Position among all that were asked for, from 0.
+    pub index: usize,
+    /// The same from 1.
+    pub mode: usize,
+    /// How many cannot be told from it, itself included.
+    pub multiplicity: usize,
+    /// The eigenvalue.
+    pub parameter: ModeNumber,
+    /// Asked numbers.
+    pub quantities: Vec<ModeNumber>,
+}
+
 /// Everything a record shows.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Outcome {
@@ -252,6 +276,12 @@ pub struct Outcome {
     pub cases: Vec<CaseResult>,
     /// What each curve reaches over base and cases.
     pub envelopes: Vec<Envelope>,
+    /// Modes of an eigenproblem.
+    pub modes: Vec<ModeResult>,
+    /// Whether an independent count of the eigenvalues agrees; `None` where none was made.
+    pub count_checked: Option<bool>,
+    /// Region counted: real parts from, to; imaginary parts from, to. Not finite where unbounded or not counted.
+    pub count_region: [f64; 4],
     /// Names of the unknowns of the decay columns (carried fluxes included).
     pub decay_names: Vec<String>,
     /// The mesh.

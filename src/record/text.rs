@@ -15,10 +15,13 @@ pub fn results(outcome: &Outcome) -> String {
         text.push_str(&super::path::text(outcome));
         return text;
     }
-    let rows: Vec<[String; 3]> = outcome.quantities.iter().map(row).collect();
+    text.push_str(&super::modes::text(outcome));
+    // Numbers of modes stand in their own table.
+    let quantities = if outcome.modes.is_empty() { &outcome.quantities[..] } else { &[] };
+    let rows: Vec<[String; 3]> = quantities.iter().map(row).collect();
     let width = |k: usize| rows.iter().map(|r| r[k].chars().count()).max().unwrap_or(0);
     let (label, value) = (width(0), width(1));
-    for (row, quantity) in rows.iter().zip(&outcome.quantities) {
+    for (row, quantity) in rows.iter().zip(quantities) {
         let pad = |s: &str, n: usize| format!("{s}{}", " ".repeat(n - s.chars().count().min(n)));
         let line = format!("{}   {}   {}", pad(&row[0], label), pad(&row[1], value), row[2]);
         let _ = writeln!(text, "{}", line.trim_end());

@@ -18,6 +18,7 @@ impl Lowerer<'_> {
     ) -> Option<Option<Dimension>> {
         match (a.1.dimension, b.1.dimension) {
             (Some(p), Some(q)) if p != q => {
+                self.faults.unequal.push((p, q));
                 let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
                 let message = format!("`{}` is {} but `{}` is {}", text(a.0), p.describe(), text(b.0), q.describe());
                 self.fault("dimension", at, &e.span, message, "both must measure the same: check factors and units")
@@ -30,6 +31,7 @@ impl Lowerer<'_> {
     pub fn expect(&mut self, at: &Located, e: &Expression, typed: Typed, wanted: Option<Dimension>) -> Option<()> {
         match (typed.dimension, wanted) {
             (Some(found), Some(wanted)) if found != wanted => {
+                self.faults.unequal.push((found, wanted));
                 let text = at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
                 let message = format!("`{text}` is {} but {} is needed here", found.describe(), wanted.describe());
                 let hint = if wanted == Dimension::default() {

@@ -37,7 +37,7 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
     }
     source.replace(reading.replaced, &mut faults);
     source.settle_path(&mut faults);
-    let mut sheet = Assembler::new(&source, reading, &mut faults).run();
+    let mut sheet = super::eigen::assembled(&mut source, reading, &mut faults);
     if source.infinite() && reading.far.is_none() && faults.only("outside") {
         // Points named further out than the first cut: begin beyond them.
         let mut far = source.first_cut();
@@ -116,6 +116,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
     }
 
     pub fn run(mut self) -> Option<Sheet> {
+        self.lowerer.eigen = self.source.eigen.is_some();
         self.declare();
         let span = self.span();
         let equations = self.equations(span);
@@ -126,7 +127,10 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let path = self.path();
         let reads = self.conditions();
         self.lowerer.reporting = true;
-        let wanted = self.report();
+        let mut wanted = self.report();
+        let normalise = self.normalisation();
+        let normalised = normalise.is_some();
+        wanted.extend(normalise);
         self.lowerer.reporting = false;
         let breaks = self.breaks();
         self.check_smooth();
@@ -139,7 +143,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             return None;
         }
         let ((equations, fluxes), (nodes, names), points) = (equations?, understood?, points?);
-        self.build(equations, fluxes, nodes, names, reads, wanted, points, path)
+        self.build(equations, fluxes, nodes, names, reads, (wanted, normalised), points, path)
     }
 
     /// Gives every name its meaning.
@@ -501,7 +505,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         mut nodes: Vec<NodeId>,
         mut equation_names: Vec<String>,
         reads: Option<Vec<Read>>,
-        wanted: Vec<Wanted>,
+        (wanted, normalised): (Vec<Wanted>, bool),
         points: Vec<f64>,
         path: Option<PathAsked>,
     ) -> Option<Sheet> {
@@ -529,6 +533,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let reads = self.regularity(reads, &equations, &singular, &expanded, &points)?;
         let releases = self.releases(&reads, &expanded, &orders, &points)?;
         self.check_count(&reads, &orders, releases.len(), &points);
+        self.check_eigen(&nodes, &reads, &points);
         let order: usize = orders.iter().map(|m| usize::from(*m)).sum();
 
         // Integrals in conditions run along as unknowns.
@@ -559,8 +564,15 @@ impl<'s, 'f> Assembler<'s, 'f> {
         let held = self.held_data();
         self.check_path(&nodes, &placed);
         let layout = Layout::new(&orders, self.lowerer.constants.len() + held.len() + usize::from(self.far.is_some()));
-        let linear = self.linear(&nodes, &placed, [points[0], points[points.len() - 1]]);
-        let statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
+        let eigen = self.source.eigen.is_some();
+        let linear = !eigen && self.linear(&nodes, &placed, [points[0], points[points.len() - 1]]);
+        let mut statement = self.statement(&equations, &fluxes, &reads, &points, &orders, order, &releases, linear);
+        let eigen = self.eigen_sheet(&orders, &points);
+        if let Some(eigen) = &eigen {
+            statement.constants -= 1;
+            let line = statement.unknowns.iter_mut().rev().find(|l| l.name == eigen.parameter);
+            line.into_iter().for_each(|l| l.remark = "eigenvalue".into());
+        }
         let [limits, constant_limits] = self.limits();
         let guess = self.guess(&fluxes, &layout, &points);
         if !self.lowerer.faults.is_empty() {
@@ -603,8 +615,12 @@ impl<'s, 'f> Assembler<'s, 'f> {
         for functional in &mut functionals {
             functional.expression = reduction.reduce(&mut graph, functional.expression);
         }
-        let report: Vec<Item> =
+        let mut report: Vec<Item> =
             wanted.into_iter().map(|w| w.item(&mut graph, &functionals, unknowns, &points, folds)).collect();
+        let mut eigen = eigen;
+        if let (Some(eigen), true) = (&mut eigen, normalised) {
+            eigen.normalise = report.pop().map(|item| item.reckoner);
+        }
         Some(Sheet {
             title: self.source.title.clone(),
             note: self.source.note.clone(),
@@ -622,6 +638,7 @@ impl<'s, 'f> Assembler<'s, 'f> {
             again: None,
             cases: Vec::new(),
             path,
+            eigen,
         })
     }
 }

@@ -119,6 +119,20 @@ impl Lowerer<'_> {
                 let [a] = self.arguments(at, e, name, arguments)?;
                 Some(Typed { node: self.graph.unary(Unary::Abs, a.1.node), ..a.1 })
             }
+            // Real and imaginary part and the like where everything is real; complex eigenvalues have a way of their own.
+            ("re" | "im" | "conj" | "arg", 1) if self.eigen => {
+                let [a] = self.arguments(at, e, name, arguments)?;
+                let zero = self.graph.number(0.0);
+                let nothing = self.graph.multiply(zero, a.1.node);
+                match name {
+                    "im" => Some(Typed { node: nothing, ..a.1 }),
+                    "arg" => {
+                        let node = self.graph.binary(Binary::Atan2, nothing, a.1.node);
+                        self.plain(node, Dimension::default())
+                    }
+                    _ => Some(a.1),
+                }
+            }
             ("sign", _) => {
                 let [a] = self.arguments(at, e, name, arguments)?;
                 let node = self.graph.unary(Unary::Sign, a.1.node);

@@ -107,6 +107,7 @@ impl Lowerer<'_> {
     pub fn equal(&mut self, at: &Located, a: (&Expression, Typed), b: (&Expression, Typed)) -> Option<()> {
         match (a.1.dimension, b.1.dimension) {
             (Some(p), Some(q)) if p != q => {
+                self.faults.unequal.push((p, q));
                 let text = |e: &Expression| at.text.get(e.span.clone()).unwrap_or("").trim().to_owned();
                 let (left, right) = (text(a.0), text(b.0));
                 let message = format!("`{left}` is {} but `{right}` is {}", p.describe(), q.describe());

@@ -88,7 +88,8 @@ impl Assembler<'_, '_> {
     /// Conditions must number order + constants + releases.
     pub(super) fn check_count(&mut self, reads: &[Read], orders: &[u8], releases: usize, points: &[f64]) {
         let order: usize = orders.iter().map(|m| usize::from(*m)).sum();
-        let constants = self.lowerer.constants.len();
+        // The eigenvalue is paid for by the size of the mode.
+        let constants = self.lowerer.constants.len() - usize::from(self.source.eigen.is_some());
         let needed = order + constants + releases;
         let given = reads.iter().filter(|r| r.node.is_some()).count();
         // A section of conditions that was not recognised is a fault of its own.

@@ -1,5 +1,6 @@
 //! What is wrong with a sheet, and where.
 
+use crate::unit::Dimension;
 use std::ops::Range;
 
 /// A fault with its place in the sheet.
@@ -34,6 +35,8 @@ pub(super) struct Faults {
     list: Vec<Fault>,
     /// Number of those not listed.
     more: usize,
+    /// Dimensions that were set against each other and differ.
+    pub unequal: Vec<(Dimension, Dimension)>,
 }
 
 impl Faults {

@@ -122,6 +122,8 @@ pub(super) struct Lowerer<'f> {
     pub scalars: bool,
     /// Whether the report is being read.
     pub reporting: bool,
+    /// Whether the sheet is an eigenproblem.
+    pub eigen: bool,
     /// Limits of pieces, with their places: each must lie inside the span.
     pub limits: Vec<(NodeId, Range<usize>)>,
     /// Stretches covered by data by pieces: they must reach over the whole span.
@@ -165,6 +167,7 @@ impl<'f> Lowerer<'f> {
             scalars: false,
             reporting: false,
             folds: None,
+            eigen: false,
             limits: Vec::new(),
             covers: Vec::new(),
             taken: HashMap::new(),

@@ -19,6 +19,7 @@ mod count;
 mod datafile;
 mod describe;
 mod draw;
+mod eigen;
 mod far;
 mod fault;
 mod functional;
@@ -41,6 +42,7 @@ mod statement;
 
 pub use cases::Case;
 pub use datafile::DataFile;
+pub use eigen::EigenSheet;
 pub use fault::Fault;
 pub use limits::limits;
 pub use model::SheetModel;
@@ -82,6 +84,7 @@ pub struct Sheet {
     again: Option<far::Again>,
     cases: Vec<Case>,
     path: Option<PathAsked>,
+    eigen: Option<EigenSheet>,
 }
 
 impl std::fmt::Debug for Sheet {
@@ -312,6 +315,9 @@ impl Sheet {
     /// # Errors
     /// Those of [`crate::solve::boundary`].
     pub fn solve(&self, watch: Option<crate::solve::Watch<'_>>) -> Result<Solution> {
+        if self.eigen.is_some() {
+            return Err(Error::Unsupported("an eigenproblem has modes, not one solution".into()));
+        }
         let values: Vec<f64> = self.held.iter().map(|held| held.value).collect();
         self.solve_held(&values, watch)
     }

@@ -7,10 +7,12 @@ use toml::Spanned;
 use toml::de::{DeTable, DeValue};
 
 mod cases;
+mod eigen;
 mod measured;
 mod path;
 
 pub(super) use cases::Changes;
+pub(super) use eigen::{EigenSection, Wish};
 pub(super) use measured::{Measured, Rows, files};
 
 /// Largest sheet, in bytes.
@@ -140,6 +142,8 @@ pub(super) struct Source {
     pub relative: Option<(f64, Range<usize>)>,
     /// A parameter to follow.
     pub path: Option<path::Follow>,
+    /// The eigenproblem.
+    pub eigen: Option<EigenSection>,
     /// Load cases: data changed in each.
     pub cases: Vec<Entry<Changes>>,
     /// Names whose entry is at fault: they are declared all the same.
@@ -188,12 +192,8 @@ impl Source {
 const SECTIONS: [&str; 8] = ["title", "note", "given", "span", "unknowns", "equations", "conditions", "report"];
 
 /// Sections that belong to parts of the contract that are not built yet.
-const LATER: [(&str, &str); 4] = [
-    ("eigen", "eigenproblems"),
-    ("solutions", "a search for several solutions"),
-    ("sweep", "sweeps over data"),
-    ("complex", "complex sheets"),
-];
+const LATER: [(&str, &str); 3] =
+    [("solutions", "a search for several solutions"), ("sweep", "sweeps over data"), ("complex", "complex sheets")];
 
 type Table<'i> = DeTable<'i>;
 type Value<'i> = Spanned<DeValue<'i>>;
@@ -218,7 +218,7 @@ pub(super) fn read(sheet: &str, faults: &mut Faults) -> Source {
         ("span", source.coordinate.is_none()),
         ("unknowns", source.unknowns.is_empty() && source.faulty.is_empty()),
         ("equations", source.equations.is_empty()),
-        ("report", source.report.is_empty()),
+        ("report", source.report.is_empty() && table.get_ref().iter().all(|(k, _)| k.as_ref().as_ref() != "eigen")),
     ] {
         let place = table.get_ref().iter().find(|(k, _)| k.as_ref().as_ref() == name).map(|(k, _)| k.span());
         let written = place.is_some();
@@ -277,10 +277,11 @@ impl Reader<'_, '_> {
                 source.conditions.push(Entry { name, name_span, value });
             }),
             "path" => self.path(source, span, value),
+            "eigen" => self.eigen(source, span, value),
             "cases" => self.each(value, |r, entry, value| r.case(source, entry, value)),
             "accuracy" => self.each(value, |r, entry, value| r.accuracy(source, entry, value)),
             _ => {
-                let known = SECTIONS.into_iter().chain(["accuracy", "cases", "path"]);
+                let known = SECTIONS.into_iter().chain(["accuracy", "cases", "path", "eigen"]);
                 let hint = nearest(key, known).map(|k| format!("did you mean `{k}`?")).unwrap_or_else(|| {
                     "the sections are given, span, unknowns, equations, conditions, report, accuracy".into()
                 });
