@@ -159,8 +159,7 @@ fn state_sizes(
             let ordinary: Vec<f64> = ordinary.collect();
             let short = element.length() < tolerance::SHORT_SHARE * mesh.length();
             let short = short && ordinary.iter().zip(&whole).any(|(own, whole)| *own < tolerance::SHORT * whole);
-            let ends = if short { ordinary } else { whole };
-            ends
+            if short { ordinary } else { whole }
         })
         .collect()
 }
