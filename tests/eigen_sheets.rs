@@ -164,6 +164,7 @@ fn faults_are_named_with_their_place() {
         ("lowest = 2", "lowest = 2\nnear = 9.4\ncount = 2", "both `lowest` and `near`", 12),
         ("lowest = 2", "lowst = 2", "`lowst` is not an option of [eigen]", 11),
         ("lowest = 2", "", "does not say which eigenvalues are wanted", 9),
+        ("[\"0\", \"1\"]", "[\"0\", \"inf\"]", "on an infinite span", 10),
         ("lowest = 2", "near = 9.4", "how many eigenvalues", 9),
         ("\"u(1) = 0\"", "\"u(1) = 0\", \"u'(1) = 0\"", "2 conditions are needed", 7),
     ];

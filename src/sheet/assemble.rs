@@ -38,7 +38,7 @@ pub(super) fn assemble(text: &str, reading: &Reading<'_>) -> Result<Sheet, Vec<F
     source.replace(reading.replaced, &mut faults);
     source.settle_path(&mut faults);
     let mut sheet = super::eigen::assembled(&mut source, reading, &mut faults);
-    if source.infinite() && reading.far.is_none() && faults.only("outside") {
+    if source.eigen.is_none() && source.infinite() && reading.far.is_none() && faults.only("outside") {
         // Points named further out than the first cut: begin beyond them.
         let mut far = source.first_cut();
         for _ in 0..60 {

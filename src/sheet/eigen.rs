@@ -56,6 +56,12 @@ pub(super) fn assembled(source: &mut Source, reading: &Reading<'_>, faults: &mut
         faults.add("not yet", place, message, None);
         return None;
     }
+    if source.infinite() {
+        let message =
+            "eigenproblems on an infinite span are not part of this version: the spectrum may be continuous there";
+        faults.add("not yet", place, message, Some("write a finite span".into()));
+        return None;
+    }
     let unknowns = source.unknowns.clone();
     let mut attempt = |unit: &str| {
         source.unknowns.clone_from(&unknowns);
